@@ -1,0 +1,1 @@
+"""Ready-made graph files, and the demo library they run on."""

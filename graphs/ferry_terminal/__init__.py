@@ -1,0 +1,1 @@
+"""The props of an invented ferry terminal."""

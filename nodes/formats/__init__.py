@@ -1,0 +1,1 @@
+"""File formats: glTF, OBJ, PLY, images."""

@@ -1,0 +1,1 @@
+"""Encodings, relief, conventions: pure functions on texels."""

@@ -1,0 +1,1 @@
+"""Graph files, plans, the store and execution. Knows no mesh."""
