@@ -175,7 +175,7 @@ class Findings:
 
     asset: str  # the asset's name
     items: tuple[Finding, ...]
-    facts: dict[str, float]  # counts and measures of the asset: faces, corners, vertices, frames, ...
+    facts: dict[str, float | str]  # counts and measures of the asset: faces, corners, vertices, frames, ...
 
     @property
     def faulty(self) -> bool:
