@@ -1,0 +1,153 @@
+"""What this machine remembers between builds, in one SQLite file: digests of files, what was made of what, outputs.
+
+Losing it costs time, never results: files are hashed again, reasons read "first build", outputs are compared by content.
+"""
+
+from __future__ import annotations
+
+import contextlib
+import json
+import os
+import sqlite3
+import time
+from collections.abc import Iterable
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from tangentry.pipeline.store import StoreError
+from tangentry.pipeline.values import digest_array
+
+SETTLED_NS = 2_000_000_000  # a file that changed this shortly before its digest was taken may change again unseen
+TABLES = """
+create table if not exists files (path text primary key, size integer, mtime integer, inode integer, noted integer, digest text);
+create table if not exists made (graph text, asset text, node text, parts text, primary key (graph, asset, node));
+create table if not exists outputs (path text primary key, graph text, asset text, node text, digest text);
+"""
+
+Stat = tuple[int, int, int]  # size, mtime in nanoseconds, inode
+
+
+def stat_of(path: str | os.PathLike[str]) -> Stat | None:
+    """Size, modification time and inode of a file; None where there is none."""
+    try:
+        found = os.stat(path)
+    except (OSError, ValueError):
+        return None
+    return found.st_size, found.st_mtime_ns, found.st_ino
+
+
+def digest_file(path: str | os.PathLike[str]) -> str:
+    """Digest of a file's content: that of its bytes as an array."""
+    return digest_array(np.fromfile(path, dtype=np.uint8))
+
+
+class Ledger:
+    """The memory of one store. Only one process writes; workers open it to read."""
+
+    def __init__(self, folder: Path, read_only: bool = False) -> None:
+        self.read_only = read_only
+        self.hashed = 0
+        self._files: dict[str, tuple[Stat, int, str]] = {}
+        self._new_files: dict[str, tuple[Stat, int, str]] = {}
+        self._base: sqlite3.Connection | None = None
+        path = folder / "ledger.sqlite"
+        try:
+            if read_only:
+                self._base = sqlite3.connect(f"{path.as_uri()}?mode=ro", uri=True, timeout=30) if path.exists() else None
+            else:
+                folder.mkdir(parents=True, exist_ok=True)
+                self._base = _open(path)
+        except (OSError, sqlite3.OperationalError) as error:
+            raise StoreError(f"{folder}: the store can't be written ({error}); correct its permissions, or name another with --store") from error
+        if self._base is not None:
+            with contextlib.suppress(sqlite3.DatabaseError):
+                rows = self._base.execute("select path, size, mtime, inode, noted, digest from files")
+                self._files = {row[0]: ((row[1], row[2], row[3]), row[4], row[5]) for row in rows}
+
+    def digest_of(self, path: str | os.PathLike[str]) -> str | None:
+        """Digest of a file as it is now, from memory where its size, time and inode are unchanged; None: no such file."""
+        name, now = os.path.abspath(path), stat_of(path)
+        if now is None or not os.path.isfile(name):
+            return None
+        remembered = self._files.get(name)
+        if remembered is not None:
+            stat, noted, digest = remembered
+            if stat == now and noted - stat[1] > SETTLED_NS:
+                return digest
+        noted = time.time_ns()
+        try:
+            digest = digest_file(name)
+        except OSError:
+            return None
+        self.hashed += 1
+        self.note_file(name, now, noted, digest)
+        return digest
+
+    def note_file(self, name: str, stat: Stat, noted: int, digest: str) -> None:
+        """Remember the digest of a file that had that stat when it was read."""
+        self._files[name] = self._new_files[name] = (stat, noted, digest)
+
+    def parts_of(self, graph: str) -> dict[tuple[str, str], dict[str, Any]]:
+        """What every node of a graph was last made of, by (asset, node)."""
+        rows = self._rows("select asset, node, parts from made where graph = ?", (graph,))
+        return {(asset, node): json.loads(parts) for asset, node, parts in rows}
+
+    def note_parts(self, graph: str, rows: Iterable[tuple[str, str, dict[str, Any]]]) -> None:
+        """Remember what nodes were made of: (asset, node, parts)."""
+        self._write(
+            "insert or replace into made values (?, ?, ?, ?)",
+            [(graph, asset, node, json.dumps(parts, separators=(",", ":"))) for asset, node, parts in rows],
+        )
+
+    def outputs(self) -> dict[str, tuple[str, str, str, str]]:
+        """Every file that a graph wrote: path -> graph, asset, node, digest."""
+        return {row[0]: (row[1], row[2], row[3], row[4]) for row in self._rows("select path, graph, asset, node, digest from outputs", ())}
+
+    def note_output(self, path: str, graph: str, asset: str, node: str, digest: str) -> None:
+        """Remember a file that a graph wrote."""
+        self._write("insert or replace into outputs values (?, ?, ?, ?, ?)", [(path, graph, asset, node, digest)])
+
+    def forget_output(self, path: str) -> None:
+        """Forget a file that was removed."""
+        self._write("delete from outputs where path = ?", [(path,)])
+
+    def close(self) -> None:
+        """Write down what was learnt about files, and close."""
+        if self._base is None:
+            return
+        if not self.read_only and self._new_files:
+            self._write(
+                "insert or replace into files values (?, ?, ?, ?, ?, ?)",
+                [(name, *stat, noted, digest) for name, (stat, noted, digest) in self._new_files.items()],
+            )
+        if not self.read_only:
+            self._base.commit()
+        self._base.close()
+        self._base = None
+
+    def _rows(self, query: str, values: tuple[str, ...]) -> list[tuple[Any, ...]]:
+        return self._base.execute(query, values).fetchall() if self._base is not None else []
+
+    def _write(self, statement: str, rows: list[tuple[Any, ...]]) -> None:
+        assert self._base is not None and not self.read_only
+        try:
+            self._base.executemany(statement, rows)
+            self._base.commit()
+        except sqlite3.OperationalError as error:
+            raise StoreError(f"the store's ledger can't be written ({error}); free some space, or name another store with --store") from error
+
+
+def _open(path: Path) -> sqlite3.Connection:
+    """The ledger, made anew where it is missing or spoilt."""
+    try:
+        base = sqlite3.connect(path, timeout=30)
+        base.execute("pragma synchronous = off")
+        base.executescript(TABLES)
+        return base
+    except sqlite3.OperationalError:
+        raise
+    except sqlite3.DatabaseError:
+        os.replace(path, path.with_suffix(".spoilt"))
+        return _open(path)
