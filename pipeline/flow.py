@@ -124,6 +124,10 @@ class InputFile:
         other.reads, other._from = self.reads, self._from
         return other
 
+    def seen(self) -> list[tuple[Path, Array | None]]:
+        """Every file that was read or looked for through this one, with its content."""
+        return [(self._from / name, content) for name, content in self.reads.items()]
+
     @property
     def _key(self) -> str:
         return Path(os.path.relpath(self.real, self._from)).as_posix()

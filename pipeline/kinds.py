@@ -85,7 +85,7 @@ class Setting:
 
     def plain(self, value: Any) -> Any:
         """A value, as `read` gave it, in JSON's types."""
-        return json.loads(self._adapter.dump_json(value))
+        return self._adapter.dump_python(value, mode="json")
 
 
 PLAIN_FAULTS = {"float_type", "int_type", "bool_type", "string_type", "literal_error", "tuple_type", "list_type", "dict_type", "int_from_float", "missing"}
@@ -101,6 +101,7 @@ class Kind:
     inputs: dict[str, Input]
     settings: dict[str, Setting]
     outputs: dict[str, type]  # by name; a lone output is called ""
+    may_skip: frozenset[str]  # the outputs that may be left out (None)
     source: str  # digest of the source it depends on
     home: Path
 
@@ -216,7 +217,7 @@ def kind_of(function: Callable[..., Any], source: str = "", home: Path = Path())
             settings[name] = Setting(name, annotation, parameter.default, _about(about, name), file)
         else:
             inputs[name] = _input(name, annotation, parameter)
-    return Kind(function.__name__, about, function, inputs, settings, _outputs(function, hints, home), source, home)
+    return Kind(function.__name__, about, function, inputs, settings, *_outputs(function, hints, home), source, home)
 
 
 def _about(docstring: str, name: str) -> str:
@@ -256,17 +257,22 @@ def _input(name: str, annotation: Any, parameter: inspect.Parameter) -> Input:
     return Input(name, members[0], optional)
 
 
-def _outputs(function: Callable[..., Any], hints: dict[str, Any], home: Path) -> dict[str, type]:
+def _outputs(function: Callable[..., Any], hints: dict[str, Any], home: Path) -> tuple[dict[str, type], frozenset[str]]:
+    """The outputs by name, and the names of those that may be None."""
     if "return" not in hints:
         raise GraphError(f"{home}: {function.__name__}: its output has no type")
-    members = [member for member in _members(hints["return"]) if member is not type(None)]
-    only = members[0] if members else type(None)
+    members = _members(hints["return"])
+    only = next((member for member in members if member is not type(None)), type(None))
+    named = {"": hints["return"]}
     if isinstance(only, type) and issubclass(only, tuple) and hasattr(only, "_fields"):
-        inner = typing.get_type_hints(only)
-        return {name: next(m for m in _members(inner[name]) if m is not type(None)) for name in only._fields}
-    if not dataclasses.is_dataclass(only):
-        raise GraphError(f"{home}: {function.__name__}: its output must be a flow value, not {getattr(only, '__name__', only)}")
-    return {"": only}  # type: ignore[dict-item]
+        named = typing.get_type_hints(only)
+    outputs: dict[str, type] = {}
+    for name, annotation in named.items():
+        kind = next((member for member in _members(annotation) if member is not type(None)), type(None))
+        if not dataclasses.is_dataclass(kind):
+            raise GraphError(f"{home}: {function.__name__}: its output must be a flow value, not {getattr(kind, '__name__', kind)}")
+        outputs[name] = kind  # type: ignore[assignment]
+    return outputs, frozenset(name for name, annotation in named.items() if type(None) in _members(annotation))
 
 
 def in_words(annotation: Any) -> str:

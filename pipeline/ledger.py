@@ -12,7 +12,7 @@ import sqlite3
 import time
 from collections.abc import Iterable
 from pathlib import Path
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
 
@@ -25,6 +25,16 @@ create table if not exists files (path text primary key, size integer, mtime int
 create table if not exists made (graph text, asset text, node text, parts text, primary key (graph, asset, node));
 create table if not exists outputs (path text primary key, graph text, asset text, node text, digest text);
 """
+
+
+class Output(NamedTuple):
+    """Who wrote an output file, and its digest."""
+
+    graph: str
+    asset: str
+    node: str
+    digest: str
+
 
 Stat = tuple[int, int, int]  # size, mtime in nanoseconds, inode
 
@@ -89,6 +99,11 @@ class Ledger:
         """Remember the digest of a file that had that stat when it was read."""
         self._files[name] = self._new_files[name] = (stat, noted, digest)
 
+    def learnt(self) -> dict[str, tuple[Stat, int, str]]:
+        """What was newly learnt about files since this was last asked."""
+        learnt, self._new_files = self._new_files, {}
+        return learnt
+
     def parts_of(self, graph: str) -> dict[tuple[str, str], dict[str, Any]]:
         """What every node of a graph was last made of, by (asset, node)."""
         rows = self._rows("select asset, node, parts from made where graph = ?", (graph,))
@@ -101,13 +116,13 @@ class Ledger:
             [(graph, asset, node, json.dumps(parts, separators=(",", ":"))) for asset, node, parts in rows],
         )
 
-    def outputs(self) -> dict[str, tuple[str, str, str, str]]:
-        """Every file that a graph wrote: path -> graph, asset, node, digest."""
-        return {row[0]: (row[1], row[2], row[3], row[4]) for row in self._rows("select path, graph, asset, node, digest from outputs", ())}
+    def outputs(self) -> dict[str, Output]:
+        """Every file that a graph wrote, by path."""
+        return {row[0]: Output(*row[1:]) for row in self._rows("select path, graph, asset, node, digest from outputs", ())}
 
-    def note_output(self, path: str, graph: str, asset: str, node: str, digest: str) -> None:
+    def note_output(self, path: str, output: Output) -> None:
         """Remember a file that a graph wrote."""
-        self._write("insert or replace into outputs values (?, ?, ?, ?, ?)", [(path, graph, asset, node, digest)])
+        self._write("insert or replace into outputs values (?, ?, ?, ?, ?)", [(path, *output)])
 
     def forget_output(self, path: str) -> None:
         """Forget a file that was removed."""

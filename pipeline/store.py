@@ -51,12 +51,15 @@ class Result:
     """What a node made: a value's digest per output (None: left out), or the input error it ended with.
 
     `reads` are the files it read beside those it was given, relative to the first one's folder, with digests
-    (None: looked for and not there): the result holds only while they stay so.
+    (None: looked for and not there): the result holds only while they stay so. `findings` and `files` repeat what the
+    pipeline itself acts on, so that a reused value need not be read for it.
     """
 
     outputs: dict[str, str | None]
     reads: dict[str, str | None]
     error: str | None = None
+    findings: list[dict[str, Any]] = dataclasses.field(default_factory=list)  # id, severity, count, what, ...
+    files: list[tuple[str, str]] = dataclasses.field(default_factory=list)  # name, digest of the content
 
 
 class Store:
@@ -84,7 +87,7 @@ class Store:
             manifest = path.read_text("utf-8", errors="replace")
             if digest_text(manifest) != digest:
                 raise ValueError("content does not match its name")
-            return from_manifest(manifest, wanted, self._fetch_array)
+            return from_manifest(manifest, wanted, self.fetch_array)
         except (OSError, ValueError) as error:
             self._set_aside(path)
             raise Damaged(f"{path}: {error}") from error
@@ -98,7 +101,8 @@ class Store:
         self.written += written
         return digest
 
-    def _fetch_array(self, digest: str) -> Array:
+    def fetch_array(self, digest: str) -> Array:
+        """The array of that digest, by memory map. Raises Damaged where it is missing or spoilt."""
         path = self._place("arrays", digest)
         try:
             array = _map(path)
@@ -119,7 +123,7 @@ class Store:
         path = self._place("results", key)
         try:
             kept = json.loads(path.read_bytes())
-            return [Result(dict(one["outputs"]), dict(one["reads"]), one["error"]) for one in kept]
+            return [Result(**one) for one in kept]
         except FileNotFoundError:
             return []
         except (OSError, ValueError, KeyError, TypeError):

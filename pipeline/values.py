@@ -30,8 +30,8 @@ REMEMBERED_FROM = 4096  # bytes: smaller arrays are hashed faster than looked up
 
 
 def canonical(data: Plain) -> str:
-    """The one JSON text of plain data: keys sorted, no spaces, no NaN."""
-    return json.dumps(data, sort_keys=True, separators=(",", ":"), ensure_ascii=True, allow_nan=False)
+    """The one JSON text of plain data: keys sorted, no spaces."""
+    return json.dumps(data, sort_keys=True, separators=(",", ":"))
 
 
 def digest_text(text: str) -> str:

@@ -1,0 +1,199 @@
+"""Building: a plan carried out, outputs put in place, what happened told to whoever listens.
+
+    for event in build(graph): ...        or        record = run_build(graph)
+"""
+
+from __future__ import annotations
+
+import dataclasses
+import os
+from collections.abc import Callable, Iterator
+from pathlib import Path
+from typing import Any
+
+from tangentry.pipeline.errors import NodeError, TangentryError
+from tangentry.pipeline.executors import Finished, Here, Orders, Task, Workers
+from tangentry.pipeline.flow import Array
+from tangentry.pipeline.graph import Graph
+from tangentry.pipeline.ledger import Ledger
+from tangentry.pipeline.library import Member, find_members
+from tangentry.pipeline.outputs import OutputError, Outputs
+from tangentry.pipeline.plan import WHOLE, Parts, Planned, Step, StepId, all_steps, asset_steps, assets_of, lay_out, plan, relative_digest, whole_steps
+from tangentry.pipeline.record import AssetRecord, Record
+from tangentry.pipeline.store import Damaged, Store
+from tangentry.pipeline.work import Bench, Done, Event
+
+Listener = Callable[[AssetRecord, int], None]  # an asset is through; how many there are
+
+
+@dataclasses.dataclass(frozen=True)
+class Site:
+    """A graph with its store and its ledger."""
+
+    graph: Graph
+    store: Store
+    ledger: Ledger
+
+    @staticmethod
+    def open(graph: Graph, store: str | os.PathLike[str] | None = None, read_only: bool = False) -> Site:
+        """The graph's own store, `.tangentry` beside the graph file, unless another is named."""
+        folder = Path(store) if store is not None else graph.folder / ".tangentry"
+        return Site(graph, Store(folder), Ledger(folder.absolute(), read_only))
+
+    @property
+    def home(self) -> Path:
+        """What the ledger's paths are relative to: a project that moves as a whole keeps its memory."""
+        return self.store.folder.resolve()
+
+    @property
+    def name(self) -> str:
+        """The graph's name in the ledger."""
+        return os.path.relpath(self.graph.path.resolve(), self.home)
+
+    def members(self, only: str | None = None) -> list[Member]:
+        """The library's files, less those this graph wrote itself."""
+        if not self.graph.library:
+            return []
+        written = {os.path.normpath(self.home / path) for path, one in self.ledger.outputs().items() if one.graph == self.name}
+        return find_members(self.graph, written, only)
+
+
+def make_plan(graph: Graph, store: str | os.PathLike[str] | None = None, only: str | None = None) -> list[Planned]:
+    """What a build would do now, touching nothing."""
+    site = Site.open(graph, store, read_only=True)
+    try:
+        members = site.members(only)
+        lay_out(graph, members)
+        digest_of = relative_digest(graph.folder, site.ledger.digest_of)
+        return plan(all_steps(graph, members), site.store, digest_of, site.ledger.parts_of(site.name))
+    finally:
+        site.ledger.close()
+
+
+def run_build(
+    graph: Graph,
+    *,
+    store: str | os.PathLike[str] | None = None,
+    only: str | None = None,
+    sets: dict[str, Any] | None = None,
+    workers: int = 1,
+    stop_at_first: bool = False,
+    overwrite: bool = False,
+    tidy: bool = False,
+    listener: Listener = lambda asset, total: None,
+) -> Record:
+    """Make everything that is out of date; gives what happened.
+
+    store          folder of the store; `.tangentry` beside the graph file by default
+    only           pattern of the assets to build
+    sets           the options the graph was read with, which worker processes need to read it again
+    workers        how many processes
+    stop_at_first  end at the first asset that fails
+    overwrite      replace files that this graph did not write
+    tidy           remove the outputs of assets that are gone
+    listener       called as each asset is through
+
+    Raises GraphError where the graph can't be laid out, StoreError where the store can't be written.
+    """
+    site = Site.open(graph, store)
+    try:
+        return _Build(site, only, overwrite).run(sets or {}, workers, stop_at_first, tidy, listener)
+    finally:
+        site.ledger.close()
+
+
+class _Build:
+    """One build under way."""
+
+    def __init__(self, site: Site, only: str | None, overwrite: bool) -> None:
+        self.site, self.graph, self.only = site, site.graph, only
+        self.members = site.members(only)
+        self.dag = lay_out(self.graph, self.members)
+        self.last = site.ledger.parts_of(site.name)
+        self.outputs = Outputs(site.name, self.graph.folder, site.home, site.ledger, overwrite)
+        self.bench = Bench(self.graph.folder, site.store, relative_digest(self.graph.folder, site.ledger.digest_of), self.step_of)
+        self.record = Record(self.graph.path.as_posix())
+        self.assets = {member.name: AssetRecord(member.name) for member in assets_of(self.graph, self.members)}
+        self.changed_parts: list[tuple[str, str, Parts]] = []
+
+    def step_of(self, id: StepId) -> Step:
+        """A step by its asset and node."""
+        step: Step = self.dag.nodes[id]["step"]
+        return step
+
+    def run(self, sets: dict[str, Any], workers: int, stop_at_first: bool, tidy: bool, listener: Listener) -> Record:
+        tasks = [Task(member, self._last_of(member.name)) for member in assets_of(self.graph, self.members)]
+        orders = Orders(self.graph.path.absolute(), sets, self.site.store.folder.absolute())
+        executor = Workers(workers, orders) if workers > 1 and len(tasks) > 1 else Here(self._carry_here)
+        try:
+            for event in executor.run(tasks):
+                if isinstance(event, Finished):
+                    self._finish(event)
+                    listener(self.assets[event.asset], len(tasks))
+                    if stop_at_first and self.assets[event.asset].errors:
+                        self.record.stopped = f"stopped at the first failure: {event.asset}"
+                        break
+                elif isinstance(event, Done):
+                    self._settle(event)
+            else:
+                self._whole_library()
+        finally:
+            executor.close()
+            self.site.ledger.note_parts(self.site.name, self.changed_parts)
+        return self._conclude(tidy)
+
+    def _last_of(self, asset: str) -> dict[StepId, Parts]:
+        return {(asset, node): self.last[asset, node] for node in self.graph.per_asset if (asset, node) in self.last}
+
+    def _carry_here(self, task: Task) -> Iterator[Event]:
+        yield from self.bench.carry(asset_steps(self.graph, task.member), task.last, task.refuse)
+        self.bench.forget()
+
+    def _whole_library(self) -> None:
+        for event in self.bench.carry(whole_steps(self.graph, list(self.assets)), self.last):
+            if isinstance(event, Done):
+                self._settle(event)
+
+    def _finish(self, event: Finished) -> None:
+        if event.trouble:
+            raise TangentryError(event.trouble)
+        for name, (stat, noted, digest) in event.files.items():
+            self.site.ledger.note_file(name, stat, noted, digest)
+
+    def _settle(self, done: Done) -> None:
+        """Note a settled step, and put its files in place."""
+        self.bench.known[done.id] = done.outcome
+        record = self.record.library if done.id[0] == WHOLE else self.assets[done.id[0]]
+        record.add(done)
+        if done.parts and done.parts != self.last.get(done.id):
+            self.changed_parts.append((*done.id, done.parts))
+        step = self.step_of(done.id)
+        if done.state in ("failed", "blocked"):
+            self.outputs.keep_claims(step)
+        elif done.result is not None and step.makes:
+            try:
+                record.outputs += self.outputs.place(step, done.result, lambda digest: self._content(done, digest))
+            except (OutputError, NodeError) as error:
+                record.errors.append(str(error))
+
+    def _content(self, done: Done, digest: str) -> Array:
+        """The content of a file, made again where the store has lost it."""
+        try:
+            return self.site.store.fetch_array(digest)
+        except Damaged:
+            for output in self.step_of(done.id).kind.outputs:
+                self.bench.remake(done.id, output)
+            return self.site.store.fetch_array(digest)
+
+    def _conclude(self, tidy: bool) -> Record:
+        self.record.assets = list(self.assets.values())
+        ran = {(one.name, step["node"]) for one in [*self.record.assets, self.record.library] for step in one.steps if step["state"] == "ran"}
+        made_now = {path for one in [*self.record.assets, self.record.library] for path in one.outputs if any(name == one.name for name, _ in ran)}
+        self.record.restored = [path for path in self.outputs.written if path not in made_now]
+        if not self.record.stopped:
+            left = self.outputs.left_over(None if self.only is None else self.assets)
+            self.record.left_over = [Path(os.path.relpath(path, self.graph.folder.resolve())).as_posix() for path in left]
+            if tidy:
+                self.outputs.remove(left)
+                self.record.tidied = True
+        return self.record

@@ -1,0 +1,261 @@
+"""The command line, thin: each command reads its words, calls the pipeline and prints what it gives.
+
+Exit codes: 0 all made and nothing faulty; 1 something failed or faulty; 2 the graph or the call is wrong.
+Nothing heavy is imported until a command needs it, so `--help` starts at once.
+"""
+
+from __future__ import annotations
+
+import argparse
+import os
+import sys
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from tangentry.pipeline.graph import Graph
+
+CAUTION = "Building a graph runs the code of its node kinds, those of its own `kinds:` folder included: build graphs you trust."
+
+
+def main(words: list[str] | None = None) -> int:
+    """Run one command; gives its exit code."""
+    chosen = _parser().parse_args(words)
+    from tangentry.pipeline.errors import GraphError, TangentryError
+
+    try:
+        return int(chosen.run(chosen))
+    except GraphError as error:
+        print("\n".join(error.problems), file=sys.stderr)
+        return 2
+    except TangentryError as error:
+        print(error, file=sys.stderr)
+        return 1
+    except KeyboardInterrupt:
+        print("\ninterrupted: what was made is kept, and the next build goes on from there", file=sys.stderr)
+        return 130
+    except BrokenPipeError:  # whoever read our output has enough
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return 1
+
+
+def _parser() -> argparse.ArgumentParser:
+    parser = argparse.ArgumentParser(
+        prog="tangentry",
+        description="Takes a library of normal-mapped meshes from authoring export to delivered file, and rebuilds only what changed.",
+        epilog=CAUTION,
+    )
+    parser.add_argument("--version", action="version", version=_Version())
+    commands = parser.add_subparsers(metavar="COMMAND", required=True)
+    _build_words(commands.add_parser("build", help="make everything that is out of date", epilog=CAUTION))
+    _plan_words(commands.add_parser("plan", help="what would run and why, touching nothing", epilog=CAUTION))
+    _nodes_words(commands.add_parser("nodes", help="the node reference"))
+    _inspect_words(commands.add_parser("inspect", help="facts about meshes and maps"))
+    _store_words(commands.add_parser("store", help="look after the store"))
+    return parser
+
+
+class _Version(str):
+    """Looked up only when it is asked for."""
+
+    def __mod__(self, _: object) -> str:
+        from importlib.metadata import version
+
+        return f"tangentry {version('tangentry')}"
+
+
+def _graph_words(parser: argparse.ArgumentParser) -> None:
+    parser.add_argument("graph", metavar="GRAPH", help="a graph file (YAML)")
+    parser.add_argument("--asset", metavar="PATTERN", help="only the assets whose name or stem matches")
+    parser.add_argument("--set", metavar="NAME=VALUE", action="append", default=[], help="set an option of the graph; may be repeated")
+    parser.add_argument("--store", metavar="DIR", help="folder of the store (default: .tangentry beside the graph file)")
+
+
+def _read(chosen: argparse.Namespace) -> tuple[Graph, dict[str, Any]]:
+    from tangentry.pipeline.errors import GraphError
+    from tangentry.pipeline.graph import option_from_text, read_graph
+
+    sets = {}
+    for word in chosen.set:
+        name, equals, value = word.partition("=")
+        if not equals:
+            raise GraphError(f"--set {word}: write --set NAME=VALUE")
+        sets[name] = option_from_text(value)
+    return read_graph(chosen.graph, sets), sets
+
+
+# build
+
+
+def _build_words(parser: argparse.ArgumentParser) -> None:
+    _graph_words(parser)
+    parser.add_argument("--workers", metavar="N", type=_count, default=1, help="processes to build with (default: 1)")
+    going = parser.add_mutually_exclusive_group()
+    going.add_argument("--keep-going", action="store_true", help="build all other assets when one fails (the default)")
+    going.add_argument("--stop-at-first", action="store_true", help="stop when an asset fails")
+    parser.add_argument("--record", metavar="FILE", help="write what happened as JSON")
+    parser.add_argument("--overwrite", action="store_true", help="replace files that this graph did not write")
+    parser.add_argument("--tidy", action="store_true", help="remove files this graph wrote and makes no longer")
+    parser.set_defaults(run=_build)
+
+
+def _count(text: str) -> int:
+    if not text.isdigit() or int(text) < 1:
+        raise argparse.ArgumentTypeError(f"{text!r} is not a number of processes; write 1 or more")
+    return int(text)
+
+
+def _build(chosen: argparse.Namespace) -> int:
+    from tangentry.pipeline.build import run_build
+    from tangentry.pipeline.store import write_whole
+    from tangentry.pipeline.terminal import Progress, closing_lines
+
+    graph, sets = _read(chosen)
+    with Progress() as progress:
+        record = run_build(
+            graph,
+            store=chosen.store,
+            only=chosen.asset,
+            sets=sets,
+            workers=chosen.workers,
+            stop_at_first=chosen.stop_at_first,
+            overwrite=chosen.overwrite,
+            tidy=chosen.tidy,
+            listener=progress.asset,
+        )
+    if chosen.record:
+        write_whole(Path(chosen.record), lambda file: file.write(record.text().encode()))
+    print("\n".join(closing_lines(record)))
+    return 0 if record.sound else 1
+
+
+# plan
+
+
+def _plan_words(parser: argparse.ArgumentParser) -> None:
+    _graph_words(parser)
+    parser.add_argument("--json", action="store_true", help="as JSON")
+    parser.set_defaults(run=_plan)
+
+
+def _plan(chosen: argparse.Namespace) -> int:
+    from tangentry.pipeline.build import make_plan
+    from tangentry.pipeline.terminal import plan_json, plan_lines
+
+    planned = make_plan(_read(chosen)[0], chosen.store, chosen.asset)
+    print(plan_json(planned) if chosen.json else "\n".join(plan_lines(planned)))
+    return 0
+
+
+# nodes
+
+
+def _nodes_words(parser: argparse.ArgumentParser) -> None:
+    parser.add_argument("kind", metavar="KIND", nargs="?", help="one kind, in full")
+    parser.add_argument("--kinds", metavar="DIR", help="a project's own folder of node kinds, too")
+    parser.set_defaults(run=_nodes)
+
+
+def _nodes(chosen: argparse.Namespace) -> int:
+    from tangentry.pipeline.kinds import Kinds
+    from tangentry.pipeline.terminal import kind_lines, kinds_lines
+
+    kinds = Kinds(Path(chosen.kinds) if chosen.kinds else None)
+    print("\n".join(kind_lines(kinds.get(chosen.kind)) if chosen.kind else kinds_lines(kinds)))
+    return 0
+
+
+# inspect
+
+
+def _inspect_words(parser: argparse.ArgumentParser) -> None:
+    parser.add_argument("files", metavar="FILE", nargs="+", help="a mesh or an image")
+    parser.add_argument("--json", action="store_true", help="as JSON")
+    parser.set_defaults(run=_inspect)
+
+
+def _inspect(chosen: argparse.Namespace) -> int:
+    from tangentry.pipeline.errors import InputError
+    from tangentry.pipeline.kinds import Kinds
+    from tangentry.pipeline.terminal import facts_json, facts_lines
+
+    inspect = Kinds().get("inspect").function
+    found: list[tuple[str, Any]] = []
+    for file in chosen.files:
+        try:
+            found.append((file, inspect(file)))
+        except InputError as error:
+            found.append((file, error))
+    print(facts_json(found) if chosen.json else "\n".join(facts_lines(found)))
+    return 1 if any(isinstance(facts, InputError) for _, facts in found) else 0
+
+
+# store
+
+
+def _store_words(parser: argparse.ArgumentParser) -> None:
+    commands = parser.add_subparsers(metavar="ACTION", required=True)
+    for name, about, run in (
+        ("size", "how much the store holds", _store_size),
+        ("verify", "set aside every object whose content does not match its name", _store_verify),
+        ("trim", "remove what was not used for long", _store_trim),
+    ):
+        action = commands.add_parser(name, help=about)
+        action.add_argument("graph", metavar="GRAPH", nargs="?", help="a graph file, whose store is meant")
+        action.add_argument("--store", metavar="DIR", help="the store's folder (default: .tangentry here)")
+        action.set_defaults(run=run)
+        if name == "trim":
+            action.add_argument("--keep-days", metavar="DAYS", type=float, help="remove what was not used for so many days")
+            action.add_argument("--max-size", metavar="SIZE", type=_size, help="remove the oldest until so much is left: 500M, 20G")
+
+
+def _size(text: str) -> int:
+    units = {"K": 10**3, "M": 10**6, "G": 10**9, "T": 10**12}
+    number, unit = (text[:-1], units[text[-1].upper()]) if text[-1:].upper() in units else (text, 1)
+    try:
+        return int(float(number) * unit)
+    except ValueError:
+        raise argparse.ArgumentTypeError(f"{text!r} is not a size; write 500M or 20G") from None
+
+
+def _open_store(chosen: argparse.Namespace) -> Any:
+    from tangentry.pipeline.errors import GraphError
+    from tangentry.pipeline.store import Store
+
+    folder = Path(chosen.store) if chosen.store else Path(chosen.graph or "x").parent / ".tangentry"
+    if not folder.is_dir():
+        raise GraphError(f"{folder}: there is no store; name a graph file or --store DIR")
+    return Store(folder)
+
+
+def _store_size(chosen: argparse.Namespace) -> int:
+    from tangentry.pipeline.terminal import bytes_text
+
+    sizes = _open_store(chosen).size()
+    for room, (count, size) in sizes.items():
+        print(f"{room:8} {count:9,}  {bytes_text(size):>9}")
+    print(f"{'in all':8} {sum(count for count, _ in sizes.values()):9,}  {bytes_text(sum(size for _, size in sizes.values())):>9}")
+    return 0
+
+
+def _store_verify(chosen: argparse.Namespace) -> int:
+    bad = _open_store(chosen).verify()
+    for path in bad:
+        print(f"damaged, set aside: {path}")
+    print(f"{len(bad)} damaged" + ("; the next build makes them again" if bad else ""))
+    return 1 if bad else 0
+
+
+def _store_trim(chosen: argparse.Namespace) -> int:
+    from tangentry.pipeline.errors import GraphError
+    from tangentry.pipeline.terminal import bytes_text
+
+    if chosen.keep_days is None and chosen.max_size is None:
+        raise GraphError("store trim: say what may go: --keep-days DAYS or --max-size SIZE")
+    count, freed = _open_store(chosen).trim(chosen.keep_days, chosen.max_size)
+    print(f"{count} objects removed, {bytes_text(freed)} freed")
+    return 0
+
+
+if __name__ == "__main__":
+    sys.exit(main())

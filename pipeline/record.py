@@ -1,0 +1,119 @@
+"""What happened in a build, as data: one JSON object, version 1.
+
+    {"tangentry_record": 1, "graph": ..., "ran": 12, "reused": 96, "skipped": 0, "blocked": 0, "failed": 1,
+     "assets": [{"name": "props/crate.obj", "state": "made", "error": null, "findings": [...], "outputs": [...],
+                 "steps": [{"node": "framed", "state": "ran", "reasons": [...], "seconds": 0.02}]}],
+     "library": {...the whole_library steps, alike...}, "restored": [...], "left_over": [...]}
+
+An asset's state is `failed` where a step failed, else `faulty` where a finding is a fault, else `made` where a step ran,
+else `unchanged`.
+"""
+
+from __future__ import annotations
+
+import dataclasses
+import json
+from typing import Any
+
+from tangentry.pipeline.plan import WHOLE
+from tangentry.pipeline.work import Done
+
+VERSION = 1
+STATES = ("made", "unchanged", "faulty", "failed")
+
+
+@dataclasses.dataclass
+class AssetRecord:
+    """What happened to one asset, or to the whole library's own steps."""
+
+    name: str
+    steps: list[dict[str, Any]] = dataclasses.field(default_factory=list)
+    errors: list[str] = dataclasses.field(default_factory=list)
+    findings: list[dict[str, Any]] = dataclasses.field(default_factory=list)
+    outputs: list[str] = dataclasses.field(default_factory=list)
+    seconds: float = 0.0
+
+    def add(self, done: Done) -> None:
+        """Note a settled step."""
+        step: dict[str, Any] = {"node": done.id[1], "state": done.state}
+        if done.reasons:
+            step["reasons"] = [{**dataclasses.asdict(reason), "text": str(reason)} for reason in done.reasons]
+        if done.because:
+            step["because"] = done.because
+        if done.state == "failed":
+            step["error"] = done.error
+            self.errors.append(done.error)
+        if done.detail:
+            step["detail"] = done.detail
+        if done.state == "ran":
+            step["seconds"] = round(done.seconds, 6)
+        self.seconds += done.seconds
+        self.steps.append(step)
+        if done.result is not None:
+            self.findings += done.result.findings
+
+    @property
+    def state(self) -> str:
+        """One of STATES."""
+        if self.errors:
+            return "failed"
+        if any(one["severity"] == "fault" for one in self.findings):
+            return "faulty"
+        return "made" if any(step["state"] == "ran" for step in self.steps) else "unchanged"
+
+    def plain(self) -> dict[str, Any]:
+        """The record in JSON's types."""
+        return {
+            "name": self.name,
+            "state": self.state,
+            "error": "; ".join(self.errors) or None,
+            "findings": self.findings,
+            "outputs": self.outputs,
+            "steps": self.steps,
+        }
+
+
+@dataclasses.dataclass
+class Record:
+    """What happened in one build."""
+
+    graph: str
+    assets: list[AssetRecord] = dataclasses.field(default_factory=list)
+    library: AssetRecord = dataclasses.field(default_factory=lambda: AssetRecord(WHOLE))
+    restored: list[str] = dataclasses.field(default_factory=list)  # output files put back or written anew
+    left_over: list[str] = dataclasses.field(default_factory=list)
+    tidied: bool = False
+    stopped: str = ""  # why the build ended early
+
+    def count(self, state: str) -> int:
+        """How many steps ended in that state."""
+        return sum(step["state"] == state for one in [*self.assets, self.library] for step in one.steps)
+
+    @property
+    def states(self) -> dict[str, int]:
+        """How many assets ended in each state."""
+        found = [asset.state for asset in self.assets]
+        return {state: found.count(state) for state in STATES}
+
+    @property
+    def sound(self) -> bool:
+        """Did everything work, with nothing faulty?"""
+        return not (self.stopped or self.library.errors or any(asset.state in ("faulty", "failed") for asset in self.assets))
+
+    def plain(self) -> dict[str, Any]:
+        """The record in JSON's types."""
+        return {
+            "tangentry_record": VERSION,
+            "graph": self.graph,
+            **{state: self.count(state) for state in ("ran", "reused", "skipped", "blocked", "failed")},
+            "states": self.states,
+            "assets": [asset.plain() for asset in self.assets],
+            "library": self.library.plain(),
+            "restored": self.restored,
+            "left_over": self.left_over,
+            "stopped": self.stopped or None,
+        }
+
+    def text(self) -> str:
+        """The record as JSON."""
+        return json.dumps(self.plain(), indent=1, ensure_ascii=False) + "\n"
