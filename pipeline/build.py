@@ -9,16 +9,15 @@ import dataclasses
 import os
 from collections.abc import Callable, Iterator
 from pathlib import Path
-from typing import Any
 
 from tangentry.pipeline.errors import NodeError, TangentryError
 from tangentry.pipeline.executors import Finished, Here, Orders, Task, Workers
 from tangentry.pipeline.flow import Array
 from tangentry.pipeline.graph import Graph
 from tangentry.pipeline.ledger import Ledger
-from tangentry.pipeline.library import Member, find_members
+from tangentry.pipeline.library import Member, find_members, looked_into
 from tangentry.pipeline.outputs import OutputError, Outputs
-from tangentry.pipeline.plan import WHOLE, Parts, Planned, Step, StepId, all_steps, asset_steps, assets_of, lay_out, plan, relative_digest, whole_steps
+from tangentry.pipeline.plan import WHOLE, Parts, Planned, Step, StepId, all_steps, asset_steps, assets_of, lay_out, plan, relative_digest, side_files, whole_steps
 from tangentry.pipeline.record import AssetRecord, Record
 from tangentry.pipeline.store import Damaged, Store
 from tangentry.pipeline.work import Bench, Done, Event
@@ -75,7 +74,6 @@ def run_build(
     *,
     store: str | os.PathLike[str] | None = None,
     only: str | None = None,
-    sets: dict[str, Any] | None = None,
     workers: int = 1,
     stop_at_first: bool = False,
     overwrite: bool = False,
@@ -86,7 +84,6 @@ def run_build(
 
     store          folder of the store; `.tangentry` beside the graph file by default
     only           pattern of the assets to build
-    sets           the options the graph was read with, which worker processes need to read it again
     workers        how many processes
     stop_at_first  end at the first asset that fails
     overwrite      replace files that this graph did not write
@@ -97,7 +94,7 @@ def run_build(
     """
     site = Site.open(graph, store)
     try:
-        return _Build(site, only, overwrite).run(sets or {}, workers, stop_at_first, tidy, listener)
+        return _Build(site, only, overwrite).run(workers, stop_at_first, tidy, listener)
     finally:
         site.ledger.close()
 
@@ -114,16 +111,16 @@ class _Build:
         self.bench = Bench(self.graph.folder, site.store, relative_digest(self.graph.folder, site.ledger.digest_of), self.step_of)
         self.record = Record(self.graph.path.as_posix())
         self.assets = {member.name: AssetRecord(member.name) for member in assets_of(self.graph, self.members)}
-        self.changed_parts: list[tuple[str, str, Parts]] = []
+        self.parts: dict[StepId, Parts] = {}
 
     def step_of(self, id: StepId) -> Step:
         """A step by its asset and node."""
         step: Step = self.dag.nodes[id]["step"]
         return step
 
-    def run(self, sets: dict[str, Any], workers: int, stop_at_first: bool, tidy: bool, listener: Listener) -> Record:
+    def run(self, workers: int, stop_at_first: bool, tidy: bool, listener: Listener) -> Record:
         tasks = [Task(member, self._last_of(member.name)) for member in assets_of(self.graph, self.members)]
-        orders = Orders(self.graph.path.absolute(), sets, self.site.store.folder.absolute())
+        orders = Orders(self.graph.path.absolute(), self.graph.sets, self.site.store.folder.absolute())
         executor = Workers(workers, orders) if workers > 1 and len(tasks) > 1 else Here(self._carry_here)
         try:
             for event in executor.run(tasks):
@@ -139,7 +136,8 @@ class _Build:
                 self._whole_library()
         finally:
             executor.close()
-            self.site.ledger.note_parts(self.site.name, self.changed_parts)
+            changed = [(*id, parts) for id, parts in self.parts.items() if parts != self.last.get(id)]
+            self.site.ledger.note_parts(self.site.name, changed)
         return self._conclude(tidy)
 
     def _last_of(self, asset: str) -> dict[StepId, Parts]:
@@ -165,8 +163,8 @@ class _Build:
         self.bench.known[done.id] = done.outcome
         record = self.record.library if done.id[0] == WHOLE else self.assets[done.id[0]]
         record.add(done)
-        if done.parts and done.parts != self.last.get(done.id):
-            self.changed_parts.append((*done.id, done.parts))
+        if done.parts:
+            self.parts[done.id] = done.parts
         step = self.step_of(done.id)
         if done.state in ("failed", "blocked"):
             self.outputs.keep_claims(step)
@@ -185,6 +183,19 @@ class _Build:
                 self.bench.remake(done.id, output)
             return self.site.store.fetch_array(digest)
 
+    def depends_on(self) -> Iterator[Path | str]:
+        """Every file and folder that this build depended on or made."""
+        yield from self.graph.files
+        for entry in [*self.graph.per_asset.values(), *self.graph.whole_library.values()]:
+            yield from entry.kind.files
+        yield from looked_into(self.graph)
+        for id, parts in self.parts.items():
+            step = self.step_of(id)
+            for path in [*step.reads.values(), *side_files(step, parts.get("reads", {}))]:
+                yield self.graph.folder / path
+        for name in self.outputs.claimed:
+            yield self.site.home / name
+
     def _conclude(self, tidy: bool) -> Record:
         self.record.assets = list(self.assets.values())
         ran = {(one.name, step["node"]) for one in [*self.record.assets, self.record.library] for step in one.steps if step["state"] == "ran"}
@@ -196,4 +207,5 @@ class _Build:
             if tidy:
                 self.outputs.remove(left)
                 self.record.tidied = True
+        self.record.rests_on = list(self.depends_on())
         return self.record

@@ -71,7 +71,7 @@ def _graph_words(parser: argparse.ArgumentParser) -> None:
     parser.add_argument("--store", metavar="DIR", help="folder of the store (default: .tangentry beside the graph file)")
 
 
-def _read(chosen: argparse.Namespace) -> tuple[Graph, dict[str, Any]]:
+def _read(chosen: argparse.Namespace) -> Graph:
     from tangentry.pipeline.errors import GraphError
     from tangentry.pipeline.graph import option_from_text, read_graph
 
@@ -81,7 +81,7 @@ def _read(chosen: argparse.Namespace) -> tuple[Graph, dict[str, Any]]:
         if not equals:
             raise GraphError(f"--set {word}: write --set NAME=VALUE")
         sets[name] = option_from_text(value)
-    return read_graph(chosen.graph, sets), sets
+    return read_graph(chosen.graph, sets)
 
 
 # build
@@ -106,17 +106,25 @@ def _count(text: str) -> int:
 
 
 def _build(chosen: argparse.Namespace) -> int:
+    from tangentry.pipeline.seal import Word, seal, unbroken
+
+    store = Path(chosen.store) if chosen.store else Path(chosen.graph).parent / ".tangentry"
+    asked = [os.path.abspath(chosen.graph), os.path.abspath(store), chosen.asset or "", *chosen.set]
+    word = None if chosen.record or chosen.tidy or chosen.overwrite else unbroken(store, asked)
+    if word is not None:
+        print(word.text)
+        return word.code
+
     from tangentry.pipeline.build import run_build
     from tangentry.pipeline.store import write_whole
-    from tangentry.pipeline.terminal import Progress, closing_lines
+    from tangentry.pipeline.terminal import Progress, closing_lines, told_again
 
-    graph, sets = _read(chosen)
+    graph = _read(chosen)
     with Progress() as progress:
         record = run_build(
             graph,
             store=chosen.store,
             only=chosen.asset,
-            sets=sets,
             workers=chosen.workers,
             stop_at_first=chosen.stop_at_first,
             overwrite=chosen.overwrite,
@@ -125,8 +133,11 @@ def _build(chosen: argparse.Namespace) -> int:
         )
     if chosen.record:
         write_whole(Path(chosen.record), lambda file: file.write(record.text().encode()))
+    code = 0 if record.sound else 1
     print("\n".join(closing_lines(record)))
-    return 0 if record.sound else 1
+    if record.lasting:
+        seal(store, asked, record.rests_on, Word("\n".join(told_again(record)), code))
+    return code
 
 
 # plan
@@ -142,7 +153,7 @@ def _plan(chosen: argparse.Namespace) -> int:
     from tangentry.pipeline.build import make_plan
     from tangentry.pipeline.terminal import plan_json, plan_lines
 
-    planned = make_plan(_read(chosen)[0], chosen.store, chosen.asset)
+    planned = make_plan(_read(chosen), chosen.store, chosen.asset)
     print(plan_json(planned) if chosen.json else "\n".join(plan_lines(planned)))
     return 0
 

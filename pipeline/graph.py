@@ -59,7 +59,7 @@ class Graph:
     library: tuple[str, ...]  # patterns; empty: per_asset runs once
     library_mark: Mark | None
     options: dict[str, Any]
-    allowed: tuple[str, ...]  # folders outside the graph's that the command line opened for outputs
+    sets: dict[str, Any]  # the options that were set from outside
     per_asset: dict[str, Entry]
     whole_library: dict[str, Entry]
     files: tuple[Path, ...]  # every graph file that was read
@@ -68,6 +68,11 @@ class Graph:
     def folder(self) -> Path:
         """The folder that every path in the graph is relative to."""
         return self.path.parent
+
+    @property
+    def opened(self) -> list[str]:
+        """Folders outside the graph's own that the command line opened for outputs, by naming them in an option."""
+        return [value for value in self.sets.values() if isinstance(value, str)]
 
 
 @dataclasses.dataclass(frozen=True)
@@ -121,9 +126,8 @@ def read_graph(path: str | os.PathLike[str], sets: Mapping[str, Any] | None = No
     if reading.problems:
         raise GraphError(*reading.problems)
     about = root.value.get("about")
-    allowed = tuple(str(value) for value in (sets or {}).values() if isinstance(value, str))
     mark = root.value["library"].mark if "library" in root.value else None
-    return Graph(path, str(about.value or "") if about else "", library, mark, options, allowed, per_asset, whole, tuple(reading.files))
+    return Graph(path, str(about.value or "") if about else "", library, mark, options, dict(sets or {}), per_asset, whole, tuple(reading.files))
 
 
 def option_from_text(text: str) -> Any:

@@ -28,7 +28,7 @@ from typing import Any
 
 from tangentry.pipeline.errors import GraphError, nearest
 from tangentry.pipeline.flow import InputFile, OutputFile
-from tangentry.pipeline.sources import source_digest
+from tangentry.pipeline.sources import reached, source_digest
 
 REQUIRED: Any = inspect.Parameter.empty
 GROUP = "tangentry.nodes"
@@ -104,6 +104,7 @@ class Kind:
     may_skip: frozenset[str]  # the outputs that may be left out (None)
     source: str  # digest of the source it depends on
     home: Path
+    files: tuple[Path, ...] = ()  # the source it depends on
 
     @property
     def line(self) -> str:
@@ -195,10 +196,11 @@ def _read_kind(name: str, home: _Home, path: Path) -> Kind:
         function = getattr(home.load(path), name)
     except Exception as error:  # whatever a stranger's module does on import, the graph can't use it
         raise GraphError(f"{path}: can't be imported: {type(error).__name__}: {error}") from error
-    return kind_of(function, source_digest(home.folder, path, home.package), path)
+    files = tuple(sorted(reached(home.folder, path, home.package)))
+    return kind_of(function, source_digest(home.folder, path, home.package), path, files)
 
 
-def kind_of(function: Callable[..., Any], source: str = "", home: Path = Path()) -> Kind:
+def kind_of(function: Callable[..., Any], source: str = "", home: Path = Path(), files: tuple[Path, ...] = ()) -> Kind:
     """The kind that a function is. Raises GraphError where its signature can't be a schema."""
     try:
         hints = typing.get_type_hints(function, include_extras=True)
@@ -217,7 +219,7 @@ def kind_of(function: Callable[..., Any], source: str = "", home: Path = Path())
             settings[name] = Setting(name, annotation, parameter.default, _about(about, name), file)
         else:
             inputs[name] = _input(name, annotation, parameter)
-    return Kind(function.__name__, about, function, inputs, settings, *_outputs(function, hints, home), source, home)
+    return Kind(function.__name__, about, function, inputs, settings, *_outputs(function, hints, home), source, home, files)
 
 
 def _about(docstring: str, name: str) -> str:

@@ -56,6 +56,19 @@ def find_members(graph: Graph, written: Collection[str] = (), only: str | None =
     return chosen
 
 
+def looked_into(graph: Graph) -> list[str]:
+    """The folders that a library's patterns look into: none changes unless a file or folder comes, goes or is renamed."""
+    folders: list[str] = []
+    for pattern in (one for pattern in graph.library for one in unfold(pattern)):
+        top = os.path.join(graph.folder, _fixed_part(pattern))
+        folders.append(top)
+        if WILD.search(os.path.dirname(pattern)):
+            for here, below, _ in os.walk(top):
+                below[:] = [name for name in below if not name.startswith(".")]
+                folders += [os.path.join(here, name) for name in below]
+    return folders
+
+
 def relative_name(path: str | os.PathLike[str], folder: Path) -> str:
     """A path relative to a graph's folder, with forward slashes."""
     return Path(os.path.relpath(os.path.join(folder, path), folder)).as_posix()

@@ -172,7 +172,7 @@ def _inside(graph: Graph, path: str, entry: Entry) -> str:
     """An output's path, which stays under the graph's folder or under a folder that the command line opened."""
     home = os.path.realpath(graph.folder)
     real = os.path.realpath(os.path.join(home, path))
-    for root in (home, *(os.path.realpath(os.path.join(home, one)) for one in graph.allowed)):
+    for root in (home, *(os.path.realpath(os.path.join(home, one)) for one in graph.opened)):
         if real == root or not real.startswith(root.rstrip(os.sep) + os.sep):
             continue
         return path

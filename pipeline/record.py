@@ -13,6 +13,7 @@ from __future__ import annotations
 
 import dataclasses
 import json
+from pathlib import Path
 from typing import Any
 
 from tangentry.pipeline.plan import WHOLE
@@ -61,6 +62,17 @@ class AssetRecord:
             return "faulty"
         return "made" if any(step["state"] == "ran" for step in self.steps) else "unchanged"
 
+    @property
+    def lasting(self) -> bool:
+        """Would building again, with nothing changed, end alike? A node's own fault and a blocked output may not last."""
+        failed = [step for step in self.steps if step["state"] == "failed"]
+        return len(failed) == len(self.errors) and not any("detail" in step for step in failed)
+
+    def unchanged(self) -> AssetRecord:
+        """The record of building again with nothing changed."""
+        steps = [{**step, "state": "reused"} if step["state"] == "ran" else step for step in self.steps]
+        return dataclasses.replace(self, steps=steps)
+
     def plain(self) -> dict[str, Any]:
         """The record in JSON's types."""
         return {
@@ -84,6 +96,7 @@ class Record:
     left_over: list[str] = dataclasses.field(default_factory=list)
     tidied: bool = False
     stopped: str = ""  # why the build ended early
+    rests_on: list[Path | str] = dataclasses.field(default_factory=list)  # every file it depended on or made
 
     def count(self, state: str) -> int:
         """How many steps ended in that state."""
@@ -99,6 +112,17 @@ class Record:
     def sound(self) -> bool:
         """Did everything work, with nothing faulty?"""
         return not (self.stopped or self.library.errors or any(asset.state in ("faulty", "failed") for asset in self.assets))
+
+    @property
+    def lasting(self) -> bool:
+        """Would building again, with nothing changed, end alike?"""
+        return not self.stopped and all(one.lasting for one in [*self.assets, self.library])
+
+    def unchanged(self) -> Record:
+        """The record of building again with nothing changed."""
+        assets = [asset.unchanged() for asset in self.assets]
+        left_over = [] if self.tidied else self.left_over
+        return Record(self.graph, assets, self.library.unchanged(), left_over=left_over)
 
     def plain(self) -> dict[str, Any]:
         """The record in JSON's types."""

@@ -91,6 +91,12 @@ def closing_lines(record: Record) -> list[str]:
     return lines
 
 
+def told_again(record: Record) -> list[str]:
+    """What building again would say, with nothing changed."""
+    again = record.unchanged()
+    return [line for asset in again.assets if asset.state != "unchanged" for line in asset_lines(asset)] + closing_lines(again)
+
+
 def _many(count: int, word: str) -> str:
     return f"{count} {word}" if count == 1 else f"{count} {word}s"
 
