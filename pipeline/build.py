@@ -169,10 +169,13 @@ class _Build:
         if done.state in ("failed", "blocked"):
             self.outputs.keep_claims(step)
         elif done.result is not None and step.makes:
+            before = len(self.outputs.written)
             try:
                 record.outputs += self.outputs.place(step, done.result, lambda digest: self._content(done, digest))
             except (OutputError, NodeError) as error:
                 record.errors.append(str(error))
+            if done.state == "reused":
+                self.record.restored += self.outputs.written[before:]
 
     def _content(self, done: Done, digest: str) -> Array:
         """The content of a file, made again where the store has lost it."""
@@ -198,9 +201,6 @@ class _Build:
 
     def _conclude(self, tidy: bool) -> Record:
         self.record.assets = list(self.assets.values())
-        ran = {(one.name, step["node"]) for one in [*self.record.assets, self.record.library] for step in one.steps if step["state"] == "ran"}
-        made_now = {path for one in [*self.record.assets, self.record.library] for path in one.outputs if any(name == one.name for name, _ in ran)}
-        self.record.restored = [path for path in self.outputs.written if path not in made_now]
         if not self.record.stopped:
             left = self.outputs.left_over(None if self.only is None else self.assets)
             self.record.left_over = [Path(os.path.relpath(path, self.graph.folder.resolve())).as_posix() for path in left]

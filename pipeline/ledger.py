@@ -10,7 +10,7 @@ import json
 import os
 import sqlite3
 import time
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from pathlib import Path
 from typing import Any, NamedTuple
 
@@ -20,6 +20,7 @@ from tangentry.pipeline.store import StoreError
 from tangentry.pipeline.values import digest_array
 
 SETTLED_NS = 2_000_000_000  # a file that changed this shortly before its digest was taken may change again unseen
+BATCH = 256  # outputs noted in one transaction
 TABLES = """
 create table if not exists files (path text primary key, size integer, mtime integer, inode integer, noted integer, digest text);
 create table if not exists made (graph text, asset text, node text, parts text, primary key (graph, asset, node));
@@ -61,6 +62,7 @@ class Ledger:
         self.hashed = 0
         self._files: dict[str, tuple[Stat, int, str]] = {}
         self._new_files: dict[str, tuple[Stat, int, str]] = {}
+        self._new_outputs: list[tuple[str, ...]] = []
         self._base: sqlite3.Connection | None = None
         path = folder / "ledger.sqlite"
         try:
@@ -122,7 +124,9 @@ class Ledger:
 
     def note_output(self, path: str, output: Output) -> None:
         """Remember a file that a graph wrote."""
-        self._write("insert or replace into outputs values (?, ?, ?, ?, ?)", [(path, *output)])
+        self._new_outputs.append((path, *output))
+        if len(self._new_outputs) >= BATCH:
+            self._flush()
 
     def forget_output(self, path: str) -> None:
         """Forget a file that was removed."""
@@ -132,21 +136,29 @@ class Ledger:
         """Write down what was learnt about files, and close."""
         if self._base is None:
             return
-        if not self.read_only and self._new_files:
-            self._write(
-                "insert or replace into files values (?, ?, ?, ?, ?, ?)",
-                [(name, *stat, noted, digest) for name, (stat, noted, digest) in self._new_files.items()],
-            )
-        if not self.read_only:
-            self._base.commit()
-        self._base.close()
-        self._base = None
+        try:
+            if not self.read_only:
+                self._flush()
+        finally:
+            self._base.close()
+            self._base = None
+
+    def _flush(self) -> None:
+        learnt = self.learnt()
+        self._write(
+            "insert or replace into files values (?, ?, ?, ?, ?, ?)",
+            [(name, *stat, noted, digest) for name, (stat, noted, digest) in learnt.items()],
+        )
+        self._write("insert or replace into outputs values (?, ?, ?, ?, ?)", self._new_outputs)
+        self._new_outputs = []
 
     def _rows(self, query: str, values: tuple[str, ...]) -> list[tuple[Any, ...]]:
         return self._base.execute(query, values).fetchall() if self._base is not None else []
 
-    def _write(self, statement: str, rows: list[tuple[Any, ...]]) -> None:
+    def _write(self, statement: str, rows: Sequence[tuple[Any, ...]]) -> None:
         assert self._base is not None and not self.read_only
+        if not rows:
+            return
         try:
             self._base.executemany(statement, rows)
             self._base.commit()

@@ -37,6 +37,10 @@ class Outputs:
 
     def __post_init__(self) -> None:
         self._known = self.ledger.outputs()
+        self._by_step: dict[StepId, list[str]] = {}
+        for name, one in self._known.items():
+            if one.graph == self.graph:
+                self._by_step.setdefault((one.asset, one.node), []).append(name)
 
     def place(self, step: Step, result: Result, content_of: Callable[[str], Array]) -> list[str]:
         """Put a step's files in place; gives their paths relative to the graph's folder. Raises OutputError."""
@@ -52,7 +56,7 @@ class Outputs:
 
     def keep_claims(self, step: Step) -> None:
         """A step that could not be settled keeps what it wrote before."""
-        self.claimed.update({name: step.id for name, one in self._known.items() if (one.graph, one.asset, one.node) == (self.graph, *step.id)})
+        self.claimed.update(dict.fromkeys(self._by_step.get(step.id, ()), step.id))
 
     def _place(self, path: str, id: StepId, digest: str, content_of: Callable[[str], Array]) -> None:
         target = self.folder / path
