@@ -6,10 +6,13 @@
 from __future__ import annotations
 
 import dataclasses
+import json
 import os
 from collections.abc import Callable, Iterator
 from pathlib import Path
+from typing import Any
 
+from tangentry.pipeline.cluster import Cluster
 from tangentry.pipeline.errors import NodeError, TangentryError
 from tangentry.pipeline.executors import Finished, Here, Orders, Task, Workers
 from tangentry.pipeline.flow import Array
@@ -19,7 +22,10 @@ from tangentry.pipeline.library import Member, find_members, looked_into
 from tangentry.pipeline.outputs import OutputError, Outputs
 from tangentry.pipeline.plan import WHOLE, Parts, Planned, Step, StepId, all_steps, asset_steps, assets_of, lay_out, plan, relative_digest, side_files, whole_steps
 from tangentry.pipeline.record import AssetRecord, Record
-from tangentry.pipeline.store import Damaged, Store
+from tangentry.pipeline.remote import open_store
+from tangentry.pipeline.seal import store_place
+from tangentry.pipeline.store import Damaged, Store, write_whole
+from tangentry.pipeline.values import digest_text
 from tangentry.pipeline.work import Bench, Done, Event
 
 Listener = Callable[[AssetRecord, int], None]  # an asset is through; how many there are
@@ -32,12 +38,13 @@ class Site:
     graph: Graph
     store: Store
     ledger: Ledger
+    url: str = ""  # of a shared store
 
     @staticmethod
     def open(graph: Graph, store: str | os.PathLike[str] | None = None, read_only: bool = False) -> Site:
-        """The graph's own store, `.tangentry` beside the graph file, unless another is named."""
-        folder = Path(store) if store is not None else graph.folder / ".tangentry"
-        return Site(graph, Store(folder), Ledger(folder.absolute(), read_only))
+        """The graph's own store, `.tangentry` beside the graph file, unless another folder or a URL is named."""
+        folder, url = store_place(graph.path, store)
+        return Site(graph, open_store(folder, url), Ledger(folder.absolute(), read_only), url)
 
     @property
     def home(self) -> Path:
@@ -48,6 +55,11 @@ class Site:
     def name(self) -> str:
         """The graph's name in the ledger."""
         return os.path.relpath(self.graph.path.resolve(), self.home)
+
+    @property
+    def last_record(self) -> Path:
+        """Where the record of the last build is kept."""
+        return self.store.folder / "records" / f"{digest_text(self.name)[:16]}.json"
 
     def members(self, only: str | None = None) -> list[Member]:
         """The library's files, less those this graph wrote itself."""
@@ -69,12 +81,24 @@ def make_plan(graph: Graph, store: str | os.PathLike[str] | None = None, only: s
         site.ledger.close()
 
 
+def read_last_record(graph: Graph, store: str | os.PathLike[str] | None = None) -> dict[str, Any] | None:
+    """The record of a graph's last build, in plain data; None where there is none."""
+    site = Site.open(graph, store, read_only=True)
+    site.ledger.close()
+    try:
+        record: dict[str, Any] = json.loads(site.last_record.read_bytes())
+        return record
+    except (OSError, ValueError):
+        return None
+
+
 def run_build(
     graph: Graph,
     *,
     store: str | os.PathLike[str] | None = None,
     only: str | None = None,
     workers: int = 1,
+    cluster: str = "",
     stop_at_first: bool = False,
     overwrite: bool = False,
     tidy: bool = False,
@@ -85,6 +109,7 @@ def run_build(
     store          folder of the store; `.tangentry` beside the graph file by default
     only           pattern of the assets to build
     workers        how many processes
+    cluster        address of a Dask scheduler whose workers do it instead
     stop_at_first  end at the first asset that fails
     overwrite      replace files that this graph did not write
     tidy           remove the outputs of assets that are gone
@@ -94,7 +119,7 @@ def run_build(
     """
     site = Site.open(graph, store)
     try:
-        return _Build(site, only, overwrite).run(workers, stop_at_first, tidy, listener)
+        return _Build(site, only, overwrite).run(workers, cluster, stop_at_first, tidy, listener)
     finally:
         site.ledger.close()
 
@@ -118,10 +143,9 @@ class _Build:
         step: Step = self.dag.nodes[id]["step"]
         return step
 
-    def run(self, workers: int, stop_at_first: bool, tidy: bool, listener: Listener) -> Record:
+    def run(self, workers: int, cluster: str, stop_at_first: bool, tidy: bool, listener: Listener) -> Record:
         tasks = [Task(member, self._last_of(member.name)) for member in assets_of(self.graph, self.members)]
-        orders = Orders(self.graph.path.absolute(), self.graph.sets, self.site.store.folder.absolute())
-        executor = Workers(workers, orders) if workers > 1 and len(tasks) > 1 else Here(self._carry_here)
+        executor = self._executor(workers, cluster, len(tasks))
         try:
             for event in executor.run(tasks):
                 if isinstance(event, Finished):
@@ -140,6 +164,12 @@ class _Build:
             self.site.ledger.note_parts(self.site.name, changed)
         return self._conclude(tidy)
 
+    def _executor(self, workers: int, cluster: str, tasks: int) -> Here | Workers | Cluster:
+        orders = Orders(self.graph.path.absolute(), self.graph.sets, self.site.store.folder.absolute(), self.site.url)
+        if cluster:
+            return Cluster(cluster, orders)
+        return Workers(workers, orders) if workers > 1 and tasks > 1 else Here(self._carry_here)
+
     def _last_of(self, asset: str) -> dict[StepId, Parts]:
         return {(asset, node): self.last[asset, node] for node in self.graph.per_asset if (asset, node) in self.last}
 
@@ -155,6 +185,8 @@ class _Build:
     def _finish(self, event: Finished) -> None:
         if event.trouble:
             raise TangentryError(event.trouble)
+        if event.error:
+            self.assets[event.asset].errors.append(event.error)
         for name, (stat, noted, digest) in event.files.items():
             self.site.ledger.note_file(name, stat, noted, digest)
 
@@ -208,4 +240,6 @@ class _Build:
                 self.outputs.remove(left)
                 self.record.tidied = True
         self.record.rests_on = list(self.depends_on())
+        if self.only is None:
+            write_whole(self.site.last_record, lambda file: file.write(self.record.text().encode()))
         return self.record

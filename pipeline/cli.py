@@ -14,6 +14,7 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from tangentry.pipeline.graph import Graph
+    from tangentry.pipeline.record import Record
 
 CAUTION = "Building a graph runs the code of its node kinds, those of its own `kinds:` folder included: build graphs you trust."
 
@@ -49,6 +50,7 @@ def _parser() -> argparse.ArgumentParser:
     commands = parser.add_subparsers(metavar="COMMAND", required=True)
     _build_words(commands.add_parser("build", help="make everything that is out of date", epilog=CAUTION))
     _plan_words(commands.add_parser("plan", help="what would run and why, touching nothing", epilog=CAUTION))
+    _draw_words(commands.add_parser("draw", help="the graph as a picture, with the last build's state"))
     _nodes_words(commands.add_parser("nodes", help="the node reference"))
     _inspect_words(commands.add_parser("inspect", help="facts about meshes and maps"))
     _store_words(commands.add_parser("store", help="look after the store"))
@@ -68,7 +70,7 @@ def _graph_words(parser: argparse.ArgumentParser) -> None:
     parser.add_argument("graph", metavar="GRAPH", help="a graph file (YAML)")
     parser.add_argument("--asset", metavar="PATTERN", help="only the assets whose name or stem matches")
     parser.add_argument("--set", metavar="NAME=VALUE", action="append", default=[], help="set an option of the graph; may be repeated")
-    parser.add_argument("--store", metavar="DIR", help="folder of the store (default: .tangentry beside the graph file)")
+    parser.add_argument("--store", metavar="DIR", help="folder of the store, or an fsspec URL (default: .tangentry beside the graph file)")
 
 
 def _read(chosen: argparse.Namespace) -> Graph:
@@ -90,9 +92,11 @@ def _read(chosen: argparse.Namespace) -> Graph:
 def _build_words(parser: argparse.ArgumentParser) -> None:
     _graph_words(parser)
     parser.add_argument("--workers", metavar="N", type=_count, default=1, help="processes to build with (default: 1)")
+    parser.add_argument("--cluster", metavar="ADDRESS", help="build on the workers of the Dask scheduler at this address")
     going = parser.add_mutually_exclusive_group()
     going.add_argument("--keep-going", action="store_true", help="build all other assets when one fails (the default)")
     going.add_argument("--stop-at-first", action="store_true", help="stop when an asset fails")
+    parser.add_argument("--watch", action="store_true", help="build again at every save, until interrupted")
     parser.add_argument("--record", metavar="FILE", help="write what happened as JSON")
     parser.add_argument("--overwrite", action="store_true", help="replace files that this graph did not write")
     parser.add_argument("--tidy", action="store_true", help="remove files this graph wrote and makes no longer")
@@ -106,18 +110,26 @@ def _count(text: str) -> int:
 
 
 def _build(chosen: argparse.Namespace) -> int:
-    from tangentry.pipeline.seal import Word, seal, unbroken
+    from tangentry.pipeline.seal import Word, seal, store_place, unbroken
 
-    store = Path(chosen.store) if chosen.store else Path(chosen.graph).parent / ".tangentry"
-    asked = [os.path.abspath(chosen.graph), os.path.abspath(store), chosen.asset or "", *chosen.set]
-    word = None if chosen.record or chosen.tidy or chosen.overwrite else unbroken(store, asked)
+    store, _ = store_place(Path(chosen.graph), chosen.store)
+    asked = [os.path.abspath(chosen.graph), chosen.store or "", chosen.asset or "", *chosen.set]
+    word = None if chosen.record or chosen.tidy or chosen.overwrite or chosen.watch else unbroken(store, asked)
     if word is not None:
         print(word.text)
         return word.code
+    record, code = _build_once(chosen)
+    if record.lasting:
+        from tangentry.pipeline.terminal import told_again
 
+        seal(store, asked, record.rests_on, Word("\n".join(told_again(record)), code))
+    return _watch(chosen, record, store) if chosen.watch else code
+
+
+def _build_once(chosen: argparse.Namespace) -> tuple[Record, int]:
     from tangentry.pipeline.build import run_build
     from tangentry.pipeline.store import write_whole
-    from tangentry.pipeline.terminal import Progress, closing_lines, told_again
+    from tangentry.pipeline.terminal import Progress, closing_lines
 
     graph = _read(chosen)
     with Progress() as progress:
@@ -126,6 +138,7 @@ def _build(chosen: argparse.Namespace) -> int:
             store=chosen.store,
             only=chosen.asset,
             workers=chosen.workers,
+            cluster=chosen.cluster or "",
             stop_at_first=chosen.stop_at_first,
             overwrite=chosen.overwrite,
             tidy=chosen.tidy,
@@ -133,11 +146,25 @@ def _build(chosen: argparse.Namespace) -> int:
         )
     if chosen.record:
         write_whole(Path(chosen.record), lambda file: file.write(record.text().encode()))
-    code = 0 if record.sound else 1
-    print("\n".join(closing_lines(record)))
-    if record.lasting:
-        seal(store, asked, record.rests_on, Word("\n".join(told_again(record)), code))
-    return code
+    print("\n".join(closing_lines(record)), flush=True)
+    return record, 0 if record.sound else 1
+
+
+def _watch(chosen: argparse.Namespace, record: Record, store: Path) -> int:
+    """Build again at every save, until interrupted; a graph that is wrong for the moment is waited for."""
+    from tangentry.pipeline.errors import GraphError
+    from tangentry.pipeline.watch import changes
+
+    rests_on = record.rests_on
+    outputs = lambda: [store, *(Path(chosen.graph).parent / path for one in [*record.assets, record.library] for path in one.outputs)]  # noqa: E731
+    for saved in changes(lambda: rests_on, outputs):
+        print(f"\nsaved: {', '.join(os.path.relpath(path) for path in saved[:4])}{' ...' if len(saved) > 4 else ''}", flush=True)
+        try:
+            record, _ = _build_once(chosen)
+            rests_on = record.rests_on
+        except GraphError as error:
+            print("\n".join(error.problems), file=sys.stderr)
+    return 0
 
 
 # plan
@@ -158,12 +185,34 @@ def _plan(chosen: argparse.Namespace) -> int:
     return 0
 
 
+# draw
+
+
+def _draw_words(parser: argparse.ArgumentParser) -> None:
+    _graph_words(parser)
+    parser.add_argument("-o", "--output", metavar="FILE", required=True, help="the picture to write (SVG)")
+    parser.set_defaults(run=_draw)
+
+
+def _draw(chosen: argparse.Namespace) -> int:
+    from tangentry.pipeline.build import read_last_record
+    from tangentry.pipeline.draw import draw
+    from tangentry.pipeline.store import write_whole
+
+    graph = _read(chosen)
+    picture = draw(graph, read_last_record(graph, chosen.store))
+    write_whole(Path(chosen.output), lambda file: file.write(picture.encode()))
+    print(f"drawn     {chosen.output}")
+    return 0
+
+
 # nodes
 
 
 def _nodes_words(parser: argparse.ArgumentParser) -> None:
     parser.add_argument("kind", metavar="KIND", nargs="?", help="one kind, in full")
     parser.add_argument("--kinds", metavar="DIR", help="a project's own folder of node kinds, too")
+    parser.add_argument("--schema", action="store_true", help="print the JSON Schema of graph files")
     parser.set_defaults(run=_nodes)
 
 
@@ -172,6 +221,13 @@ def _nodes(chosen: argparse.Namespace) -> int:
     from tangentry.pipeline.terminal import kind_lines, kinds_lines
 
     kinds = Kinds(Path(chosen.kinds) if chosen.kinds else None)
+    if chosen.schema:
+        import json
+
+        from tangentry.pipeline.schema import graph_schema
+
+        print(json.dumps(graph_schema(kinds), indent=1))
+        return 0
     print("\n".join(kind_lines(kinds.get(chosen.kind)) if chosen.kind else kinds_lines(kinds)))
     return 0
 

@@ -2,6 +2,7 @@
 
     Here      in this process, one asset after another
     Workers   in processes of their own; a whole asset stays on one of them, so its arrays stay warm
+    Cluster   on the workers of a Dask cluster (cluster.py)
 """
 
 from __future__ import annotations
@@ -9,6 +10,7 @@ from __future__ import annotations
 import contextlib
 import dataclasses
 import multiprocessing
+import secrets
 from collections import deque
 from collections.abc import Callable, Iterator, Sequence
 from multiprocessing.connection import Connection, wait
@@ -16,10 +18,11 @@ from pathlib import Path
 from typing import Any
 
 from tangentry.pipeline.errors import TangentryError
-from tangentry.pipeline.graph import read_graph
+from tangentry.pipeline.graph import Graph, read_graph
 from tangentry.pipeline.ledger import Ledger, Stat
 from tangentry.pipeline.library import Member
 from tangentry.pipeline.plan import Parts, StepId, asset_steps, relative_digest
+from tangentry.pipeline.remote import open_store
 from tangentry.pipeline.store import Store
 from tangentry.pipeline.work import Bench, Event, Started
 
@@ -39,6 +42,7 @@ class Finished:
 
     asset: str
     files: dict[str, tuple[Stat, int, str]] = dataclasses.field(default_factory=dict)
+    error: str = ""  # why the asset could not be carried out
     trouble: str = ""  # what keeps the whole build from going on (the store can't be written)
 
 
@@ -49,6 +53,8 @@ class Orders:
     graph: Path
     sets: dict[str, Any]
     store: Path
+    url: str  # of a shared store; "" where there is none
+    build: str = dataclasses.field(default_factory=lambda: secrets.token_hex(8))  # each build reads the graph anew
 
 
 class Here:
@@ -152,21 +158,51 @@ def work(pipe: Connection, orders: Orders) -> None:
     import signal
 
     signal.signal(signal.SIGINT, signal.SIG_IGN)  # the main process ends its workers
-    graph = read_graph(orders.graph, orders.sets)
-    store, ledger = Store(orders.store), Ledger(orders.store, read_only=True)
+    tools = _Tools.of(orders)
     while True:
         try:
             task: Task = pipe.recv()
         except EOFError:
             return
-        steps = asset_steps(graph, task.member)
-        by_id = {step.id: step for step in steps}
-        bench = Bench(graph.folder, store, relative_digest(graph.folder, ledger.digest_of), by_id.__getitem__)
         try:
-            for event in bench.carry(steps, task.last, task.refuse):
+            for event in tools.carry(task):
                 pipe.send(event)
-            pipe.send(Finished(task.member.name, ledger.learnt()))
-        except TangentryError as error:
-            pipe.send(Finished(task.member.name, trouble=str(error)))
         except BrokenPipeError:
             return
+
+
+def carry_task(orders: Orders, task: Task) -> list[Event | Finished]:
+    """Carry out one task wherever this runs; gives its events."""
+    return list(_Tools.of(orders).carry(task))
+
+
+@dataclasses.dataclass(frozen=True)
+class _Tools:
+    """What a process needs for the tasks of one build, made once."""
+
+    graph: Graph
+    store: Store
+    ledger: Ledger
+
+    @staticmethod
+    def of(orders: Orders) -> _Tools:
+        """The tools for these orders, kept for the next task."""
+        if _LAST and _LAST[0][0] == orders:
+            return _LAST[0][1]
+        tools = _Tools(read_graph(orders.graph, orders.sets), open_store(orders.store, orders.url), Ledger(orders.store, read_only=True))
+        _LAST[:] = [(orders, tools)]
+        return tools
+
+    def carry(self, task: Task) -> Iterator[Event | Finished]:
+        """Carry out one task on a fresh bench, so that files are looked at anew."""
+        steps = asset_steps(self.graph, task.member)
+        by_id = {step.id: step for step in steps}
+        bench = Bench(self.graph.folder, self.store, relative_digest(self.graph.folder, self.ledger.digest_of), by_id.__getitem__)
+        try:
+            yield from bench.carry(steps, task.last, task.refuse)
+            yield Finished(task.member.name, self.ledger.learnt())
+        except TangentryError as error:
+            yield Finished(task.member.name, trouble=str(error))
+
+
+_LAST: list[tuple[Orders, _Tools]] = []

@@ -29,6 +29,7 @@ from typing import Any
 from tangentry.pipeline.errors import GraphError, nearest
 from tangentry.pipeline.flow import InputFile, OutputFile
 from tangentry.pipeline.sources import reached, source_digest
+from tangentry.pipeline.values import digest_text
 
 REQUIRED: Any = inspect.Parameter.empty
 GROUP = "tangentry.nodes"
@@ -128,21 +129,30 @@ class _Home:
         return found
 
     def load(self, path: Path) -> types.ModuleType:
-        """Import one file; a project's file is imported anew when anything in its folder changed."""
+        """Import one file, anew where anything in its home has changed since it was last imported here."""
+        changed = source_digest(self.folder, None) != _IMPORTED.setdefault(self.folder, source_digest(self.folder, None))
+        if changed:
+            for name, module in list(sys.modules.items()):
+                if Path(getattr(module, "__file__", None) or "/").is_relative_to(self.folder):
+                    del sys.modules[name]
+            _IMPORTED[self.folder] = source_digest(self.folder, None)
         if self.package:
             return importlib.import_module(f"{self.package}.{path.stem}")
         return _load_project_module(self.folder, path)
+
+
+_IMPORTED: dict[Path, str] = {}  # home -> digest of its source when it was imported
 
 
 class Kinds:
     """Every kind at hand, by name."""
 
     def __init__(self, project: Path | None = None) -> None:
-        homes = [_Home(entry.value, Path(next(iter(_package_paths(entry.value))))) for entry in sorted(entry_points(group=GROUP))]
+        homes = [_Home(entry.value, Path(next(iter(_package_paths(entry.value)))).resolve()) for entry in sorted(entry_points(group=GROUP))]
         if project is not None:
             if not project.is_dir():
                 raise GraphError(f"{project}: there is no such folder of node kinds")
-            homes.append(_Home("", project))
+            homes.append(_Home("", project.resolve()))
         self._where: dict[str, tuple[_Home, Path]] = {}
         self._loaded: dict[str, Kind] = {}
         for home in homes:
@@ -175,20 +185,17 @@ def _package_paths(package: str) -> Sequence[str]:
 
 def _load_project_module(folder: Path, path: Path) -> types.ModuleType:
     """A module of a project's folder, which may import its neighbours plainly (`import helper`) or as `from . import helper`."""
-    package = f"tangentry_project_{source_digest(folder.resolve(), None)[:16]}"
+    package = f"tangentry_project_{digest_text(str(folder))[:16]}"
     if package not in sys.modules:
-        for name, module in list(sys.modules.items()):
-            home = getattr(module, "__file__", None)
-            if home and Path(home).parent == folder.resolve():
-                del sys.modules[name]
         spec = importlib.machinery.ModuleSpec(package, None, is_package=True)
-        spec.submodule_search_locations = [str(folder.resolve())]
+        spec.submodule_search_locations = [str(folder)]
         sys.modules[package] = importlib.util.module_from_spec(spec)
-    sys.path.insert(0, str(folder.resolve()))
+    importlib.invalidate_caches()
+    sys.path.insert(0, str(folder))
     try:
         return importlib.import_module(f"{package}.{path.stem}")
     finally:
-        sys.path.remove(str(folder.resolve()))
+        sys.path.remove(str(folder))
 
 
 def _read_kind(name: str, home: _Home, path: Path) -> Kind:

@@ -29,6 +29,15 @@ class Word(NamedTuple):
     code: int
 
 
+def store_place(graph: Path, store: str | os.PathLike[str] | None) -> tuple[Path, str]:
+    """The store's folder, and the URL behind it if it is a shared one: `.tangentry` beside the graph unless another is named."""
+    own = graph.parent / ".tangentry"
+    if store is None:
+        return own, ""
+    name = os.fspath(store)
+    return (own / "copies" / _short(name), name) if "://" in name else (Path(store), "")
+
+
 def unbroken(folder: Path, asked: list[str]) -> Word | None:
     """What the last build for these words said, if nothing has changed since; None where that is not sure."""
     try:
@@ -64,9 +73,14 @@ def seal(folder: Path, asked: list[str], paths: Iterable[Path | str], word: Word
 
 
 def _place(folder: Path, asked: list[str]) -> Path:
+    return folder / "seals" / _short(json.dumps(asked))
+
+
+def _short(text: str) -> str:
+    """A file name for a text; what is found there is compared, so a clash costs time only."""
     import zlib
 
-    return folder / "seals" / f"{zlib.crc32(json.dumps(asked).encode()):08x}"
+    return f"{zlib.crc32(text.encode()):08x}"
 
 
 def _stats(paths: list[str]) -> array[int]:

@@ -83,6 +83,7 @@ class Store:
     def fetch(self, digest: str, wanted: type) -> Any:
         """The value of that digest. Raises Damaged where it is missing or spoilt."""
         path = self._place("values", digest)
+        self._bring(path)
         try:
             manifest = path.read_text("utf-8", errors="replace")
             if digest_text(manifest) != digest:
@@ -104,6 +105,7 @@ class Store:
     def fetch_array(self, digest: str) -> Array:
         """The array of that digest, by memory map. Raises Damaged where it is missing or spoilt."""
         path = self._place("arrays", digest)
+        self._bring(path)
         try:
             array = _map(path)
             if digest not in self._checked:
@@ -121,6 +123,7 @@ class Store:
     def results(self, key: str) -> list[Result]:
         """Every result kept under a key; unreadable ones are set aside."""
         path = self._place("results", key)
+        self._bring(path)
         try:
             kept = json.loads(path.read_bytes())
             return [Result(**one) for one in kept]
@@ -225,7 +228,14 @@ class Store:
             raise StoreError(
                 f"{self.folder}: the store can't be written ({error.strerror or error}); free some space or correct its permissions, or name another with --store"
             ) from error
+        self._send(path)
         return True
+
+    def _bring(self, path: Path) -> None:
+        """Before an object is read: a store that others share fetches it."""
+
+    def _send(self, path: Path) -> None:
+        """After an object was written: a store that others share hands it on."""
 
 
 def write_whole(path: Path, fill: Callable[[Any], object]) -> None:
