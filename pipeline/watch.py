@@ -24,19 +24,17 @@ def changes(rests_on: Callable[[], Iterable[Path | str]], ignored: Callable[[], 
         raise TangentryError("--watch needs the package watchfiles: pip install 'tangentry[watch]'") from None
     while True:
         paths = {os.path.realpath(path) for path in rests_on()}
-        folders = _folders(paths)
+        looked_into = {path for path in paths if os.path.isdir(path)}
         mute = [os.path.realpath(path) for path in ignored()]
 
-        def wanted(_: object, path: str, mute: list[str] = mute) -> bool:
-            name = os.path.basename(path)
-            return not (name.startswith(".") or any(path == one or path.startswith(one + os.sep) for one in mute))
+        def wanted(_: object, path: str, paths: set[str] = paths, looked_into: set[str] = looked_into, mute: list[str] = mute) -> bool:
+            if os.path.basename(path).startswith(".") or any(path == one or path.startswith(one + os.sep) for one in mute):
+                return False
+            return path in paths or os.path.dirname(path) in looked_into
 
-        for batch in watch(*folders, watch_filter=wanted, step=QUIET_MS, debounce=LONGEST_MS, recursive=False, raise_interrupt=True):
+        folders = looked_into | {os.path.dirname(path) for path in paths}
+        existing = sorted(folder for folder in folders if os.path.isdir(folder))
+        for batch in watch(*existing, watch_filter=wanted, step=QUIET_MS, debounce=LONGEST_MS, recursive=False, raise_interrupt=True):
             yield sorted({path for _, path in batch})
             break  # what to watch may have changed with the build
 
-
-def _folders(paths: set[str]) -> list[str]:
-    """The folders that hold the paths, or are among them."""
-    found = {path if os.path.isdir(path) else os.path.dirname(path) for path in paths}
-    return sorted(folder for folder in found if os.path.isdir(folder))
