@@ -1,6 +1,6 @@
 """Building: a plan carried out, outputs put in place, what happened told to whoever listens.
 
-    for event in build(graph): ...        or        record = run_build(graph)
+for event in build(graph): ...        or        record = run_build(graph)
 """
 
 from __future__ import annotations
@@ -20,7 +20,21 @@ from tangentry.pipeline.graph import Graph
 from tangentry.pipeline.ledger import Ledger
 from tangentry.pipeline.library import Member, find_members, looked_into
 from tangentry.pipeline.outputs import OutputError, Outputs
-from tangentry.pipeline.plan import WHOLE, Parts, Planned, Step, StepId, all_steps, asset_steps, assets_of, lay_out, plan, relative_digest, side_files, whole_steps
+from tangentry.pipeline.plan import (
+    WHOLE,
+    Parts,
+    Planned,
+    Step,
+    StepId,
+    all_steps,
+    asset_steps,
+    assets_of,
+    lay_out,
+    plan,
+    relative_digest,
+    side_files,
+    whole_steps,
+)
 from tangentry.pipeline.record import AssetRecord, Record
 from tangentry.pipeline.remote import open_store
 from tangentry.pipeline.seal import store_place
@@ -65,7 +79,9 @@ class Site:
         """The library's files, less those this graph wrote itself."""
         if not self.graph.library:
             return []
-        written = {os.path.normpath(self.home / path) for path, one in self.ledger.outputs().items() if one.graph == self.name}
+        written = {
+            os.path.normpath(self.home / path) for path, one in self.ledger.outputs().items() if one.graph == self.name
+        }
         return find_members(self.graph, written, only)
 
 
@@ -133,7 +149,9 @@ class _Build:
         self.dag = lay_out(self.graph, self.members)
         self.last = site.ledger.parts_of(site.name)
         self.outputs = Outputs(site.name, self.graph.folder, site.home, site.ledger, overwrite)
-        self.bench = Bench(self.graph.folder, site.store, relative_digest(self.graph.folder, site.ledger.digest_of), self.step_of)
+        self.bench = Bench(
+            self.graph.folder, site.store, relative_digest(self.graph.folder, site.ledger.digest_of), self.step_of
+        )
         self.record = Record(self.graph.path.as_posix())
         self.assets = {member.name: AssetRecord(member.name) for member in assets_of(self.graph, self.members)}
         self.parts: dict[StepId, Parts] = {}
@@ -235,7 +253,9 @@ class _Build:
         self.record.assets = list(self.assets.values())
         if not self.record.stopped:
             left = self.outputs.left_over(None if self.only is None else self.assets)
-            self.record.left_over = [Path(os.path.relpath(path, self.graph.folder.resolve())).as_posix() for path in left]
+            self.record.left_over = [
+                Path(os.path.relpath(path, self.graph.folder.resolve())).as_posix() for path in left
+            ]
             if tidy:
                 self.outputs.remove(left)
                 self.record.tidied = True

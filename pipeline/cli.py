@@ -69,8 +69,14 @@ class _Version(str):
 def _graph_words(parser: argparse.ArgumentParser) -> None:
     parser.add_argument("graph", metavar="GRAPH", help="a graph file (YAML)")
     parser.add_argument("--asset", metavar="PATTERN", help="only the assets whose name or stem matches")
-    parser.add_argument("--set", metavar="NAME=VALUE", action="append", default=[], help="set an option of the graph; may be repeated")
-    parser.add_argument("--store", metavar="DIR", help="folder of the store, or an fsspec URL (default: .tangentry beside the graph file)")
+    parser.add_argument(
+        "--set", metavar="NAME=VALUE", action="append", default=[], help="set an option of the graph; may be repeated"
+    )
+    parser.add_argument(
+        "--store",
+        metavar="DIR",
+        help="folder of the store, or an fsspec URL (default: .tangentry beside the graph file)",
+    )
 
 
 def _read(chosen: argparse.Namespace) -> Graph:
@@ -92,7 +98,9 @@ def _read(chosen: argparse.Namespace) -> Graph:
 def _build_words(parser: argparse.ArgumentParser) -> None:
     _graph_words(parser)
     parser.add_argument("--workers", metavar="N", type=_count, default=1, help="processes to build with (default: 1)")
-    parser.add_argument("--cluster", metavar="ADDRESS", help="build on the workers of the Dask scheduler at this address")
+    parser.add_argument(
+        "--cluster", metavar="ADDRESS", help="build on the workers of the Dask scheduler at this address"
+    )
     going = parser.add_mutually_exclusive_group()
     going.add_argument("--keep-going", action="store_true", help="build all other assets when one fails (the default)")
     going.add_argument("--stop-at-first", action="store_true", help="stop when an asset fails")
@@ -156,9 +164,15 @@ def _watch(chosen: argparse.Namespace, record: Record, store: Path) -> int:
     from tangentry.pipeline.watch import changes
 
     rests_on = record.rests_on
-    outputs = lambda: [store, *(Path(chosen.graph).parent / path for one in [*record.assets, record.library] for path in one.outputs)]  # noqa: E731
+    outputs = lambda: [
+        store,
+        *(Path(chosen.graph).parent / path for one in [*record.assets, record.library] for path in one.outputs),
+    ]  # noqa: E731
     for saved in changes(lambda: rests_on, outputs):
-        print(f"\nsaved: {', '.join(os.path.relpath(path) for path in saved[:4])}{' ...' if len(saved) > 4 else ''}", flush=True)
+        print(
+            f"\nsaved: {', '.join(os.path.relpath(path) for path in saved[:4])}{' ...' if len(saved) > 4 else ''}",
+            flush=True,
+        )
         try:
             record, _ = _build_once(chosen)
             rests_on = record.rests_on
@@ -272,8 +286,12 @@ def _store_words(parser: argparse.ArgumentParser) -> None:
         action.add_argument("--store", metavar="DIR", help="the store's folder (default: .tangentry here)")
         action.set_defaults(run=run)
         if name == "trim":
-            action.add_argument("--keep-days", metavar="DAYS", type=float, help="remove what was not used for so many days")
-            action.add_argument("--max-size", metavar="SIZE", type=_size, help="remove the oldest until so much is left: 500M, 20G")
+            action.add_argument(
+                "--keep-days", metavar="DAYS", type=float, help="remove what was not used for so many days"
+            )
+            action.add_argument(
+                "--max-size", metavar="SIZE", type=_size, help="remove the oldest until so much is left: 500M, 20G"
+            )
 
 
 def _size(text: str) -> int:
@@ -301,7 +319,9 @@ def _store_size(chosen: argparse.Namespace) -> int:
     sizes = _open_store(chosen).size()
     for room, (count, size) in sizes.items():
         print(f"{room:8} {count:9,}  {bytes_text(size):>9}")
-    print(f"{'in all':8} {sum(count for count, _ in sizes.values()):9,}  {bytes_text(sum(size for _, size in sizes.values())):>9}")
+    print(
+        f"{'in all':8} {sum(count for count, _ in sizes.values()):9,}  {bytes_text(sum(size for _, size in sizes.values())):>9}"
+    )
     return 0
 
 

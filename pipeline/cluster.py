@@ -24,21 +24,23 @@ class Cluster:
 
     def __init__(self, address: str, orders: Orders) -> None:
         try:
-            from distributed import Client
+            import distributed
         except ImportError:
             raise TangentryError("--cluster needs the package distributed: pip install 'tangentry[cluster]'") from None
+        client: Any = distributed.Client
         try:
-            self._client: Any = Client(address, timeout=REACH_SECONDS, set_as_default=False)
+            self._client: Any = client(address, timeout=REACH_SECONDS, set_as_default=False)
         except (OSError, ValueError) as error:
             raise TangentryError(f"--cluster {address}: no scheduler answers there ({error})") from None
         self._orders = orders
 
     def run(self, tasks: Sequence[Task]) -> Iterator[Event | Finished]:
         """Carry out tasks side by side; an asset's events come together, when it is through."""
-        from distributed import as_completed
+        import distributed
 
         waiting = iter(tasks)
         under_way = {self._submit(task): task for task in itertools.islice(waiting, AHEAD)}
+        as_completed: Any = distributed.as_completed
         done = as_completed(list(under_way))
         for future in done:
             yield from self._events(future, under_way.pop(future))

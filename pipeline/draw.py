@@ -45,7 +45,9 @@ def draw(graph: Graph, record: dict[str, Any] | None = None) -> str:
     boxes = _place(graph)
     width = max(box.x for box in boxes.values()) + WIDE + MARGIN
     height = max(box.y for box in boxes.values()) + HIGH + MARGIN + 26
-    lines = [_line(boxes[source.node], box, source.every) for box in boxes.values() for source in box.entry.inputs.values()]
+    lines = [
+        _line(boxes[source.node], box, source.every) for box in boxes.values() for source in box.entry.inputs.values()
+    ]
     shapes = [_box(box, states.get(name, Counter())) for name, box in boxes.items()]
     title = f"{graph.path.name}: {graph.about}" if graph.about else graph.path.name
     return "\n".join(
@@ -90,13 +92,16 @@ def _place(graph: Graph) -> dict[str, Box]:
             _settle(names, row, joined)
     lowest = min(row.values())
     return {
-        name: Box(entry, MARGIN + column[name] * (WIDE + GAP_X), 58 + (row[name] - lowest) * (HIGH + GAP_Y)) for name, entry in entries.items()
+        name: Box(entry, MARGIN + column[name] * (WIDE + GAP_X), 58 + (row[name] - lowest) * (HIGH + GAP_Y))
+        for name, entry in entries.items()
     }
 
 
 def _settle(names: list[str], row: dict[str, float], joined: dict[str, list[str]]) -> None:
     """Move a column's nodes towards what they are joined to, one row apart at least."""
-    wish = {name: sum(row[one] for one in joined[name]) / len(joined[name]) if joined[name] else row[name] for name in names}
+    wish = {
+        name: sum(row[one] for one in joined[name]) / len(joined[name]) if joined[name] else row[name] for name in names
+    }
     names.sort(key=lambda name: (wish[name], row[name]))
     floor = float("-inf")
     for name in names:
@@ -109,10 +114,14 @@ def _settle(names: list[str], row: dict[str, float], joined: dict[str, list[str]
 
 def _sections(graph: Graph, boxes: dict[str, Box], height: float) -> list[str]:
     """A word under each section, and a rule between them."""
-    words = [f'<text x="{MARGIN}" y="{height - 12:.0f}" font-size="12" font-style="italic" fill="{FAINT}">once for each asset</text>']
+    words = [
+        f'<text x="{MARGIN}" y="{height - 12:.0f}" font-size="12" font-style="italic" fill="{FAINT}">once for each asset</text>'
+    ]
     if graph.whole_library and graph.per_asset:
         x = min(boxes[name].x for name in graph.whole_library)
-        words.append(f'<text x="{x:.0f}" y="{height - 12:.0f}" font-size="12" font-style="italic" fill="{FAINT}">once for the whole library</text>')
+        words.append(
+            f'<text x="{x:.0f}" y="{height - 12:.0f}" font-size="12" font-style="italic" fill="{FAINT}">once for the whole library</text>'
+        )
     return words
 
 

@@ -1,9 +1,9 @@
 """What can go wrong, in three kinds; the first two are the user's to mend and never show a traceback.
 
-    TangentryError
-    ├── GraphError    the graph file or the call is wrong: file:line:column, what was found, what was possible
-    ├── InputError    an input file is wrong: file, element, value, what to do
-    └── NodeError     a node failed through its own fault; the cause is chained
+TangentryError
+├── GraphError    the graph file or the call is wrong: file:line:column, what was found, what was possible
+├── InputError    an input file is wrong: file, element, value, what to do
+└── NodeError     a node failed through its own fault; the cause is chained
 """
 
 from __future__ import annotations

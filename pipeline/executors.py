@@ -1,8 +1,8 @@
 """Where the steps of assets are carried out. Each executor takes tasks and gives events; only digests travel.
 
-    Here      in this process, one asset after another
-    Workers   in processes of their own; a whole asset stays on one of them, so its arrays stay warm
-    Cluster   on the workers of a Dask cluster (cluster.py)
+Here      in this process, one asset after another
+Workers   in processes of their own; a whole asset stays on one of them, so its arrays stay warm
+Cluster   on the workers of a Dask cluster (cluster.py)
 """
 
 from __future__ import annotations
@@ -146,8 +146,12 @@ class Workers:
         fresh = self._start()
         worker.process, worker.pipe = fresh.process, fresh.pipe
         if worker.running is None:
-            raise TangentryError(f"a worker process ended {how} before it began {worker.task.member.name}; build again, with fewer workers if memory is short")
-        refuse = {worker.running: f'node "{worker.running[1]}": its worker process ended {how} while it ran (killed, or out of memory)'}
+            raise TangentryError(
+                f"a worker process ended {how} before it began {worker.task.member.name}; build again, with fewer workers if memory is short"
+            )
+        refuse = {
+            worker.running: f'node "{worker.running[1]}": its worker process ended {how} while it ran (killed, or out of memory)'
+        }
         worker.task = dataclasses.replace(worker.task, refuse={**worker.task.refuse, **refuse})
         worker.running = None
         worker.pipe.send(worker.task)
@@ -189,7 +193,11 @@ class _Tools:
         """The tools for these orders, kept for the next task."""
         if _LAST and _LAST[0][0] == orders:
             return _LAST[0][1]
-        tools = _Tools(read_graph(orders.graph, orders.sets), open_store(orders.store, orders.url), Ledger(orders.store, read_only=True))
+        tools = _Tools(
+            read_graph(orders.graph, orders.sets),
+            open_store(orders.store, orders.url),
+            Ledger(orders.store, read_only=True),
+        )
         _LAST[:] = [(orders, tools)]
         return tools
 
@@ -197,7 +205,9 @@ class _Tools:
         """Carry out one task on a fresh bench, so that files are looked at anew."""
         steps = asset_steps(self.graph, task.member)
         by_id = {step.id: step for step in steps}
-        bench = Bench(self.graph.folder, self.store, relative_digest(self.graph.folder, self.ledger.digest_of), by_id.__getitem__)
+        bench = Bench(
+            self.graph.folder, self.store, relative_digest(self.graph.folder, self.ledger.digest_of), by_id.__getitem__
+        )
         try:
             yield from bench.carry(steps, task.last, task.refuse)
             yield Finished(task.member.name, self.ledger.learnt())

@@ -19,7 +19,6 @@ from pathlib import Path
 from typing import Literal, TypeVar, dataclass_transform
 
 import numpy as np
-
 from tangentry.pipeline.errors import InputError
 
 Array = np.ndarray
@@ -101,21 +100,25 @@ class InputFile:
 
     def bytes(self) -> Array:
         """The file's content, (size,) uint8, read-only. Raises InputError where it can't be read."""
-        if self.reads.get(self._key) is None:
+        known = self.reads.get(self._key)
+        if known is None:
             try:
                 content = np.fromfile(self.real, dtype=np.uint8)
             except FileNotFoundError:
                 self.reads[self._key] = None
-                raise InputError(self, "", "there is no such file", "correct the path, or set if_missing: skip") from None
+                raise InputError(
+                    self, "", "there is no such file", "correct the path, or set if_missing: skip"
+                ) from None
             except IsADirectoryError:
                 raise InputError(self, "", "this is a folder, not a file", "name a file") from None
             except OSError as error:
-                raise InputError(self, "", f"can't be read ({error.strerror or error})", "check its permissions") from None
+                raise InputError(
+                    self, "", f"can't be read ({error.strerror or error})", "check its permissions"
+                ) from None
             content.setflags(write=False)
             self.reads[self._key] = content
-        content = self.reads[self._key]
-        assert content is not None
-        return content
+            return content
+        return known
 
     def beside(self, name: str) -> InputFile:
         """The file of that relative path, counted from this file's folder; what it reads is remembered here too."""

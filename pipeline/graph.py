@@ -127,7 +127,17 @@ def read_graph(path: str | os.PathLike[str], sets: Mapping[str, Any] | None = No
         raise GraphError(*reading.problems)
     about = root.value.get("about")
     mark = root.value["library"].mark if "library" in root.value else None
-    return Graph(path, str(about.value or "") if about else "", library, mark, options, dict(sets or {}), per_asset, whole, tuple(reading.files))
+    return Graph(
+        path,
+        str(about.value or "") if about else "",
+        library,
+        mark,
+        options,
+        dict(sets or {}),
+        per_asset,
+        whole,
+        tuple(reading.files),
+    )
 
 
 def option_from_text(text: str) -> Any:
@@ -191,14 +201,18 @@ def _check_top(root: Node, reading: _Reading, nested: bool) -> None:
     if version is None:
         reading.wrong(root.mark, f"the version of the format is missing; begin with `tangentry: {FORMAT}`")
     elif version.value is True or version.value != FORMAT:
-        reading.wrong(version.mark, f"version {show(version.plain())} of the format; this program reads version {FORMAT}")
+        reading.wrong(
+            version.mark, f"version {show(version.plain())} of the format; this program reads version {FORMAT}"
+        )
     for key, mark in root.keys.items():
         if key not in KEYS:
             reading.wrong(mark, f'unknown key "{key}"; a graph file has {", ".join(KEYS)}.{nearest(key, KEYS)}')
         elif key == "whole_library" and nested:
             reading.wrong(mark, "a graph that is used as a node can't have `whole_library`; move it to the outer graph")
         elif key in ("inputs", "outputs") and not nested:
-            reading.wrong(mark, f"`{key}` belongs to a graph that is used as a node; build the graph that uses this one")
+            reading.wrong(
+                mark, f"`{key}` belongs to a graph that is used as a node; build the graph that uses this one"
+            )
 
 
 def _mapping(root: Node, key: str, reading: _Reading) -> Node | None:
@@ -221,7 +235,9 @@ def _options(root: Node, sets: Mapping[str, Any], reading: _Reading) -> dict[str
     for name, value in sets.items():
         if name not in options:
             known = ", ".join(options) or "no options"
-            reading.problems.append(f'--set {name}: {root.mark.file} has no such option; it has {known}.{nearest(name, options)}')
+            reading.problems.append(
+                f"--set {name}: {root.mark.file} has no such option; it has {known}.{nearest(name, options)}"
+            )
         else:
             text = isinstance(options[name], str) and not isinstance(value, (str, list, dict))
             options[name] = _text(value) if text else value
@@ -247,11 +263,17 @@ def _section(root: Node, key: str, scope: _Scope, reading: _Reading) -> list[_Dr
         mark = node.keys[name]  # type: ignore[union-attr]
         reading.count += 1
         if reading.count > MOST_NODES:
-            raise GraphError(*reading.problems, f"{mark}: more than {MOST_NODES} nodes; use a library pattern, or several graphs")
+            raise GraphError(
+                *reading.problems, f"{mark}: more than {MOST_NODES} nodes; use a library pattern, or several graphs"
+            )
         if not NAME.fullmatch(name):
-            reading.wrong(mark, f"a node's name is made of letters, digits, - and _, a letter first; found {show(name)}")
+            reading.wrong(
+                mark, f"a node's name is made of letters, digits, - and _, a letter first; found {show(name)}"
+            )
         elif not isinstance(entry.value, dict):
-            reading.wrong(entry.mark, f'node "{name}" is a mapping that begins with `node: KIND`; found {show(entry.plain())}')
+            reading.wrong(
+                entry.mark, f'node "{name}" is a mapping that begins with `node: KIND`; found {show(entry.plain())}'
+            )
         elif "node" not in entry.value:
             reading.wrong(entry.mark, f'node "{name}" does not say its kind: add `node: KIND`')
         else:
@@ -280,12 +302,16 @@ def _entry(name: str, entry: Node, mark: Mark, scope: _Scope, reading: _Reading)
                 inputs[key] = _reference(key, value, name, scope, reading)
         elif key in kind.settings:
             fields = (*ASSET_FIELDS,)
-            settings[key] = fill(value.plain(), scope.options, fields, lambda what, m=value.mark: reading.wrong(m, what))
+            settings[key] = fill(
+                value.plain(), scope.options, fields, lambda what, m=value.mark: reading.wrong(m, what)
+            )
             _check_setting(kind, key, settings[key], name, value.mark, reading)
         else:
             possible = [*kind.inputs, *kind.settings]
-            takes = f'{kind.name} takes {", ".join(possible)}' if possible else f"{kind.name} takes nothing"
-            reading.wrong(entry.keys[key], f'node "{name}" has no input or setting "{key}"; {takes}.{nearest(key, possible)}')
+            takes = f"{kind.name} takes {', '.join(possible)}" if possible else f"{kind.name} takes nothing"
+            reading.wrong(
+                entry.keys[key], f'node "{name}" has no input or setting "{key}"; {takes}.{nearest(key, possible)}'
+            )
     for key, setting in kind.settings.items():
         if setting.default is REQUIRED and key not in settings:
             reading.wrong(mark, f'node "{name}" lacks the setting "{key}", which {kind.name} needs')
@@ -328,15 +354,21 @@ def _graph_as_node(name: str, named: Node, entry: Node, mark: Mark, scope: _Scop
             reference = _reference(key, value, name, scope, reading) if value.value is not None else None
             inputs[key] = reference or inputs[key]
         elif key in options:
-            options[key] = fill(value.plain(), scope.options, ASSET_FIELDS, lambda what, m=value.mark: reading.wrong(m, what))
+            options[key] = fill(
+                value.plain(), scope.options, ASSET_FIELDS, lambda what, m=value.mark: reading.wrong(m, what)
+            )
         elif key != "node":
             possible = [*inputs, *options]
-            reading.wrong(entry.keys[key], f'node "{name}" has no input or option "{key}"; {root.mark.file} takes {", ".join(possible)}.{nearest(key, possible)}')
+            reading.wrong(
+                entry.keys[key],
+                f'node "{name}" has no input or option "{key}"; {root.mark.file} takes {", ".join(possible)}.{nearest(key, possible)}',
+            )
     inner = _Scope(path.parent, options, (*scope.chain, path.resolve()), f"{scope.prefix}{name}/", inputs)
     drafts = _section(root, "per_asset", inner, reading)
     _declare_outputs(root, scope.prefix + name, inner, reading)
     reading.problems[before:] = [
-        problem if problem.startswith(f"{named.mark.file}:") else f"{problem} (used at {named.mark})" for problem in reading.problems[before:]
+        problem if problem.startswith(f"{named.mark.file}:") else f"{problem} (used at {named.mark})"
+        for problem in reading.problems[before:]
     ]
     return drafts
 
@@ -345,7 +377,13 @@ def _declared_inputs(root: Node, reading: _Reading) -> list[str]:
     node: Node | None = root.value.get("inputs")
     if node is None or node.value is None:
         return []
-    names = list(node.value) if isinstance(node.value, dict) else [item.value for item in node.value] if isinstance(node.value, list) else [node.value]
+    names = (
+        list(node.value)
+        if isinstance(node.value, dict)
+        else [item.value for item in node.value]
+        if isinstance(node.value, list)
+        else [node.value]
+    )
     for one in names:
         if not isinstance(one, str):
             reading.wrong(node.mark, f"`inputs` is a list of names; found {show(node.plain())}")
@@ -413,7 +451,9 @@ def _text(value: Any) -> str:
 # Linking
 
 
-def _link(drafts: list[_Draft], outer: dict[str, Entry], library: bool, options: dict[str, Any], reading: _Reading) -> dict[str, Entry]:
+def _link(
+    drafts: list[_Draft], outer: dict[str, Entry], library: bool, options: dict[str, Any], reading: _Reading
+) -> dict[str, Entry]:
     """Drafts as entries, inputs found and types compared, in an order in which they can run."""
     import networkx as nx
 
@@ -431,7 +471,9 @@ def _link(drafts: list[_Draft], outer: dict[str, Entry], library: bool, options:
                     order.add_edge(source.node, draft.name)
         missing = [key for key, one in draft.kind.inputs.items() if not one.optional and key not in draft.inputs]
         for key in missing:
-            reading.wrong(draft.mark, f'node "{draft.name}" lacks the input "{key}", which {draft.kind.name} needs: {key}: NODE')
+            reading.wrong(
+                draft.mark, f'node "{draft.name}" lacks the input "{key}", which {draft.kind.name} needs: {key}: NODE'
+            )
         if not library:
             _no_asset_fields(draft, reading)
         entries[draft.name] = Entry(draft.name, draft.kind, draft.mark, inputs, draft.settings)
@@ -439,22 +481,42 @@ def _link(drafts: list[_Draft], outer: dict[str, Entry], library: bool, options:
         return {name: entries[name] for name in nx.topological_sort(order)}
     except nx.NetworkXUnfeasible:
         cycle = [edge[0] for edge in nx.find_cycle(order)]
-        reading.wrong(by_name[cycle[0]].mark, f'node "{cycle[0]}" waits for itself: {" -> ".join([*cycle, cycle[0]])}; remove one of these inputs')
+        reading.wrong(
+            by_name[cycle[0]].mark,
+            f'node "{cycle[0]}" waits for itself: {" -> ".join([*cycle, cycle[0]])}; remove one of these inputs',
+        )
         return entries
 
 
 def _no_asset_fields(draft: _Draft, reading: _Reading) -> None:
     for key, value in draft.settings.items():
-        fill(value, {}, (), lambda what, k=key: reading.wrong(draft.mark, f'setting "{k}" of node "{draft.name}": {what.split(";")[0]}: it runs for no one asset'))
+        fill(
+            value,
+            {},
+            (),
+            lambda what, k=key: reading.wrong(
+                draft.mark, f'setting "{k}" of node "{draft.name}": {what.split(";")[0]}: it runs for no one asset'
+            ),
+        )
 
 
-def _find(draft: _Draft, key: str, reference: _Reference, by_name: dict[str, _Draft], outer: dict[str, Entry], reading: _Reading) -> Source | None:
+def _find(
+    draft: _Draft,
+    key: str,
+    reference: _Reference,
+    by_name: dict[str, _Draft],
+    outer: dict[str, Entry],
+    reading: _Reading,
+) -> Source | None:
     while reference.target in reading.renamed:
         reference = dataclasses.replace(reading.renamed[reference.target], text=reference.text, mark=reference.mark)
     wanted = draft.kind.inputs[key]
     if reference.target is None:
         if not wanted.optional:
-            reading.wrong(reference.mark, f'input "{reference.text}" of this graph is not filled, and node "{draft.name}" needs it')
+            reading.wrong(
+                reference.mark,
+                f'input "{reference.text}" of this graph is not filled, and node "{draft.name}" needs it',
+            )
         return None
     node, _, output = reference.target.partition(".")
     if node in by_name:
@@ -463,17 +525,31 @@ def _find(draft: _Draft, key: str, reference: _Reference, by_name: dict[str, _Dr
         kind, every = outer[node].kind, True
     else:
         possible = [*by_name, *outer]
-        reading.wrong(reference.mark, f'there is no node "{reference.text}" for input "{key}" of "{draft.name}".{nearest(reference.text, possible)}')
+        reading.wrong(
+            reference.mark,
+            f'there is no node "{reference.text}" for input "{key}" of "{draft.name}".{nearest(reference.text, possible)}',
+        )
         return None
     if output not in kind.outputs and not (output == "" and len(kind.outputs) == 1):
         possible = [f"{node}.{name}" for name in kind.outputs if name]
-        gives = f'it gives {", ".join(possible)}' if possible else f'it gives one value, named "{node}"'
-        reading.wrong(reference.mark, f'node "{node}" has no output "{output}"; {gives}' if output else f'say which output of "{node}": {gives}')
+        gives = f"it gives {', '.join(possible)}" if possible else f'it gives one value, named "{node}"'
+        reading.wrong(
+            reference.mark,
+            f'node "{node}" has no output "{output}"; {gives}' if output else f'say which output of "{node}": {gives}',
+        )
         return None
     given = kind.outputs.get(output) or next(iter(kind.outputs.values()))
-    if not issubclass(given, wanted.type):
-        reading.wrong(reference.mark, f'input "{key}" of node "{draft.name}" takes {wanted.type.__name__}; "{reference.text}" gives {given.__name__}')
+    if not issubclass(given, wanted.flow):
+        reading.wrong(
+            reference.mark,
+            f'input "{key}" of node "{draft.name}" takes {wanted.flow.__name__}; "{reference.text}" gives {given.__name__}',
+        )
     elif every != (wanted.many is not None):
-        one_many = "takes the values of all assets, so it names a node of `per_asset`" if wanted.many else "takes one value"
-        reading.wrong(reference.mark, f'input "{key}" of node "{draft.name}" {one_many}; "{reference.text}" is {"one per asset" if every else "one value"}')
+        one_many = (
+            "takes the values of all assets, so it names a node of `per_asset`" if wanted.many else "takes one value"
+        )
+        reading.wrong(
+            reference.mark,
+            f'input "{key}" of node "{draft.name}" {one_many}; "{reference.text}" is {"one per asset" if every else "one value"}',
+        )
     return Source(node, output if output in kind.outputs else next(iter(kind.outputs)), every)

@@ -40,7 +40,7 @@ class Input:
     """A flow value that a kind takes."""
 
     name: str
-    type: type
+    flow: type
     optional: bool  # None where it is left out
     many: type | None = None  # dict, tuple or list: takes the values of all assets
 
@@ -78,7 +78,11 @@ class Setting:
             return self._adapter.validate_json(json.dumps(value), strict=True)
         except ValidationError as error:
             first = error.errors()[0]
-            place = "".join(f"[{part!r}]" for part in first["loc"] if isinstance(part, int) or not str(part).startswith(("function-", "literal[")))
+            place = "".join(
+                f"[{part!r}]"
+                for part in first["loc"]
+                if isinstance(part, int) or not str(part).startswith(("function-", "literal["))
+            )
             reason = first["msg"] if first["type"] not in PLAIN_FAULTS else ""
             expected = f"expects {in_words(self.annotation)}" + (f" ({reason})" if reason else "")
             guess = _literal_guess(value, self.annotation)
@@ -89,7 +93,18 @@ class Setting:
         return self._adapter.dump_python(value, mode="json")
 
 
-PLAIN_FAULTS = {"float_type", "int_type", "bool_type", "string_type", "literal_error", "tuple_type", "list_type", "dict_type", "int_from_float", "missing"}
+PLAIN_FAULTS = {
+    "float_type",
+    "int_type",
+    "bool_type",
+    "string_type",
+    "literal_error",
+    "tuple_type",
+    "list_type",
+    "dict_type",
+    "int_from_float",
+    "missing",
+}
 
 
 @dataclasses.dataclass(frozen=True)
@@ -124,13 +139,17 @@ class _Home:
         """The files that hold a function of their own name."""
         found = {}
         for path in sorted(self.folder.glob("*.py")):
-            if not path.stem.startswith("_") and re.search(rf"^def {re.escape(path.stem)}\(", path.read_text("utf-8", errors="replace"), re.M):
+            if not path.stem.startswith("_") and re.search(
+                rf"^def {re.escape(path.stem)}\(", path.read_text("utf-8", errors="replace"), re.M
+            ):
                 found[path.stem] = path
         return found
 
     def load(self, path: Path) -> types.ModuleType:
         """Import one file, anew where anything in its home has changed since it was last imported here."""
-        changed = source_digest(self.folder, None) != _IMPORTED.setdefault(self.folder, source_digest(self.folder, None))
+        changed = source_digest(self.folder, None) != _IMPORTED.setdefault(
+            self.folder, source_digest(self.folder, None)
+        )
         if changed:
             for name, module in list(sys.modules.items()):
                 if Path(getattr(module, "__file__", None) or "/").is_relative_to(self.folder):
@@ -148,7 +167,10 @@ class Kinds:
     """Every kind at hand, by name."""
 
     def __init__(self, project: Path | None = None) -> None:
-        homes = [_Home(entry.value, Path(next(iter(_package_paths(entry.value)))).resolve()) for entry in sorted(entry_points(group=GROUP))]
+        homes = [
+            _Home(entry.value, Path(next(iter(_package_paths(entry.value)))).resolve())
+            for entry in sorted(entry_points(group=GROUP))
+        ]
         if project is not None:
             if not project.is_dir():
                 raise GraphError(f"{project}: there is no such folder of node kinds")
@@ -158,7 +180,9 @@ class Kinds:
         for home in homes:
             for name, path in home.files().items():
                 if name in self._where:
-                    raise GraphError(f'{path}: kind "{name}" is also defined in {self._where[name][1]}; rename one of them')
+                    raise GraphError(
+                        f'{path}: kind "{name}" is also defined in {self._where[name][1]}; rename one of them'
+                    )
                 self._where[name] = (home, path)
 
     @property
@@ -170,7 +194,9 @@ class Kinds:
         """The kind of that name. Raises GraphError where there is none, or where its file can't be used."""
         if name not in self._loaded:
             if name not in self._where:
-                raise GraphError(f'there is no node kind "{name}"; there are {", ".join(self.names)}.{nearest(name, self.names)}')
+                raise GraphError(
+                    f'there is no node kind "{name}"; there are {", ".join(self.names)}.{nearest(name, self.names)}'
+                )
             home, path = self._where[name]
             self._loaded[name] = _read_kind(name, home, path)
         return self._loaded[name]
@@ -226,7 +252,9 @@ def kind_of(function: Callable[..., Any], source: str = "", home: Path = Path(),
             settings[name] = Setting(name, annotation, parameter.default, _about(about, name), file)
         else:
             inputs[name] = _input(name, annotation, parameter)
-    return Kind(function.__name__, about, function, inputs, settings, *_outputs(function, hints, home), source, home, files)
+    return Kind(
+        function.__name__, about, function, inputs, settings, *_outputs(function, hints, home), source, home, files
+    )
 
 
 def _about(docstring: str, name: str) -> str:
@@ -279,8 +307,10 @@ def _outputs(function: Callable[..., Any], hints: dict[str, Any], home: Path) ->
     for name, annotation in named.items():
         kind = next((member for member in _members(annotation) if member is not type(None)), type(None))
         if not dataclasses.is_dataclass(kind):
-            raise GraphError(f"{home}: {function.__name__}: its output must be a flow value, not {getattr(kind, '__name__', kind)}")
-        outputs[name] = kind  # type: ignore[assignment]
+            raise GraphError(
+                f"{home}: {function.__name__}: its output must be a flow value, not {getattr(kind, '__name__', kind)}"
+            )
+        outputs[name] = kind
     return outputs, frozenset(name for name, annotation in named.items() if type(None) in _members(annotation))
 
 
@@ -318,5 +348,10 @@ def show(value: Any) -> str:
 
 
 def _literal_guess(value: Any, annotation: Any) -> str:
-    choices = [str(choice) for member in _members(annotation) if typing.get_origin(member) is typing.Literal for choice in typing.get_args(member)]
+    choices = [
+        str(choice)
+        for member in _members(annotation)
+        if typing.get_origin(member) is typing.Literal
+        for choice in typing.get_args(member)
+    ]
     return nearest(str(value), choices)

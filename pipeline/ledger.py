@@ -15,7 +15,6 @@ from pathlib import Path
 from typing import Any, NamedTuple
 
 import numpy as np
-
 from tangentry.pipeline.store import StoreError
 from tangentry.pipeline.values import digest_array
 
@@ -67,12 +66,16 @@ class Ledger:
         path = folder / "ledger.sqlite"
         try:
             if read_only:
-                self._base = sqlite3.connect(f"{path.as_uri()}?mode=ro", uri=True, timeout=30) if path.exists() else None
+                self._base = (
+                    sqlite3.connect(f"{path.as_uri()}?mode=ro", uri=True, timeout=30) if path.exists() else None
+                )
             else:
                 folder.mkdir(parents=True, exist_ok=True)
                 self._base = _open(path)
         except (OSError, sqlite3.OperationalError) as error:
-            raise StoreError(f"{folder}: the store can't be written ({error}); correct its permissions, or name another with --store") from error
+            raise StoreError(
+                f"{folder}: the store can't be written ({error}); correct its permissions, or name another with --store"
+            ) from error
         if self._base is not None:
             with contextlib.suppress(sqlite3.DatabaseError):
                 rows = self._base.execute("select path, size, mtime, inode, noted, digest from files")
@@ -120,7 +123,9 @@ class Ledger:
 
     def outputs(self) -> dict[str, Output]:
         """Every file that a graph wrote, by path."""
-        return {row[0]: Output(*row[1:]) for row in self._rows("select path, graph, asset, node, digest from outputs", ())}
+        return {
+            row[0]: Output(*row[1:]) for row in self._rows("select path, graph, asset, node, digest from outputs", ())
+        }
 
     def note_output(self, path: str, output: Output) -> None:
         """Remember a file that a graph wrote."""
@@ -163,7 +168,9 @@ class Ledger:
             self._base.executemany(statement, rows)
             self._base.commit()
         except sqlite3.OperationalError as error:
-            raise StoreError(f"the store's ledger can't be written ({error}); free some space, or name another store with --store") from error
+            raise StoreError(
+                f"the store's ledger can't be written ({error}); free some space, or name another store with --store"
+            ) from error
 
 
 def _open(path: Path) -> sqlite3.Connection:

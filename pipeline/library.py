@@ -46,11 +46,15 @@ def find_members(graph: Graph, written: Collection[str] = (), only: str | None =
                     name = relative_name(path, graph.folder)
                     found.setdefault(name, Member(name, Path(os.path.relpath(path, fixed or ".")).as_posix()))
     if not found:
-        raise GraphError(f"{graph.library_mark}: no file matches {', '.join(graph.library)} (looked in {graph.folder.resolve()})")
+        raise GraphError(
+            f"{graph.library_mark}: no file matches {', '.join(graph.library)} (looked in {graph.folder.resolve()})"
+        )
     members = [found[name] for name in sorted(found)]
     if only is None:
         return members
-    chosen = [m for m in members if fnmatch.fnmatchcase(m.name, only) or fnmatch.fnmatchcase(PurePosixPath(m.name).stem, only)]
+    chosen = [
+        m for m in members if fnmatch.fnmatchcase(m.name, only) or fnmatch.fnmatchcase(PurePosixPath(m.name).stem, only)
+    ]
     if not chosen:
         raise GraphError(f"--asset {only}: no asset of the library has such a name; the first is {members[0].name}")
     return chosen
@@ -87,7 +91,11 @@ def unfold(pattern: str) -> list[str]:
         nested = []
         for one in patterns:
             group = ALTERNATIVES.search(one)
-            nested += [one[: group.start()] + choice + one[group.end() :] for choice in group[1].split(",")] if group else [one]
+            nested += (
+                [one[: group.start()] + choice + one[group.end() :] for choice in group[1].split(",")]
+                if group
+                else [one]
+            )
         patterns = nested
     return patterns
 

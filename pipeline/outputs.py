@@ -49,7 +49,9 @@ class Outputs:
         for name, digest in result.files:
             path = os.path.normpath(os.path.join(folder, name))
             if os.path.relpath(path, folder or ".").startswith(".."):
-                raise OutputError(f'{name}: node "{step.node}" may only write below {folder or "the folder of the graph"}')
+                raise OutputError(
+                    f'{name}: node "{step.node}" may only write below {folder or "the folder of the graph"}'
+                )
             self._place(path, step.id, digest, content_of)
             paths.append(Path(path).as_posix())
         return paths
@@ -62,14 +64,18 @@ class Outputs:
         target = self.folder / path
         name = os.path.relpath(target.resolve(), self.home)
         if self.claimed.setdefault(name, id) != id:
-            raise OutputError(f"{path}: is also made by {' '.join(self.claimed[name])}; put {{stem}} or {{below}} into its name")
+            raise OutputError(
+                f"{path}: is also made by {' '.join(self.claimed[name])}; put {{stem}} or {{below}} into its name"
+            )
         known = self._known.get(name)
         there = self.ledger.digest_of(target)
         if there != digest:
             if os.path.lexists(target) and not (known and known.graph == self.graph) and not self.overwrite:
-                raise OutputError(f"{path}: is there already and was not written by this graph; move it away, or build with --overwrite")
+                raise OutputError(
+                    f"{path}: is there already and was not written by this graph; move it away, or build with --overwrite"
+                )
             try:
-                write_whole(target, lambda file: file.write(memoryview(content_of(digest))))
+                write_whole(target, lambda file: file.write(content_of(digest).data))
             except OSError as error:
                 raise OutputError(f"{path}: can't be written: {error.strerror or error}") from error
             self.written.append(Path(path).as_posix())
@@ -87,7 +93,10 @@ class Outputs:
         return sorted(
             self.home / name
             for name, one in self._known.items()
-            if one.graph == self.graph and name not in self.claimed and (chosen is None or one.asset in chosen) and (self.home / name).is_file()
+            if one.graph == self.graph
+            and name not in self.claimed
+            and (chosen is None or one.asset in chosen)
+            and (self.home / name).is_file()
         )
 
     def remove(self, paths: Iterable[Path]) -> None:

@@ -41,7 +41,9 @@ class Step:
     asset: str
     node: str
     kind: Kind
-    inputs: dict[str, tuple[StepId, str] | list[tuple[StepId, str]]]  # step and output; a list where it takes all assets'
+    inputs: dict[
+        str, tuple[StepId, str] | list[tuple[StepId, str]]
+    ]  # step and output; a list where it takes all assets'
     settings: dict[str, Any]  # as the function takes them, files apart
     reads: dict[str, str]  # setting -> input file, relative to the graph's folder
     makes: dict[str, str]  # setting -> file to be made, relative to the graph's folder
@@ -108,7 +110,9 @@ def lay_out(graph: Graph, members: Sequence[Member]) -> nx.DiGraph[StepId]:
         for path in step.makes.values():
             where = f"{step.asset or graph.path.name}, node {step.node}"
             if path in made:
-                problems.append(f"{graph.path}: {path} would be made twice: by {made[path]} and by {where}; put {{stem}} or {{below}} into its name")
+                problems.append(
+                    f"{graph.path}: {path} would be made twice: by {made[path]} and by {where}; put {{stem}} or {{below}} into its name"
+                )
             made[path] = where
     if problems:
         raise GraphError(*problems[:20])
@@ -176,7 +180,9 @@ def _inside(graph: Graph, path: str, entry: Entry) -> str:
         if real == root or not real.startswith(root.rstrip(os.sep) + os.sep):
             continue
         return path
-    raise GraphError(f'{entry.mark}: node "{entry.name}" would write {path}, outside the folder of the graph file; write below it, or open the place from the command line: --set OPTION=FOLDER')
+    raise GraphError(
+        f'{entry.mark}: node "{entry.name}" would write {path}, outside the folder of the graph file; write below it, or open the place from the command line: --set OPTION=FOLDER'
+    )
 
 
 def sources(step: Step) -> Iterator[StepId]:
@@ -199,7 +205,9 @@ def decide(
     inputs: dict[str, Any] = {}
     for name, source in step.inputs.items():
         if isinstance(source, list):
-            inputs[name] = [[one[0], known[one][output]] for one, output in source if known.get(one) and known[one][output]]  # type: ignore[index]
+            inputs[name] = [
+                [one[0], known[one][output]] for one, output in source if known.get(one) and known[one][output]
+            ]  # type: ignore[index]
             continue
         outcome = known[source[0]]
         if outcome is None:
@@ -210,7 +218,11 @@ def decide(
     parts: Parts = {
         "kind": step.kind.name,
         "source": step.kind.source,
-        "settings": {name: step.kind.settings[name].plain(value) for name, value in step.settings.items() if not step.kind.settings[name].file},
+        "settings": {
+            name: step.kind.settings[name].plain(value)
+            for name, value in step.settings.items()
+            if not step.kind.settings[name].file
+        },
         "inputs": {name: value for name, value in inputs.items() if value is not None},
         "files": {name: [path, digest_of(path)] for name, path in step.reads.items()},
         "makes": {name: os.path.basename(path) for name, path in step.makes.items()},

@@ -111,7 +111,9 @@ class Record:
     @property
     def sound(self) -> bool:
         """Did everything work, with nothing faulty?"""
-        return not (self.stopped or self.library.errors or any(asset.state in ("faulty", "failed") for asset in self.assets))
+        return not (
+            self.stopped or self.library.errors or any(asset.state in ("faulty", "failed") for asset in self.assets)
+        )
 
     @property
     def lasting(self) -> bool:

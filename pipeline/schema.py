@@ -19,7 +19,11 @@ NAME = r"^[A-Za-z_][\w-]*$"
 def graph_schema(kinds: Kinds) -> dict[str, Any]:
     """The schema, as plain data."""
     found = [kinds.get(name) for name in kinds.names]
-    section = {"type": ["object", "null"], "propertyNames": {"pattern": NAME}, "additionalProperties": {"$ref": "#/$defs/node"}}
+    section = {
+        "type": ["object", "null"],
+        "propertyNames": {"pattern": NAME},
+        "additionalProperties": {"$ref": "#/$defs/node"},
+    }
     names = {"anyOf": [{"type": "array", "items": {"type": "string"}}, {"type": "object"}]}
     return {
         "$schema": DIALECT,
@@ -30,9 +34,20 @@ def graph_schema(kinds: Kinds) -> dict[str, Any]:
         "properties": {
             "tangentry": {"const": FORMAT, "description": "version of this format"},
             "about": {"type": ["string", "null"], "description": "what the graph is for"},
-            "library": {"description": "every file that matches is one asset", "anyOf": [{"type": "string"}, {"type": "array", "items": {"type": "string"}, "minItems": 1}, {"type": "null"}]},
+            "library": {
+                "description": "every file that matches is one asset",
+                "anyOf": [
+                    {"type": "string"},
+                    {"type": "array", "items": {"type": "string"}, "minItems": 1},
+                    {"type": "null"},
+                ],
+            },
             "kinds": {"type": ["string", "null"], "description": "folder of the project's own node kinds"},
-            "options": {"type": ["object", "null"], "description": "values that settings may name in braces, and --set changes", "propertyNames": {"pattern": r"^[A-Za-z_]\w*$"}},
+            "options": {
+                "type": ["object", "null"],
+                "description": "values that settings may name in braces, and --set changes",
+                "propertyNames": {"pattern": r"^[A-Za-z_]\w*$"},
+            },
             "inputs": {"description": "of a graph used as a node: the values it takes", **names},
             "outputs": {"description": "of a graph used as a node: the values it gives", **names},
             "per_asset": {"description": "nodes that run once for each file of the library", **section},
@@ -47,17 +62,29 @@ def _node(kinds: list[Kind]) -> dict[str, Any]:
     return {
         "type": "object",
         "required": ["node"],
-        "properties": {"node": {"anyOf": [*names, {"type": "string", "pattern": r"\.ya?ml$", "description": "another graph file"}]}},
-        "allOf": [{"if": {"properties": {"node": {"const": kind.name}}, "required": ["node"]}, "then": _kind(kind)} for kind in kinds],
+        "properties": {
+            "node": {"anyOf": [*names, {"type": "string", "pattern": r"\.ya?ml$", "description": "another graph file"}]}
+        },
+        "allOf": [
+            {"if": {"properties": {"node": {"const": kind.name}}, "required": ["node"]}, "then": _kind(kind)}
+            for kind in kinds
+        ],
     }
 
 
 def _kind(kind: Kind) -> dict[str, Any]:
-    inputs = {one.name: {**REFERENCE, "description": f"{'all assets: ' if one.many else ''}{one.type.__name__}"} for one in kind.inputs.values()}
+    inputs = {
+        one.name: {**REFERENCE, "description": f"{'all assets: ' if one.many else ''}{one.flow.__name__}"}
+        for one in kind.inputs.values()
+    }
     settings = {setting.name: _setting(setting) for setting in kind.settings.values()}
     needed = [one.name for one in kind.inputs.values() if not one.optional]
     needed += [setting.name for setting in kind.settings.values() if setting.default is REQUIRED]
-    return {"additionalProperties": False, "required": ["node", *needed], "properties": {"node": True, **inputs, **settings}}
+    return {
+        "additionalProperties": False,
+        "required": ["node", *needed],
+        "properties": {"node": True, **inputs, **settings},
+    }
 
 
 def _setting(setting: Setting) -> dict[str, Any]:

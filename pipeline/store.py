@@ -23,7 +23,6 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
-
 from tangentry.pipeline.errors import TangentryError
 from tangentry.pipeline.flow import Array
 from tangentry.pipeline.values import (
@@ -97,7 +96,9 @@ class Store:
         digest = self.digest(array)
         written = self._write(
             self._place("arrays", digest),
-            lambda file: np.lib.format.write_array(file, np.ascontiguousarray(array).reshape(array.shape), allow_pickle=False),
+            lambda file: np.lib.format.write_array(
+                file, np.ascontiguousarray(array).reshape(array.shape), allow_pickle=False
+            ),
         )
         self.written += written
         return digest
@@ -153,8 +154,14 @@ class Store:
     def verify(self) -> list[Path]:
         """Set aside every object whose content does not match its name; gives their paths."""
         bad = [path for path in self._objects("arrays") if not _sound(lambda p=path: digest_array(_map(p)) == p.stem)]  # type: ignore[misc]
-        bad += [path for path in self._objects("values") if not _sound(lambda p=path: digest_text(p.read_text("utf-8")) == p.stem)]  # type: ignore[misc]
-        bad += [path for path in self._objects("results") if not _sound(lambda p=path: bool(json.loads(p.read_bytes())))]  # type: ignore[misc]
+        bad += [
+            path
+            for path in self._objects("values")
+            if not _sound(lambda p=path: digest_text(p.read_text("utf-8")) == p.stem)
+        ]  # type: ignore[misc]
+        bad += [
+            path for path in self._objects("results") if not _sound(lambda p=path: bool(json.loads(p.read_bytes())))
+        ]  # type: ignore[misc]
         for path in bad:
             self._set_aside(path)
         return bad

@@ -79,7 +79,11 @@ def finding_text(finding: dict[str, Any]) -> str:
 def closing_lines(record: Record) -> list[str]:
     """What is said at the end of a build; the last line counts."""
     lines = asset_lines(record.library)[1:] if record.library.errors else []
-    lines += [f"made      {path}" for path in record.library.outputs if any(step["state"] == "ran" for step in record.library.steps)]
+    lines += [
+        f"made      {path}"
+        for path in record.library.outputs
+        if any(step["state"] == "ran" for step in record.library.steps)
+    ]
     lines += [f"put back  {path}" for path in record.restored]
     lines += [f"{'removed   ' if record.tidied else 'left over '}{path}" for path in record.left_over]
     if record.left_over and not record.tidied:
@@ -87,14 +91,18 @@ def closing_lines(record: Record) -> list[str]:
     if record.stopped:
         lines.append(record.stopped)
     states = ", ".join(f"{count} {state}" for state, count in record.states.items())
-    lines.append(f"{_many(len(record.assets), 'asset')}: {states} ({_many(record.count('ran'), 'step')} ran, {record.count('reused')} reused)")
+    lines.append(
+        f"{_many(len(record.assets), 'asset')}: {states} ({_many(record.count('ran'), 'step')} ran, {record.count('reused')} reused)"
+    )
     return lines
 
 
 def told_again(record: Record) -> list[str]:
     """What building again would say, with nothing changed."""
     again = record.unchanged()
-    return [line for asset in again.assets if asset.state != "unchanged" for line in asset_lines(asset)] + closing_lines(again)
+    return [
+        line for asset in again.assets if asset.state != "unchanged" for line in asset_lines(asset)
+    ] + closing_lines(again)
 
 
 def _many(count: int, word: str) -> str:
@@ -122,7 +130,10 @@ def plan_lines(planned: list[Planned]) -> list[str]:
     counts = {state: sum(one.decision.state == state for one in planned) for state in WORDS}
     if idle:
         lines.append(f"{_many(idle, 'asset')} with nothing to do")
-    lines.append(f"{_many(len(planned), 'step')}: " + ", ".join(f"{counts[state]} {word}" for state, word in WORDS.items() if counts[state]))
+    lines.append(
+        f"{_many(len(planned), 'step')}: "
+        + ", ".join(f"{counts[state]} {word}" for state, word in WORDS.items() if counts[state])
+    )
     return lines
 
 
@@ -134,7 +145,10 @@ def plan_json(planned: list[Planned]) -> str:
             "node": one.step.node,
             "kind": one.step.kind.name,
             "state": one.decision.state,
-            "reasons": [{"what": r.what, "name": r.name, "before": r.before, "after": r.after, "text": str(r)} for r in one.decision.reasons],
+            "reasons": [
+                {"what": r.what, "name": r.name, "before": r.before, "after": r.after, "text": str(r)}
+                for r in one.decision.reasons
+            ],
         }
         for one in planned
     ]
@@ -162,7 +176,10 @@ def kinds_lines(kinds: Kinds) -> list[str]:
 
 
 def _takes(kind: Kind) -> str:
-    words = [f"{'all ' if one.many else ''}{one.type.__name__}" + ("?" if one.optional else "") for one in kind.inputs.values()]
+    words = [
+        f"{'all ' if one.many else ''}{one.flow.__name__}" + ("?" if one.optional else "")
+        for one in kind.inputs.values()
+    ]
     return ", ".join([*words, *("file" for setting in kind.settings.values() if setting.file == "read")]) or "nothing"
 
 
@@ -176,13 +193,17 @@ def kind_lines(kind: Kind) -> list[str]:
     if kind.inputs:
         lines.append("inputs")
         lines += [
-            f"  {one.name:14} {'the values of all assets, each ' if one.many else ''}{one.type.__name__}{', may be left out' if one.optional else ''}"
+            f"  {one.name:14} {'the values of all assets, each ' if one.many else ''}{one.flow.__name__}{', may be left out' if one.optional else ''}"
             for one in kind.inputs.values()
         ]
     if kind.settings:
         lines.append("settings")
         for setting in kind.settings.values():
-            default = "must be given" if setting.default is REQUIRED else f"default {show(setting.default if setting.file else setting.plain(setting.default))}"
+            default = (
+                "must be given"
+                if setting.default is REQUIRED
+                else f"default {show(setting.default if setting.file else setting.plain(setting.default))}"
+            )
             lines.append(f"  {setting.name:14} {in_words(setting.annotation)}; {default}")
             if setting.about:
                 lines.append(f"  {'':14} {setting.about}")
@@ -201,7 +222,10 @@ def facts_lines(found: list[tuple[str, Any]]) -> list[str]:
             continue
         width = max((len(name) for name in facts.facts), default=0)
         lines.append(file)
-        lines += [f"    {name:{width}}  {value if isinstance(value, str) else format(value, '.6g')}" for name, value in facts.facts.items()]
+        lines += [
+            f"    {name:{width}}  {value if isinstance(value, str) else format(value, '.6g')}"
+            for name, value in facts.facts.items()
+        ]
         lines += [f"    {item.severity}: {item.id} ({item.count}): {item.what}" for item in facts.items]
         lines.append("")
     return lines[:-1]

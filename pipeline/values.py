@@ -21,7 +21,6 @@ from typing import Any
 
 import numpy as np
 from blake3 import blake3
-
 from tangentry.pipeline.flow import Array
 
 Plain = None | bool | int | float | str | list[Any] | dict[str, Any]
@@ -69,7 +68,7 @@ def digest_array(array: Array) -> str:
         raise TypeError("an array of Python objects can't flow along an edge")
     head = f"{array.dtype.str}{array.shape}".encode()
     body = np.ascontiguousarray(array).reshape(-1).view(np.uint8)
-    return blake3(head).update(memoryview(body) if body.size else b"").hexdigest()
+    return blake3(head).update(body.data if body.size else b"").hexdigest()
 
 
 def to_manifest(value: object, keep: Callable[[Array], str]) -> str:

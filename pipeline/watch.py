@@ -27,14 +27,19 @@ def changes(rests_on: Callable[[], Iterable[Path | str]], ignored: Callable[[], 
         looked_into = {path for path in paths if os.path.isdir(path)}
         mute = [os.path.realpath(path) for path in ignored()]
 
-        def wanted(_: object, path: str, paths: set[str] = paths, looked_into: set[str] = looked_into, mute: list[str] = mute) -> bool:
-            if os.path.basename(path).startswith(".") or any(path == one or path.startswith(one + os.sep) for one in mute):
+        def wanted(
+            _: object, path: str, paths: set[str] = paths, looked_into: set[str] = looked_into, mute: list[str] = mute
+        ) -> bool:
+            if os.path.basename(path).startswith(".") or any(
+                path == one or path.startswith(one + os.sep) for one in mute
+            ):
                 return False
             return path in paths or os.path.dirname(path) in looked_into
 
         folders = looked_into | {os.path.dirname(path) for path in paths}
         existing = sorted(folder for folder in folders if os.path.isdir(folder))
-        for batch in watch(*existing, watch_filter=wanted, step=QUIET_MS, debounce=LONGEST_MS, recursive=False, raise_interrupt=True):
+        for batch in watch(
+            *existing, watch_filter=wanted, step=QUIET_MS, debounce=LONGEST_MS, recursive=False, raise_interrupt=True
+        ):
             yield sorted({path for _, path in batch})
             break  # what to watch may have changed with the build
-

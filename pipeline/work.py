@@ -60,7 +60,9 @@ class Bench:
         self.known: dict[StepId, Outcome] = {}
         self._warm: dict[str, Any] = {}
 
-    def carry(self, steps: Iterable[Step], last: dict[StepId, Parts], refuse: dict[StepId, str] | None = None) -> Iterator[Event]:
+    def carry(
+        self, steps: Iterable[Step], last: dict[StepId, Parts], refuse: dict[StepId, str] | None = None
+    ) -> Iterator[Event]:
         """Settle steps, which stand in an order in which they can run. Those in `refuse` fail with the message given."""
         for step in steps:
             if refuse and step.id in refuse:
@@ -83,9 +85,17 @@ class Bench:
         if decision.state == "reuse" and decision.result is not None:
             self.store.touch(decision.key)
             parts = {**decision.parts, "reads": decision.result.reads}
-            return Done(step.id, "failed" if decision.result.error else "reused", parts, decision.result, decision.result.error or "")
+            return Done(
+                step.id,
+                "failed" if decision.result.error else "reused",
+                parts,
+                decision.result,
+                decision.result.error or "",
+            )
         if decision.state == "skip":
-            return Done(step.id, "skipped", result=Result(outcome_of(step, decision) or {}, {}), because=decision.because)
+            return Done(
+                step.id, "skipped", result=Result(outcome_of(step, decision) or {}, {}), because=decision.because
+            )
         return Done(step.id, "blocked", because=decision.because)
 
     def run(self, step: Step, decision: Decision) -> Done:
@@ -116,7 +126,17 @@ class Bench:
         for name, value in values.items():
             if value is not None:
                 self._warm[kept[name]] = value  # type: ignore[index]
-        return Done(step.id, "failed" if error else "ran", parts, result, error, detail, "", decision.reasons, time.perf_counter() - began)
+        return Done(
+            step.id,
+            "failed" if error else "ran",
+            parts,
+            result,
+            error,
+            detail,
+            "",
+            decision.reasons,
+            time.perf_counter() - began,
+        )
 
     def _input(self, step: Step, name: str) -> Any:
         source = step.inputs[name]
@@ -159,7 +179,9 @@ class Bench:
         for file in files.values():
             for path, content in file.seen():
                 if os.path.normpath(path) not in given:
-                    seen[Path(os.path.relpath(path, first)).as_posix()] = None if content is None else self.store.digest(content)
+                    seen[Path(os.path.relpath(path, first)).as_posix()] = (
+                        None if content is None else self.store.digest(content)
+                    )
         return seen
 
     def _as_read(self, parts: Parts, files: dict[str, InputFile]) -> Parts:
@@ -171,17 +193,30 @@ class Bench:
         return {**parts, "files": read}
 
     def _files_in(self, values: dict[str, Any]) -> list[tuple[str, str]]:
-        return [(one.name, self.store.digest(one.content)) for value in values.values() if isinstance(value, Files) for one in value.files]
+        return [
+            (one.name, self.store.digest(one.content))
+            for value in values.values()
+            if isinstance(value, Files)
+            for one in value.files
+        ]
 
 
 def _key(parts: Parts) -> str:
-    return digest_text(canonical({"format": KEY_FORMAT, **{name: part for name, part in parts.items() if name != "reads"}}))
+    return digest_text(
+        canonical({"format": KEY_FORMAT, **{name: part for name, part in parts.items() if name != "reads"}})
+    )
 
 
 def _outputs(step: Step, returned: Any) -> dict[str, Any]:
     """What a function returned, by output. Raises NodeError where it is not what the signature promises."""
     kind = step.kind
-    values = {"": returned} if "" in kind.outputs else dict(zip(kind.outputs, returned, strict=True)) if isinstance(returned, tuple) else {}
+    values = (
+        {"": returned}
+        if "" in kind.outputs
+        else dict(zip(kind.outputs, returned, strict=True))
+        if isinstance(returned, tuple)
+        else {}
+    )
     if not values:
         raise NodeError(f"returned {type(returned).__name__}; its signature promises {', '.join(kind.outputs)}")
     for name, value in values.items():
@@ -200,7 +235,14 @@ def findings_in(values: dict[str, Any]) -> list[dict[str, Any]]:
             severity = "note" if item.accepted else item.severity
             one = found.setdefault(
                 (item.id, severity),
-                {"id": item.id, "severity": severity, "count": 0, "what": item.what, "advice": item.advice, "parts": []},
+                {
+                    "id": item.id,
+                    "severity": severity,
+                    "count": 0,
+                    "what": item.what,
+                    "advice": item.advice,
+                    "parts": [],
+                },
             )
             one["count"] += int(item.count)
             one["parts"].append(item.part)

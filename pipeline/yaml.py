@@ -11,7 +11,6 @@ import re
 from typing import Any
 
 import yaml
-
 from tangentry.pipeline.errors import GraphError
 
 DEEPEST = 40  # levels of nesting
@@ -80,7 +79,9 @@ def scalar(text: str) -> Any:
 def read_yaml(text: str | bytes, file: str) -> Node:
     """The one document of a file. Raises GraphError with every problem that can be found in one reading."""
     if len(text) > LARGEST:
-        raise GraphError(f"{file}: {len(text)} bytes; a graph file may have {LARGEST}; split it with graphs used as nodes")
+        raise GraphError(
+            f"{file}: {len(text)} bytes; a graph file may have {LARGEST}; split it with graphs used as nodes"
+        )
     loader = getattr(yaml, "CSafeLoader", yaml.SafeLoader)
     problems: list[str] = []
     try:
@@ -100,7 +101,9 @@ def read_yaml(text: str | bytes, file: str) -> Node:
 def _document(events: Any, file: str, problems: list[str]) -> Node:
     root: Node | None = None
     for event in events:
-        if isinstance(event, (yaml.StreamStartEvent, yaml.StreamEndEvent, yaml.DocumentStartEvent, yaml.DocumentEndEvent)):
+        if isinstance(
+            event, (yaml.StreamStartEvent, yaml.StreamEndEvent, yaml.DocumentStartEvent, yaml.DocumentEndEvent)
+        ):
             continue
         if root is not None:
             raise GraphError(*problems, f"{_mark(event, file)}: a second document begins here; a graph file holds one")
