@@ -161,24 +161,17 @@ def _build_once(chosen: argparse.Namespace) -> tuple[Record, int]:
 def _watch(chosen: argparse.Namespace, record: Record, store: Path) -> int:
     """Build again at every save, until interrupted; a graph that is wrong for the moment is waited for."""
     from tangentry.pipeline.errors import GraphError
-    from tangentry.pipeline.watch import changes
+    from tangentry.pipeline.watch import wait_for_saves
 
-    rests_on = record.rests_on
-    outputs = lambda: [
-        store,
-        *(Path(chosen.graph).parent / path for one in [*record.assets, record.library] for path in one.outputs),
-    ]  # noqa: E731
-    for saved in changes(lambda: rests_on, outputs):
-        print(
-            f"\nsaved: {', '.join(os.path.relpath(path) for path in saved[:4])}{' ...' if len(saved) > 4 else ''}",
-            flush=True,
-        )
+    while True:
+        outputs = [path for one in [*record.assets, record.library] for path in one.outputs]
+        saved = wait_for_saves(record.rests_on, [store, *(Path(chosen.graph).parent / path for path in outputs)])
+        named = ", ".join(os.path.relpath(path) for path in saved[:4])
+        print(f"\nsaved: {named}{' ...' if len(saved) > 4 else ''}", flush=True)
         try:
             record, _ = _build_once(chosen)
-            rests_on = record.rests_on
         except GraphError as error:
             print("\n".join(error.problems), file=sys.stderr)
-    return 0
 
 
 # plan

@@ -41,7 +41,7 @@ class Cluster:
         waiting = iter(tasks)
         under_way = {self._submit(task): task for task in itertools.islice(waiting, AHEAD)}
         as_completed: Any = distributed.as_completed
-        done = as_completed(list(under_way))
+        done = as_completed(list(under_way), loop=self._client.loop)
         for future in done:
             yield from self._events(future, under_way.pop(future))
             for task in itertools.islice(waiting, 1):

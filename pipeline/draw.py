@@ -11,7 +11,8 @@ from collections import Counter
 from html import escape
 from typing import Any
 
-from tangentry.pipeline.graph import Entry, Graph
+from tangentry.pipeline.graph import Graph
+from tangentry.pipeline.linking import Entry
 
 WIDE, HIGH = 178, 54  # of a box
 GAP_X, GAP_Y = 64, 26

@@ -63,7 +63,7 @@ def find_members(graph: Graph, written: Collection[str] = (), only: str | None =
 def looked_into(graph: Graph) -> list[str]:
     """The folders that a library's patterns look into: none changes unless a file or folder comes, goes or is renamed."""
     folders: list[str] = []
-    for pattern in (one for pattern in graph.library for one in unfold(pattern)):
+    for pattern in [one for written in graph.library for one in unfold(written)]:
         top = os.path.join(graph.folder, _fixed_part(pattern))
         folders.append(top)
         if WILD.search(os.path.dirname(pattern)):

@@ -18,9 +18,11 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from tangentry.pipeline.errors import GraphError
-from tangentry.pipeline.graph import Entry, Graph, Source, fill
+from tangentry.pipeline.filling import fill
+from tangentry.pipeline.graph import Graph
 from tangentry.pipeline.kinds import REQUIRED, Kind, show
 from tangentry.pipeline.library import Member
+from tangentry.pipeline.linking import Entry, Source
 from tangentry.pipeline.store import Result, Store
 from tangentry.pipeline.values import canonical, digest_text
 
@@ -205,9 +207,8 @@ def decide(
     inputs: dict[str, Any] = {}
     for name, source in step.inputs.items():
         if isinstance(source, list):
-            inputs[name] = [
-                [one[0], known[one][output]] for one, output in source if known.get(one) and known[one][output]
-            ]  # type: ignore[index]
+            given = [(one[0], (known.get(one) or {}).get(output)) for one, output in source]
+            inputs[name] = [[asset, digest] for asset, digest in given if digest is not None]
             continue
         outcome = known[source[0]]
         if outcome is None:

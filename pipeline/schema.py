@@ -7,7 +7,7 @@ from __future__ import annotations
 
 from typing import Any
 
-from tangentry.pipeline.graph import FORMAT
+from tangentry.pipeline.drafts import FORMAT
 from tangentry.pipeline.kinds import REQUIRED, Kind, Kinds, Setting
 
 DIALECT = "https://json-schema.org/draft/2020-12/schema"

@@ -153,15 +153,7 @@ class Store:
 
     def verify(self) -> list[Path]:
         """Set aside every object whose content does not match its name; gives their paths."""
-        bad = [path for path in self._objects("arrays") if not _sound(lambda p=path: digest_array(_map(p)) == p.stem)]  # type: ignore[misc]
-        bad += [
-            path
-            for path in self._objects("values")
-            if not _sound(lambda p=path: digest_text(p.read_text("utf-8")) == p.stem)
-        ]  # type: ignore[misc]
-        bad += [
-            path for path in self._objects("results") if not _sound(lambda p=path: bool(json.loads(p.read_bytes())))
-        ]  # type: ignore[misc]
+        bad = [path for room, sound in SOUND.items() for path in self._objects(room) if not _holds(sound, path)]
         for path in bad:
             self._set_aside(path)
         return bad
@@ -269,9 +261,16 @@ def _map(path: Path) -> Array:
     return array
 
 
-def _sound(check: Callable[[], bool]) -> bool:
+SOUND: dict[str, Callable[[Path], bool]] = {
+    "arrays": lambda path: digest_array(_map(path)) == path.stem,
+    "values": lambda path: digest_text(path.read_text("utf-8")) == path.stem,
+    "results": lambda path: bool(json.loads(path.read_bytes())),
+}  # by room: does an object's content match its name?
+
+
+def _holds(sound: Callable[[Path], bool], path: Path) -> bool:
     try:
-        return check()
+        return sound(path)
     except (OSError, ValueError, EOFError, SyntaxError):
         return False
 
