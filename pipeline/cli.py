@@ -54,6 +54,7 @@ def _parser() -> argparse.ArgumentParser:
     _nodes_words(commands.add_parser("nodes", help="the node reference"))
     _inspect_words(commands.add_parser("inspect", help="facts about meshes and maps"))
     _store_words(commands.add_parser("store", help="look after the store"))
+    _start_words(commands.add_parser("start", help="write a small working project to begin from"))
     return parser
 
 
@@ -334,6 +335,23 @@ def _store_trim(chosen: argparse.Namespace) -> int:
         raise GraphError("store trim: say what may go: --keep-days DAYS or --max-size SIZE")
     count, freed = _open_store(chosen).trim(chosen.keep_days, chosen.max_size)
     print(f"{count} objects removed, {bytes_text(freed)} freed")
+    return 0
+
+
+# start
+
+
+def _start_words(parser: argparse.ArgumentParser) -> None:
+    parser.add_argument("folder", metavar="FOLDER", help="an empty or a new folder")
+    parser.set_defaults(run=_start)
+
+
+def _start(chosen: argparse.Namespace) -> int:
+    from tangentry.pipeline.start import start
+
+    for path in start(Path(chosen.folder)):
+        print(f"written   {path}")
+    print(f"now: tangentry build {Path(chosen.folder) / 'library.yaml'}")
     return 0
 
 

@@ -1,0 +1,1 @@
+"""What `tangentry start` writes: a small project that builds at once."""
