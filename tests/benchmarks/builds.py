@@ -1,0 +1,157 @@
+"""How long whole commands take, each beside something well known in the same run. Prints ratios of medians.
+
+    python tests/benchmarks/builds.py            all
+    python tests/benchmarks/builds.py nothing    one: help, nothing, workers, demo, large
+"""
+
+from __future__ import annotations
+
+import os
+import resource
+import shutil
+import statistics
+import subprocess
+import sys
+import tempfile
+import time
+from collections.abc import Sequence
+from pathlib import Path
+
+TANGENTRY = str(Path(sys.executable).parent / "tangentry")
+ROOT = Path(__file__).parents[2]
+KIND = '''
+import numpy as np
+
+from tangentry.pipeline.flow import Files, InputFile, OutFile, OutputFile
+
+
+def copy(file: InputFile | str, *, made: OutputFile | str) -> Files:
+    """The file, as it is."""
+    return Files((OutFile(made, InputFile.of(file).bytes()),))
+'''
+GRAPH = """
+tangentry: 1
+library: props/*.txt
+kinds: kinds
+per_asset:
+  copied: {node: copy, file: "{file}", made: "build/{stem}.out"}
+"""
+
+
+def seconds(words: Sequence[str], cwd: Path | None = None) -> float:
+    """Wall-clock time of a command."""
+    began = time.perf_counter()
+    subprocess.run(words, cwd=cwd, stdout=subprocess.DEVNULL, stderr=subprocess.DEVNULL, check=False)
+    return time.perf_counter() - began
+
+
+def pairs(first: Sequence[str], second: Sequence[str], cwd: Path | None = None, times: int = 11) -> tuple[float, float]:
+    """Medians of two commands run in turn, after a warm-up."""
+    found = [(seconds(first, cwd), seconds(second, cwd)) for _ in range(times + 1)][1:]
+    return statistics.median(a for a, _ in found), statistics.median(b for _, b in found)
+
+
+def peak_megabytes(words: Sequence[str]) -> tuple[float, float]:
+    """Wall-clock time and peak memory of a command, measured by a process that runs nothing else."""
+    script = "import resource, subprocess, sys, time; t = time.perf_counter(); subprocess.run(sys.argv[1:], stdout=subprocess.DEVNULL); print(time.perf_counter() - t, resource.getrusage(resource.RUSAGE_CHILDREN).ru_maxrss)"  # noqa: E501
+    told = subprocess.run([sys.executable, "-c", script, *words], capture_output=True, text=True, check=True).stdout.split()
+    return float(told[0]), float(told[1]) / 1024
+
+
+def help_starts(_: Path) -> None:
+    """--help beside the import of numpy."""
+    ours, numpy = pairs([TANGENTRY, "--help"], [sys.executable, "-c", "import numpy"])
+    print(f"help      tangentry --help {ours * 1e3:.0f} ms, python -c 'import numpy' {numpy * 1e3:.0f} ms: {ours / numpy:.2f}")
+
+
+def nothing_changed(folder: Path) -> None:
+    """A nothing-changed build of 10,000 small files beside git status of the same tree and bare Python."""
+    _library(folder, 10_000)
+    (folder / ".gitignore").write_text(".tangentry\n")
+    build, status = [TANGENTRY, "build", "graph.yaml"], ["git", "status"]
+    seconds(build, folder)
+    for words in (["init", "-q"], ["add", "-A"], ["-c", "user.name=bench", "-c", "user.email=bench@localhost", "commit", "-qm", "all"]):
+        seconds(["git", *words], folder)
+    time.sleep(2.5)
+    seconds(build, folder)
+    ours, git = pairs(build, status, folder)
+    bare = statistics.median(seconds([sys.executable, "-c", "pass"]) for _ in range(11))
+    print(f"nothing   build {ours * 1e3:.0f} ms, git status {git * 1e3:.0f} ms, python {bare * 1e3:.0f} ms: (build - python) / git {(ours - bare) / git:.2f}")  # noqa: E501
+
+
+def _library(folder: Path, count: int) -> None:
+    for name in ("props", "kinds"):
+        (folder / name).mkdir()
+    for number in range(count):
+        (folder / "props" / f"prop_{number:05}.txt").write_text(f"prop {number}\n")
+    (folder / "kinds" / "copy.py").write_text(KIND)
+    (folder / "graph.yaml").write_text(GRAPH)
+
+
+def workers(folder: Path) -> None:
+    """One process beside two, on copies of the demo props."""
+    graph = _many_props(folder, 24)
+    times = {}
+    for count in ("1", "2", "1", "2"):
+        shutil.rmtree(folder / ".tangentry", ignore_errors=True)
+        shutil.rmtree(folder / "build", ignore_errors=True)
+        times.setdefault(count, []).append(seconds([TANGENTRY, "build", str(graph), "--workers", count]))
+    one, two = min(times["1"]), min(times["2"])
+    print(f"workers   one process {one:.1f} s, two {two:.1f} s: {one / two:.2f} times as fast")
+
+
+def _many_props(folder: Path, copies: int) -> Path:
+    demo = ROOT / "graphs" / "ferry_terminal"
+    (folder / "props").mkdir()
+    for source in sorted((demo / "props").iterdir()):
+        for number in range(copies):
+            if source.suffix in (".obj", ".ply", ".glb"):
+                # A comment or a byte of padding would be invisible to the nodes; the name alone makes the asset another.
+                shutil.copy(source, folder / "props" / f"{source.stem}_{number:02}{source.suffix}")
+    for source in (demo / "props").iterdir():
+        if source.suffix not in (".obj", ".ply", ".glb"):
+            shutil.copy(source, folder / "props" / source.name)
+    shutil.copy(demo / "ferry_terminal.yaml", folder / "graph.yaml")
+    return folder / "graph.yaml"
+
+
+def demo(folder: Path) -> None:
+    """The demo library: a first build, and one with nothing changed."""
+    shutil.copytree(ROOT / "graphs" / "ferry_terminal", folder / "demo", ignore=shutil.ignore_patterns("build", ".tangentry"))
+    build = [TANGENTRY, "build", str(folder / "demo" / "ferry_terminal.yaml")]
+    first, memory = peak_megabytes(build)
+    time.sleep(2.5)
+    seconds(build)
+    again, memory_again = peak_megabytes(build)
+    print(f"demo      first build {first:.2f} s, {memory:.0f} MB; nothing changed {again * 1e3:.0f} ms, {memory_again:.0f} MB")
+
+
+def large(folder: Path) -> None:
+    """One OBJ of 1,000,000 triangles, load to export."""
+    sys.path.insert(0, str(ROOT / "tests"))
+    from shapes import torus
+
+    from tangentry.nodes.formats.obj import write_obj
+
+    (folder / "props").mkdir()
+    for file in write_obj(torus(1000, 500), "torus"):
+        file.content.tofile(folder / "props" / file.name)
+    from tangentry.pipeline.start import start
+
+    start(folder / "project")
+    shutil.copy(folder / "project" / "library.yaml", folder / "library.yaml")
+    build = [TANGENTRY, "build", str(folder / "library.yaml")]
+    took, memory = peak_megabytes(build)
+    size = sum(path.stat().st_size for path in (folder / "props").iterdir()) / 1e6
+    print(f"large     {size:.0f} MB of OBJ, 1,000,000 triangles, load to export: {took:.1f} s, {memory:.0f} MB")
+
+
+BENCHMARKS = {"help": help_starts, "nothing": nothing_changed, "workers": workers, "demo": demo, "large": large}
+
+
+if __name__ == "__main__":
+    os.environ.setdefault("PYTHONHASHSEED", "0")
+    resource.setrlimit(resource.RLIMIT_NOFILE, (4096, 4096))
+    for name in sys.argv[1:] or BENCHMARKS:
+        with tempfile.TemporaryDirectory() as folder:
+            BENCHMARKS[name](Path(folder))
