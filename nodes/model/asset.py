@@ -40,11 +40,11 @@ class Frames:
 
 @flow_value
 class Morph:
-    """Displacements of one morph target, per source vertex."""
+    """Displacements of one morph target."""
 
     points: Array | None  # (source vertices, 3) float32
     normals: Array | None  # (source vertices, 3) float32
-    tangents: Array | None  # (source vertices, 3) float32
+    tangents: Array | None  # (frames, 3) float32, by row of Part.frames
 
 
 @flow_value
@@ -98,12 +98,9 @@ class Material:
     maps: tuple[MapUse, ...] = ()
 
     @property
-    def frame_uv(self) -> int | None:
-        """The UV set whose frames this material needs; None where it samples no tangent-space map."""
-        for use in self.maps:
-            if use.role in TANGENT_SPACE_ROLES:
-                return use.uv
-        return None
+    def tangent_space_map(self) -> MapUse | None:
+        """The map whose frames this material needs; None where it samples no tangent-space map."""
+        return next((use for use in self.maps if use.role in TANGENT_SPACE_ROLES), None)
 
 
 @flow_value

@@ -1,0 +1,43 @@
+"""Small vector algebra on arrays of rows."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from tangentry.pipeline.flow import Array
+
+
+def dot(a: Array, b: Array) -> Array:
+    """(n,) products of the rows of two (n, 3) arrays."""
+    products: Array = np.einsum("ij,ij->i", a, b)
+    return products
+
+
+def unit(rows: Array) -> Array:
+    """(n, 3) rows of length one; rows without length stay zero."""
+    length = np.sqrt(dot(rows, rows))[:, None]
+    out: Array = np.divide(rows, length, out=np.zeros_like(rows), where=length > 0)
+    return out
+
+
+def reject(rows: Array, normals: Array) -> Array:
+    """(n, 3) the part of each row that is perpendicular to a unit normal: rows - normals (rows . normals)."""
+    out: Array = rows - normals * dot(rows, normals)[:, None]
+    return out
+
+
+def axis_across(normals: Array) -> Array:
+    """(n, 3) a unit vector perpendicular to each unit normal, continuous but at n_z = 0 (Duff et al. 2017, listing 3)."""
+    x, y, z = normals.T
+    sign = np.copysign(np.float32(1), z)
+    a = -1 / (sign + z)
+    axis: Array = np.stack([1 + sign * x * x * a, sign * x * y * a, -sign * x], axis=1)
+    return unit(axis.astype(normals.dtype))
+
+
+def angle_between(a: Array, b: Array) -> Array:
+    """(n,) degrees between the rows of two (n, 3) arrays of unit vectors, exact near 0 and 180 (Kahan's formula)."""
+    a, b = a.astype(np.float64), b.astype(np.float64)
+    difference, total = a - b, a + b
+    angle: Array = np.degrees(2 * np.arctan2(np.sqrt(dot(difference, difference)), np.sqrt(dot(total, total))))
+    return angle
