@@ -1,0 +1,41 @@
+"""Assets as delivered files."""
+
+from __future__ import annotations
+
+from pathlib import PurePosixPath
+
+from tangentry.nodes.model import Asset, Map
+from tangentry.pipeline.errors import InputError
+from tangentry.pipeline.flow import Files, Findings, OutFile, OutputFile
+
+WRITTEN = (".glb", ".gltf", ".ply", ".npz", ".obj")
+
+
+def export(asset: Asset, map: Map | None = None, unless_faulty: Findings | None = None, *, file: OutputFile | str) -> Files | None:
+    """The asset as a file, with its frames and its maps; left out where `unless_faulty` holds a fault.
+
+    file  where to; its suffix says the format: .glb, .gltf (buffer and images beside it), .ply, .npz, .obj
+
+    One vertex is written for each corner that differs from all others. glTF: TANGENT, and the normal maps in their
+    materials, green up; what came from a glTF file and did not change goes out as it came in. PLY: tx ty tz and side.
+    NPZ: plain arrays. Raises InputError for other suffixes.
+    """
+    if unless_faulty is not None and unless_faulty.faulty:
+        return None
+    path = PurePosixPath(file)
+    suffix = path.suffix.lower()
+    if suffix not in WRITTEN:
+        raise InputError(file, "", f'suffix "{suffix}" names no format', f"write one of {', '.join(WRITTEN)}")
+    if suffix in (".glb", ".gltf"):
+        from tangentry.nodes.formats.gltf import write_gltf
+
+        return Files(write_gltf(asset, map, path.name.removesuffix(path.suffix), suffix == ".glb"))
+    if suffix == ".obj":
+        from tangentry.nodes.formats.obj import write_obj
+
+        return Files(write_obj(asset, path.stem))
+    if suffix == ".ply":
+        from tangentry.nodes.formats.ply import write_ply as write_one
+    else:
+        from tangentry.nodes.formats.npz import write_npz as write_one
+    return Files((OutFile(path.name, write_one(asset)),))

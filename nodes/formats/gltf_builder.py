@@ -1,0 +1,147 @@
+"""A glTF document under construction: JSON and the contents of its buffer views, packed into one buffer at the end."""
+
+from __future__ import annotations
+
+import json
+from typing import Any
+
+import numpy as np
+
+from tangentry.nodes.formats.gltf_accessors import WIDTHS
+from tangentry.pipeline.flow import Array, OutFile
+
+GENERATOR = "tangentry"
+TYPE_CODES = {np.dtype("i1"): 5120, np.dtype("u1"): 5121, np.dtype("<i2"): 5122, np.dtype("<u2"): 5123, np.dtype("<u4"): 5125, np.dtype("<f4"): 5126}
+VECTORS = {1: "SCALAR", 2: "VEC2", 3: "VEC3", 4: "VEC4"}
+VERTICES, INDICES = 34962, 34963  # buffer view targets
+ALIGN = 4
+
+
+class Builder:
+    """Takes views and accessors, gives files."""
+
+    def __init__(self, document: dict[str, Any] | None = None, views: list[Array] | None = None) -> None:
+        self.document: dict[str, Any] = document if document is not None else {"asset": {"version": "2.0", "generator": GENERATOR}}
+        self._views: list[Array] = views if views is not None else []
+
+    def list(self, name: str) -> list[dict[str, Any]]:
+        """A top-level list, made if it is not there."""
+        found: list[dict[str, Any]] = self.document.setdefault(name, [])
+        return found
+
+    def view(self, content: Array, **more: int) -> int:
+        """Add a buffer view of these bytes, (size,) uint8; gives its number."""
+        self.list("bufferViews").append({"buffer": 0, "byteLength": len(content), **more})
+        self._views.append(content)
+        return len(self._views) - 1
+
+    def accessor(self, values: Array, replaces: int | None = None, **more: Any) -> int:
+        """Add an accessor of (count, width) vertex data, or put it in another's place; gives its number."""
+        size = values.dtype.itemsize * values.shape[1]
+        stride = (size + ALIGN - 1) // ALIGN * ALIGN
+        rows = np.ascontiguousarray(values).view(np.uint8).reshape(len(values), size)
+        if stride != size:
+            rows = np.concatenate([rows, np.zeros((len(rows), stride - size), np.uint8)], axis=1)
+        strided = {"byteStride": stride} if stride != size else {}
+        view = self.view(rows.reshape(-1), target=VERTICES, **strided)
+        return self._entry(view, values, replaces, **more)
+
+    def indices(self, corners: Array, vertices: int, replaces: int | None = None) -> int:
+        """Add an accessor of indices, of the smallest type that holds them; gives its number."""
+        kind = np.uint8 if vertices < 256 and replaces is not None and self._component(replaces) == 5121 else np.uint16 if vertices < 65536 else np.uint32
+        values = corners.astype(kind)[:, None]
+        return self._entry(self.view(values.view(np.uint8).reshape(-1), target=INDICES), values, replaces)
+
+    def _component(self, accessor: int) -> int:
+        return int(self.list("accessors")[accessor]["componentType"])
+
+    def _entry(self, view: int, values: Array, replaces: int | None, **more: Any) -> int:
+        entry = {"bufferView": view, "componentType": TYPE_CODES[values.dtype.newbyteorder("<")], "count": len(values), "type": VECTORS[values.shape[1]], **more}
+        accessors = self.list("accessors")
+        if replaces is None:
+            accessors.append(entry)
+            return len(accessors) - 1
+        kept = {name: value for name, value in accessors[replaces].items() if name in ("name", "extras", "extensions", "normalized")}
+        accessors[replaces] = kept | entry
+        return replaces
+
+    def use(self, extension: str) -> None:
+        """Note an extension as used."""
+        used = self.list("extensionsUsed")
+        if extension not in used:
+            used.append(extension)  # type: ignore[arg-type]
+
+    def files(self, stem: str, binary: bool) -> tuple[OutFile, ...]:
+        """The document as one .glb, or as .gltf with its buffer beside it as `stem.bin`."""
+        self._drop_unused_views()
+        packed, offsets, at = [], [], 0
+        for content in self._views:
+            padding = -len(content) % ALIGN
+            packed += [content, np.zeros(padding, np.uint8)]
+            offsets.append(at)
+            at += len(content) + padding
+        for view, offset in zip(self.document.get("bufferViews", ()), offsets, strict=True):
+            view["buffer"] = 0
+            view.pop("byteOffset", None)
+            if offset:
+                view["byteOffset"] = offset
+        body = np.concatenate(packed) if packed else np.zeros(0, np.uint8)
+        self._only_buffer(len(body), "" if binary else f"{stem}.bin")
+        for empty in [name for name, value in self.document.items() if value == [] and name != "scenes"]:
+            del self.document[empty]
+        text = json.dumps(self.document, ensure_ascii=False, separators=(",", ":")).encode()
+        if binary:
+            return (OutFile(f"{stem}.glb", _glb(text, body)),)
+        files = [OutFile(f"{stem}.gltf", np.frombuffer(text, np.uint8))]
+        return (*files, OutFile(f"{stem}.bin", body)) if len(body) else tuple(files)
+
+    def _only_buffer(self, size: int, uri: str) -> None:
+        """One buffer in place of all; what the first one carried besides its data stays."""
+        kept = {name: value for name, value in next(iter(self.document.get("buffers", [])), {}).items() if name not in ("uri", "byteLength")}
+        self.document.pop("buffers", None)
+        if size:
+            self.document["buffers"] = [{**kept, "byteLength": size, **({"uri": uri} if uri else {})}]
+
+    def _drop_unused_views(self) -> None:
+        """Leave out the views that nothing names; every mention of a view in glTF and its extensions is called bufferView."""
+        mentions: list[dict[str, Any]] = []
+
+        def visit(data: Any) -> None:
+            if isinstance(data, dict):
+                if isinstance(data.get("bufferView"), int):
+                    mentions.append(data)
+                for value in data.values():
+                    visit(value)
+            elif isinstance(data, list):
+                for value in data:
+                    visit(value)
+
+        visit({name: value for name, value in self.document.items() if name != "bufferViews"})
+        used = sorted({mention["bufferView"] for mention in mentions})
+        renumbered = {old: new for new, old in enumerate(used)}
+        for mention in mentions:
+            mention["bufferView"] = renumbered[mention["bufferView"]]
+        views = self.document.get("bufferViews", [])
+        self._views = [self._views[old] for old in used]
+        if views:
+            self.document["bufferViews"] = [views[old] for old in used]
+
+
+def _glb(text: bytes, body: Array) -> Array:
+    """The two chunks of a GLB file (specification, 4.4)."""
+    text += b" " * (-len(text) % 4)
+    chunks = [np.array([len(text), 0x4E4F534A], "<u4").view(np.uint8), np.frombuffer(text, np.uint8)]
+    if len(body):
+        chunks += [np.array([len(body), 0x004E4942], "<u4").view(np.uint8), body]
+    size = 12 + sum(len(chunk) for chunk in chunks)
+    return np.concatenate([np.array([0x46546C67, 2, size], "<u4").view(np.uint8), *chunks])
+
+
+def bounds(values: Array) -> dict[str, list[float]]:
+    """`min` and `max` of vertex data, as POSITION needs them."""
+    return {"min": values.min(axis=0).tolist(), "max": values.max(axis=0).tolist()}
+
+
+def width(entry: dict[str, Any]) -> int:
+    """How many components an accessor's elements have."""
+    return WIDTHS[str(entry["type"])]

@@ -1,0 +1,94 @@
+"""What an image file says of itself in its first bytes, read without decoding it."""
+
+from __future__ import annotations
+
+import struct
+from typing import NamedTuple
+
+
+from tangentry.pipeline.errors import InputError
+from tangentry.pipeline.flow import Array
+
+READ = "PNG, JPEG, WebP and TIFF are read"
+BAD = "the file is damaged or cut off: export it again"
+
+
+class ImageHeader(NamedTuple):
+    """Format and size."""
+
+    format: str  # "PNG", "JPEG", "WebP" or "TIFF"
+    width: int
+    height: int
+
+
+def read_header(content: Array, name: str) -> ImageHeader:
+    """Format and size of an image file. Raises InputError for other formats, and where the header is broken."""
+    head = content[:64].tobytes()
+    try:
+        if head.startswith(b"\x89PNG\r\n\x1a\n"):
+            return _checked(ImageHeader("PNG", *struct.unpack(">II", head[16:24])), name)
+        if head.startswith(b"\xff\xd8"):
+            return _checked(_jpeg(content.tobytes(), name), name)
+        if head[:4] == b"RIFF" and head[8:12] == b"WEBP":
+            return _checked(_webp(head), name)
+        if head[:4] in (b"II*\0", b"MM\0*"):
+            return _checked(_tiff(content.tobytes(), "<" if head[:2] == b"II" else ">"), name)
+    except (struct.error, IndexError):
+        raise InputError(name, "header", "cut off", BAD) from None
+    shown = head[:8].hex(" ")
+    raise InputError(name, "", f"not an image that can be read (it begins with {shown}); {READ}", "save it as PNG")
+
+
+def _checked(header: ImageHeader, name: str) -> ImageHeader:
+    if header.width < 1 or header.height < 1:
+        raise InputError(name, "header", f"{header.width} x {header.height} pixels", BAD)
+    return header
+
+
+def _jpeg(data: bytes, name: str) -> ImageHeader:
+    """From the frame header, which the other segments lead to (ITU-T T.81, B.2.2)."""
+    at = 2
+    while True:
+        while data[at] == 0xFF and data[at + 1] == 0xFF:
+            at += 1
+        marker = data[at + 1]
+        if data[at] != 0xFF:
+            raise InputError(name, f"byte {at}", "no JPEG segment begins here", BAD)
+        if 0xC0 <= marker <= 0xCF and marker not in (0xC4, 0xC8, 0xCC):
+            height, width, channels = struct.unpack(">HHB", data[at + 5 : at + 10])
+            if channels == 4:
+                raise InputError(name, "", "a CMYK image, which holds no plain channels", "save it as RGB")
+            return ImageHeader("JPEG", width, height)
+        at += 2 + struct.unpack(">H", data[at + 2 : at + 4])[0]
+
+
+def _webp(head: bytes) -> ImageHeader:
+    """RFC 9649, chapter 2."""
+    kind = head[12:16]
+    if kind == b"VP8X":
+        return ImageHeader("WebP", 1 + int.from_bytes(head[24:27], "little"), 1 + int.from_bytes(head[27:30], "little"))
+    if kind == b"VP8L":
+        bits = struct.unpack("<I", head[21:25])[0]
+        return ImageHeader("WebP", 1 + (bits & 0x3FFF), 1 + (bits >> 14 & 0x3FFF))
+    width, height = struct.unpack("<HH", head[26:30])
+    return ImageHeader("WebP", width & 0x3FFF, height & 0x3FFF)
+
+
+def _tiff(data: bytes, order: str) -> ImageHeader:
+    """From the first directory (TIFF 6.0, section 2)."""
+    at = struct.unpack(order + "I", data[4:8])[0]
+    size = {}
+    for entry in range(struct.unpack(order + "H", data[at : at + 2])[0]):
+        place = at + 2 + 12 * entry
+        tag, kind = struct.unpack(order + "HH", data[place : place + 4])
+        if tag in (256, 257):
+            size[tag] = struct.unpack(order + ("H" if kind == 3 else "I"), data[place + 8 : place + (10 if kind == 3 else 12)])[0]
+    return ImageHeader("TIFF", int(size.get(256, 0)), int(size.get(257, 0)))
+
+
+def is_image(content: Array) -> bool:
+    """Does a file begin like an image that can be read?"""
+    head = content[:12].tobytes()
+    return head.startswith((b"\x89PNG", b"\xff\xd8", b"II*\0", b"MM\0*")) or (head[:4] == b"RIFF" and head[8:12] == b"WEBP")
+
+

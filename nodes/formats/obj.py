@@ -1,0 +1,172 @@
+"""Wavefront OBJ, with its index streams kept apart (Advanced Visualizer manual, appendix B)."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import numpy as np
+
+from tangentry.nodes.formats.obj_materials import Materials
+from tangentry.nodes.formats.obj_scan import Statements, read_statements
+from tangentry.nodes.geometry.normals import build_normals
+from tangentry.nodes.model import Asset, Part, Stream
+from tangentry.pipeline.errors import InputError
+from tangentry.pipeline.flow import Array, InputFile, OutFile
+
+
+def read_obj(file: InputFile) -> Asset:
+    """The asset in an OBJ file: one part for each object and material, in the order they appear; v grows upward.
+
+    Polygons stay polygons, groups (`g`) divide nothing. Faces without UVs in a part that has some get (0, 0), faces without
+    normals their own; both are noted, as are material libraries and images that are not there. Raises InputError naming
+    the line of whatever can't be used.
+    """
+    found = read_statements(file)
+    if len(found.starts) < 2:
+        what = "there are lines or points, but no faces in it" if found.skipped else "there are no faces in it"
+        raise InputError(file, "", what, "export the mesh with its faces")
+    materials = Materials(file)
+    owner, keys, smoothing = _owners(found, materials)
+    notes = [f"{found.skipped} lines, curves or other statements passed over"] if found.skipped else []
+    parts = []
+    for row, (name, material) in enumerate(keys):
+        faces = np.flatnonzero(owner == row).astype(np.int32)
+        if len(faces):
+            parts.append(_part(found, faces, name, material, smoothing, notes))
+    return Asset(file.path, tuple(parts), materials.all(), tuple(materials.images), False, None, (*notes, *materials.notes))
+
+
+def _owners(found: Statements, materials: Materials) -> tuple[Array, list[tuple[str, int]], Array | None]:
+    """The part of each face, what each part is called, and the smoothing groups if there are any."""
+    faces = len(found.starts) - 1
+    owner, smoothing = np.zeros(faces, np.int32), np.zeros(faces, np.int32)
+    keys: dict[tuple[str, int], int] = {}
+    name, material, smooth, group, begun = "", -1, False, 0, 0
+    for at, keyword, rest in [*found.words, (faces, "", "")]:
+        if at > begun:
+            owner[begun:at] = keys.setdefault((name, material), len(keys))
+            smoothing[begun:at] = group
+            begun = at
+        if keyword == "o":
+            name = rest
+        elif keyword == "usemtl":
+            material = materials.row(rest)
+        elif keyword == "mtllib":
+            _libraries(rest, materials)
+        elif keyword == "s":
+            smooth, group = True, int(rest) if rest.isdigit() and len(rest) < 10 else 0
+    return owner, list(keys), smoothing if smooth else None
+
+
+def _libraries(names: str, materials: Materials) -> None:
+    """`mtllib` names several files, or one with spaces in its name."""
+    one_by_one = names.split()
+    if len(one_by_one) > 1 and all(name.lower().endswith(".mtl") for name in one_by_one):
+        for name in one_by_one:
+            materials.library(name)
+    else:
+        materials.library(names)
+
+
+def _part(found: Statements, faces: Array, name: str, material: int, smoothing: Array | None, notes: list[str]) -> Part:
+    whole = len(faces) == len(found.starts) - 1
+    sizes = np.diff(found.starts)[faces]
+    starts = np.concatenate([[0], np.cumsum(sizes)]).astype(np.int32)
+    corners = found.corners
+    if not whole:
+        corners = corners[np.repeat(found.starts[faces] - starts[:-1], sizes) + np.arange(starts[-1])]
+    points = _stream(found.points, corners[:, 0])
+    colours = (_stream(found.colours, corners[:, 0]),) if len(found.colours) else ()
+    groups = None if smoothing is None else smoothing[faces]
+    part = Part(name, material, starts, points, colours=colours, smoothing=groups)
+    part = replace(part, uvs=_uvs(found, corners[:, 1], part, notes))
+    return replace(part, normals=_normals(found, corners[:, 2], part, notes))
+
+
+def _stream(values: Array, index: Array) -> Stream:
+    """The rows that corners use, in the file's order."""
+    used = np.zeros(len(values), bool)
+    used[index] = True
+    if used.all():
+        return Stream(values, np.ascontiguousarray(index))
+    row = np.cumsum(used, dtype=np.int32) - 1
+    return Stream(values[used], row[index])
+
+
+def _uvs(found: Statements, index: Array, part: Part, notes: list[str]) -> tuple[Stream, ...]:
+    bare = index < 0
+    finite = np.isfinite(found.uvs).all(axis=1)
+    if not len(found.uvs) or bare.all():
+        return ()
+    bare |= ~finite[np.maximum(index, 0)]
+    if not bare.any():
+        return (_stream(found.uvs, index),)
+    notes.append(f'{np.count_nonzero(bare)} corners of part "{part.name}" have no UVs and are given (0, 0)')
+    values = np.concatenate([np.where(finite[:, None], found.uvs, 0), np.zeros((1, 2), np.float32)])
+    return (_stream(values.astype(np.float32), np.where(bare, len(found.uvs), index).astype(np.int32)),)
+
+
+def _normals(found: Statements, index: Array, part: Part, notes: list[str]) -> Stream | None:
+    """Unit normals; corners without a proper one get that of their face, unless none of the part has one."""
+    if not len(found.normals):
+        return None
+    length = np.sqrt(np.einsum("ij,ij->i", found.normals, found.normals, dtype=np.float64))
+    sound = np.isfinite(length) & (length > 0)
+    bare = (index < 0) | ~sound[np.maximum(index, 0)]
+    if bare.all():
+        return None
+    scaled = found.normals / np.where(sound, length, 1)[:, None]
+    # Printed with few digits, a unit normal is a unit normal still.
+    unit = np.where((np.abs(length - 1) < 1e-6)[:, None], found.normals, scaled).astype(np.float32)
+    if not bare.any():
+        return _stream(unit, index)
+    notes.append(f'{np.count_nonzero(bare)} corners of part "{part.name}" have no normals and are given those of their faces')
+    own = build_normals(part, "face")
+    rows = np.where(bare, own.index + len(unit), index).astype(np.int32)
+    return _stream(np.concatenate([np.where(sound[:, None], unit, 0), own.values]).astype(np.float32), rows)
+
+
+def write_obj(asset: Asset, stem: str) -> tuple[OutFile, ...]:
+    """An OBJ file of positions, UVs and normals, polygons kept, and a material library of names if there are materials.
+
+    OBJ has no place for frames: export GLB, PLY or NPZ for them.
+    """
+    lines = [f"mtllib {stem}.mtl"] if asset.materials else []
+    before = np.zeros(3, np.int64)
+    for part in asset.parts:
+        streams = [part.points, part.uvs[0] if part.uvs else None, part.normals]
+        lines.append(f"o {part.name or stem}")
+        if part.material >= 0:
+            lines.append(f"usemtl {asset.materials[part.material].name}")
+        for keyword, stream in zip(("v", "vt", "vn"), streams, strict=True):
+            values = stream.values if stream is not None else np.zeros((0, 3), np.float32)
+            if keyword == "vt" and asset.v_down and len(values):
+                values = np.stack([values[:, 0], 1 - values[:, 1]], axis=1)
+            lines += [f"{keyword} " + " ".join(f"{x:.9g}" for x in row) for row in values.tolist()]
+        lines += _faces(part, streams, before)
+        before += [len(stream.values) if stream is not None else 0 for stream in streams]
+    files = [OutFile(f"{stem}.obj", _bytes(lines))]
+    if asset.materials:
+        files.append(OutFile(f"{stem}.mtl", _bytes([f"newmtl {material.name}" for material in asset.materials])))
+    return tuple(files)
+
+
+def _faces(part: Part, streams: list[Stream | None], before: Array) -> list[str]:
+    columns = [(stream.index + before[k] + 1).astype(str) if stream is not None else None for k, stream in enumerate(streams)]
+    words = columns[0]
+    assert words is not None
+    if columns[1] is not None or columns[2] is not None:
+        words = np.char.add(words, "/")
+        words = np.char.add(words, columns[1]) if columns[1] is not None else words
+        words = np.char.add(np.char.add(words, "/"), columns[2]) if columns[2] is not None else words
+    lines, group = [], None
+    for f in range(part.face_count):
+        if part.smoothing is not None and part.smoothing[f] != group:
+            group = part.smoothing[f]
+            lines.append(f"s {group or 'off'}")
+        lines.append("f " + " ".join(words[part.starts[f] : part.starts[f + 1]]))
+    return lines
+
+
+def _bytes(lines: list[str]) -> Array:
+    return np.frombuffer(("\n".join(lines) + "\n").encode(), np.uint8)
