@@ -8,6 +8,7 @@ from typing import Any
 import numpy as np
 
 from tangentry.nodes.formats.gltf_accessors import WIDTHS
+from tangentry.nodes.model import Image
 from tangentry.pipeline.flow import Array, OutFile
 
 GENERATOR = "tangentry"
@@ -23,6 +24,7 @@ class Builder:
     def __init__(self, document: dict[str, Any] | None = None, views: list[Array] | None = None) -> None:
         self.document: dict[str, Any] = document if document is not None else {"asset": {"version": "2.0", "generator": GENERATOR}}
         self._views: list[Array] = views if views is not None else []
+        self.images: list[Image] = []  # what the document's images hold, one for one
 
     def list(self, name: str) -> list[dict[str, Any]]:
         """A top-level list, made if it is not there."""

@@ -24,6 +24,7 @@ def edited_document(asset: Asset) -> Builder:
     document = json.loads(asset.document.text)
     accessors = Accessors(InputFile(asset.name), document, list(asset.document.buffers))
     builder = Builder(document, [accessors.view(number) for number in range(len(accessors.views))])
+    builder.images = list(asset.images)
     editing = _Editing(builder, accessors)
     for part in asset.parts:
         m, p = part.place

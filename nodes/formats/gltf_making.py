@@ -62,7 +62,6 @@ def _unit_or_up(normals: Array) -> Array:
 def _materials(builder: Builder, asset: Asset) -> None:
     """Materials with the colour, normal and emissive maps that glTF can show; all images go along, so rows correspond."""
     used: dict[int, int] = {}
-    builder.document["images"] = [{"name": image.name} for image in asset.images]
     for material in asset.materials:
         entry: dict[str, Any] = {"name": material.name, "pbrMetallicRoughness": {"metallicFactor": 0.0}}
         for use in material.maps:
@@ -97,7 +96,5 @@ def _only_shown(builder: Builder, asset: Asset, used: dict[int, int]) -> None:
     shown = sorted(used)
     for texture in builder.list("textures"):
         texture["source"] = shown.index(texture["source"])
-    builder.document["images"] = [
-        {"name": asset.images[row].name, "mimeType": sniff(asset.images[row].content), "bufferView": builder.view(asset.images[row].content)}
-        for row in shown
-    ]
+    builder.images = [asset.images[row] for row in shown]
+    builder.document["images"] = [{"name": image.name} for image in builder.images]

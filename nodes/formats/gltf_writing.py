@@ -28,17 +28,17 @@ def write_gltf(asset: Asset, maps: Map | None, stem: str, binary: bool) -> tuple
     were solved become TANGENT; vertices are split where corners of one vertex came to differ, and nowhere else.
     """
     builder = edited_document(asset) if asset.document is not None else new_document(asset)
-    files = _place_images(builder, asset, stem, binary)
+    files = _place_images(builder, stem, binary)
     if maps is not None:
         files += _place_maps(builder, maps, stem, binary, asset)
     return (*builder.files(stem, binary), *files)
 
 
-def _place_images(builder: Builder, asset: Asset, stem: str, binary: bool) -> list[OutFile]:
+def _place_images(builder: Builder, stem: str, binary: bool) -> list[OutFile]:
     """Images into the file, or beside it; an image that was not found stays the reference it was."""
     files: list[OutFile] = []
     taken = {f"{stem}.gltf", f"{stem}.bin"}
-    for number, (entry, image) in enumerate(zip(builder.document.get("images", ()), asset.images, strict=True)):
+    for number, (entry, image) in enumerate(zip(builder.document.get("images", ()), builder.images, strict=True)):
         if not len(image.content):
             continue
         if binary:
@@ -49,6 +49,7 @@ def _place_images(builder: Builder, asset: Asset, stem: str, binary: bool) -> li
         name = _file_name(image.name, SUFFIXES.get(image.mime, ""), number, taken)
         entry.pop("bufferView", None)
         entry["uri"] = _as_uri(name)
+        entry.pop("mimeType", None)
         files.append(OutFile(name, image.content))
     return files
 
