@@ -1,0 +1,113 @@
+"""Findings on the shape itself: values, faces, edges, normals."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+import numpy as np
+
+from tangentry.nodes.checks.view import View
+from tangentry.nodes.geometry.vectors import angle_between, dot
+from tangentry.pipeline.flow import Array, Finding
+
+
+def shape_findings(view: View, normal: float) -> Iterator[Finding]:
+    """All findings on one part's shape."""
+    yield from _non_finite(view)
+    yield from _zero_area(view)
+    yield from _edges(view)
+    yield from _normals(view, normal)
+
+
+def _non_finite(view: View) -> Iterator[Finding]:
+    part = view.part
+    streams = {"positions": part.points, "normals": part.normals} | {f"UV set {n}": uv for n, uv in enumerate(part.uvs)}
+    for name, stream in streams.items():
+        if stream is not None and not np.isfinite(stream.values).all():
+            bad = ~np.isfinite(stream.values).all(axis=1)[stream.index]
+            yield view.finding("value-not-finite", "fault", f"{name} that are not finite numbers", "export the mesh again", "corner", np.flatnonzero(bad))
+    if part.frames is not None and not np.isfinite(part.frames.tangents).all():
+        bad = ~np.isfinite(part.frames.tangents).all(axis=1)[part.frames.index]
+        yield view.finding("value-not-finite", "fault", "tangents that are not finite numbers", "solve the frames again: stored: replace", "corner", np.flatnonzero(bad))
+
+
+def _zero_area(view: View) -> Iterator[Finding]:
+    total = np.zeros(view.part.face_count)
+    np.add.at(total, view.face, view.area)
+    empty = np.flatnonzero(total <= 1e-12 * max(float(total.max(initial=0)), 1e-300))
+    if len(empty):
+        yield view.finding("face-zero-area", "warning", "faces without area", "remove them", "face", empty)
+
+
+def _edges(view: View) -> Iterator[Finding]:
+    """Edges with more than two faces, and pairs of faces wound against each other."""
+    starts, point = view.part.starts, view.point.astype(np.int64)
+    following = np.arange(1, len(point) + 1)
+    following[starts[1:][np.diff(starts) > 0] - 1] = starts[:-1][np.diff(starts) > 0]
+    a, b = point, point[following]
+    real = a != b
+    corner, a, b = np.flatnonzero(real), a[real], b[real]
+    low, high = np.minimum(a, b), np.maximum(a, b)
+    key = low * (int(point.max(initial=0)) + 1) + high
+    order = np.argsort(key, kind="stable")
+    _, first, count = np.unique(key[order], return_index=True, return_counts=True)
+    many = count > 2
+    if many.any():
+        members = order[np.repeat(first[many], count[many]) + _within(count[many])]
+        yield view.finding(
+            "edge-non-manifold", "warning", f"{int(many.sum())} edges with more than two faces, {int(count.max())} at most",
+            "separate the faces that should not share the edge", "corner", corner[members], np.repeat(count[many], count[many]), 2.0,
+        )
+    pairs = count == 2
+    one, two = order[first[pairs]], order[first[pairs] + 1]
+    against = a[one] == a[two]
+    if against.any():
+        yield view.finding(
+            "winding-inconsistent", "warning", "edges whose two faces are wound against each other", "make the winding consistent",
+            "corner", corner[one[against]],
+        )
+
+
+def _within(counts: Array) -> Array:
+    """0, 1, ... within each run of the lengths given."""
+    ends = np.cumsum(counts)
+    runs: Array = np.arange(ends[-1]) - np.repeat(ends - counts, counts)
+    return runs
+
+
+def _normals(view: View, limit: float) -> Iterator[Finding]:
+    part = view.part
+    if part.normals is None:
+        return
+    corner = view.triangles.ravel()
+    normal = part.normals.values[part.normals.index[corner]]
+    length = np.sqrt(dot(normal, normal))
+    unfit = np.abs(length - 1) > 0.01
+    if unfit.any():
+        yield view.finding(
+            "normal-non-unit", "fault", "normals that are not of length one", "normalise them on export, or rebuild them: normals",
+            "corner", np.unique(corner[unfit]), None, 0.01,
+        )
+    face_normal = np.repeat(view.triangle_normal, 3, axis=0)
+    sound = ~unfit & (np.repeat(view.area, 3) > 0)
+    angle = np.zeros(len(corner))
+    angle[sound] = angle_between(normal[sound], face_normal[sound])
+    far = angle > limit
+    if far.any():
+        share = float(np.repeat(view.area, 3)[far].sum() / max(np.repeat(view.area, 3).sum(), 1e-300))
+        where, worst = _worst(corner[far], angle[far])
+        inverted = share > 0.5
+        yield view.finding(
+            "normal-inverted" if inverted else "normal-far", "fault" if inverted else "warning",
+            f"normals up to {worst.max():.0f} degrees from their face (limit {limit:g}), {share:.0%} of the surface",
+            "turn the faces or the normals over" if inverted else "look at the shading there, or rebuild them: normals",
+            "corner", where, worst, limit,
+        )
+
+
+def _worst(where: Array, value: Array) -> tuple[Array, Array]:
+    """Each place once, with its greatest value."""
+    places, row = np.unique(where, return_inverse=True)
+    worst = np.zeros(len(places))
+    np.maximum.at(worst, row, value)
+    return places, worst
