@@ -74,9 +74,9 @@ def _shared(view: View) -> Iterator[Finding]:
     frames, found = view.part.frames, view.directions
     if frames is None or found is None:
         return
-    side = np.zeros(view.part.face_count, np.int8)
-    side[view.face[found.side > 0]] |= 1
-    side[view.face[found.side < 0]] |= 2
+    turned = np.zeros(view.part.face_count)
+    np.add.at(turned, view.face, found.side * found.uv_area)  # a polygon is seen from the side of most of its UV area
+    side = np.where(turned > 0, 1, np.where(turned < 0, 2, 0)).astype(np.int8)
     seen = np.zeros(len(frames.tangents), np.int8)
     np.bitwise_or.at(seen, frames.index, np.repeat(side, np.diff(view.part.starts)))
     both = seen == 3
@@ -95,14 +95,15 @@ def _explained(view: View, limit: float) -> Iterator[Finding]:
         if view.uv is None:
             yield view.finding("tangent-without-uv", "warning", "the file brings tangents, but no UVs they could follow", "leave the tangents out, or add the UVs", "corner", np.arange(view.part.corner_count))
         return
-    defined = ~solved.fallback[solved.index]
+    has_length = dot(frames.tangents.astype(np.float64), frames.tangents.astype(np.float64)) > 1e-12
+    defined = ~solved.fallback[solved.index] & has_length[frames.index]
     angle = angle_between(unit(np.nan_to_num(frames.tangents).astype(np.float64))[frames.index], solved.tangents[solved.index])
     off = defined & (angle > limit)
     if off.any():
         share = float(off.sum() / max(defined.sum(), 1))
         yield view.finding(
             "tangent-unexplained", "fault" if share > JUNK else "warning",
-            f"tangents more than {limit:g} degrees from what the UVs give, {share:.1%} of the corners (median of all {np.median(angle[defined]):.1f} degrees)",
+            f"tangents more than {limit:g} degrees from what the UVs give, {share:.1%} of the corners (median {np.median(angle[defined]):.1f} degrees)",
             "solve the frames again: stored: replace, unless the maps were made in these", "corner", np.flatnonzero(off), angle[off], limit,
         )
     yield from _flipped(view, defined, frames.sides[frames.index] != solved.sides[solved.index])

@@ -42,10 +42,12 @@ def _zero_area(view: View) -> Iterator[Finding]:
 def _edges(view: View) -> Iterator[Finding]:
     """Edges with more than two faces, and pairs of faces wound against each other."""
     starts, point = view.part.starts, view.point.astype(np.int64)
+    solid = np.zeros(view.part.face_count, bool)
+    solid[view.face[view.area > 0]] = True
     following = np.arange(1, len(point) + 1)
     following[starts[1:][np.diff(starts) > 0] - 1] = starts[:-1][np.diff(starts) > 0]
     a, b = point, point[following]
-    real = a != b
+    real = (a != b) & np.repeat(solid, np.diff(starts))
     corner, a, b = np.flatnonzero(real), a[real], b[real]
     low, high = np.minimum(a, b), np.maximum(a, b)
     key = low * (int(point.max(initial=0)) + 1) + high
@@ -55,7 +57,7 @@ def _edges(view: View) -> Iterator[Finding]:
     if many.any():
         members = order[np.repeat(first[many], count[many]) + _within(count[many])]
         yield view.finding(
-            "edge-non-manifold", "warning", f"{int(many.sum())} edges with more than two faces, {int(count.max())} at most",
+            "edge-non-manifold", "warning", f"edges with more than two faces: {int(many.sum())}, {int(count.max())} faces at most",
             "separate the faces that should not share the edge", "corner", corner[members], np.repeat(count[many], count[many]), 2.0,
         )
     pairs = count == 2

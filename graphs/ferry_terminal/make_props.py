@@ -1,0 +1,454 @@
+"""Makes the props of the ferry terminal, and the flawed ones that are sent back. Run it again: it writes the same bytes.
+
+    python graphs/ferry_terminal/make_props.py
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field, replace
+from pathlib import Path
+
+import numpy as np
+
+from tangentry.nodes.formats.gltf import write_gltf
+from tangentry.nodes.formats.images import write_png
+from tangentry.nodes.formats.obj import write_obj
+from tangentry.nodes.formats.ply import write_ply
+from tangentry.nodes.frames import frames
+from tangentry.nodes.model import Asset, Frames, Image, MapUse, Material, Part, Stream
+from tangentry.nodes.normals import normals
+
+HERE = Path(__file__).parent
+GUTTER = 0.01  # between charts, in UV units
+
+Corner = tuple[int, int]  # a point, and a UV
+
+
+@dataclass
+class Mesh:
+    """A prop under construction: metres, y up, faces counter-clockwise from outside."""
+
+    name: str
+    points: list[tuple[float, float, float]] = field(default_factory=list)
+    uvs: list[tuple[float, float]] = field(default_factory=list)
+    faces: list[list[Corner]] = field(default_factory=list)
+    smoothing: list[int] = field(default_factory=list)
+    material: list[str] = field(default_factory=list)
+
+    def face(self, corners: list[Corner], material: str, smoothing: int = 0) -> None:
+        """Add a polygon; smoothing group 0 is faceted."""
+        self.faces.append(corners)
+        self.smoothing.append(smoothing)
+        self.material.append(material)
+
+    def grid(self, points: np.ndarray, uvs: np.ndarray, material: str, smoothing: int = 0, closed: bool = False, collapsed: bool = False) -> None:
+        """Add a grid of quads: points (columns, rows, 3) and uvs (columns, rows, 2).
+
+        `closed` joins the last column of points to the first; `collapsed` keeps quads that have an edge of no length.
+        """
+        columns, rows = points.shape[:2]
+        p0, t0 = len(self.points), len(self.uvs)
+        kept = points[:-1] if closed else points
+        self.points += [tuple(row) for row in kept.reshape(-1, 3)]
+        self.uvs += [tuple(row) for row in uvs.reshape(-1, 2)]
+        for i in range(columns - 1):
+            for j in range(rows - 1):
+                around = [(i, j), (i + 1, j), (i + 1, j + 1), (i, j + 1)]
+                if not collapsed:  # a quad with an edge of no length is a triangle
+                    ends = [(points[a, b] == points[c, d]).all() for (a, b), (c, d) in zip(around, around[1:] + around[:1], strict=True)]
+                    around = [corner for corner, gone in zip(around, ends, strict=True) if not gone]
+                self.face([(p0 + (a % len(kept)) * rows + b, t0 + a * rows + b) for a, b in around], material, smoothing)
+
+    def lathe(self, profile: list[tuple[float, float]], sides: int, chart: tuple[float, float, float, float], material: str, smoothing: int = 1, mirrored: bool = False, collapsed: bool = False) -> None:
+        """Add a surface of revolution around y from (radius, height) points, bottom to top; `mirrored` lays both halves on one chart."""
+        turn = np.linspace(0, 2 * np.pi, sides + 1)
+        radius, height = np.array(profile).T
+        along = np.concatenate([[0], np.cumsum(np.hypot(np.diff(radius), np.diff(height)))])
+        points = np.stack(np.broadcast_arrays(radius * np.cos(turn)[:, None], height[None, :], -radius * np.sin(turn)[:, None]), axis=-1)
+        u = np.linspace(0, 1, sides + 1)
+        u = 1 - np.abs(2 * u - 1) if mirrored else u
+        u0, v0, u1, v1 = chart
+        uvs = np.stack(np.broadcast_arrays((u0 + (u1 - u0) * u)[:, None], (v0 + (v1 - v0) * along / along[-1])[None, :]), axis=-1)
+        self.grid(points, uvs, material, smoothing, True, collapsed)
+
+    def cap(self, radius: float, height: float, sides: int, chart: tuple[float, float, float, float], material: str, up: bool = True) -> None:
+        """Add a round lid, one polygon of so many sides."""
+        turn = np.linspace(0, 2 * np.pi, sides, endpoint=False) * (1 if up else -1)
+        u0, v0, u1, v1 = chart
+        p0, t0 = len(self.points), len(self.uvs)
+        self.points += [(radius * np.cos(a), height, -radius * np.sin(a)) for a in turn]
+        self.uvs += [((u0 + u1) / 2 + (u1 - u0) / 2 * np.cos(a), (v0 + v1) / 2 + (v1 - v0) / 2 * np.sin(a) * (1 if up else -1)) for a in turn]
+        self.face([(p0 + k, t0 + k) for k in range(sides)], material)
+
+    def box(self, low: tuple[float, float, float], high: tuple[float, float, float], cell: tuple[float, float, float, float], material: str, stacked: bool = False) -> None:
+        """Add a box whose six charts lie in a cell, 3 x 2; `stacked` lays opposite sides on one chart, one of them mirrored."""
+        x = [(a, b, c) for a in (low[0], high[0]) for b in (low[1], high[1]) for c in (low[2], high[2])]
+        p0 = len(self.points)
+        self.points += x
+        sides = [[1, 5, 7, 3], [4, 0, 2, 6], [5, 4, 6, 7], [0, 1, 3, 2], [3, 7, 6, 2], [0, 4, 5, 1]]
+        size = np.subtract(high, low)
+        spans = [(size[0], size[1]), (size[0], size[1]), (size[2], size[1]), (size[2], size[1]), (size[0], size[2]), (size[0], size[2])]
+        u0, v0, u1, v1 = cell
+        columns, rows = (3, 1) if stacked else (3, 2)
+        wide, high_ = (u1 - u0) / columns, (v1 - v0) / rows
+        scale = min((wide - 2 * GUTTER) / max(w for w, _ in spans), (high_ - 2 * GUTTER) / max(h for _, h in spans))
+        for number, (corners, (w, h)) in enumerate(zip(sides, spans, strict=True)):
+            place = number // 2 if stacked else number
+            left, bottom = u0 + wide * (place % columns) + GUTTER, v0 + high_ * (place // columns) + GUTTER
+            chart = [(0, 0), (w, 0), (w, h), (0, h)]
+            if stacked and number % 2:
+                chart = [(w - a, b) for a, b in chart]
+            t0 = len(self.uvs)
+            self.uvs += [(left + a * scale, bottom + b * scale) for a, b in chart]
+            self.face([(p0 + c, t0 + k) for k, c in enumerate(corners)], material)
+
+    def asset(self) -> Asset:
+        """The prop with its normals, one part for each material."""
+        names = list(dict.fromkeys(self.material))
+        points, uvs = np.array(self.points, np.float32), np.array(self.uvs, np.float32)
+        parts = []
+        for row, name in enumerate(names):
+            chosen = [k for k, one in enumerate(self.material) if one == name]
+            corners = np.array([corner for k in chosen for corner in self.faces[k]], np.int32)
+            starts = np.cumsum([0, *(len(self.faces[k]) for k in chosen)]).astype(np.int32)
+            smoothing = np.array([self.smoothing[k] for k in chosen], np.int32)
+            parts.append(Part(self.name, row, starts, _used(points, corners[:, 0]), None, (_used(uvs, corners[:, 1]),), smoothing=smoothing))
+        asset = Asset(self.name, tuple(parts), tuple(Material(name) for name in names))
+        return normals(asset, method="smoothing")
+
+
+def _used(values: np.ndarray, index: np.ndarray) -> Stream:
+    rows, at = np.unique(index, return_inverse=True)
+    return Stream(values[rows], at.astype(np.int32))
+
+
+# The props
+
+
+def bollard() -> Asset:
+    """Cast iron, with a hard rim and a lid of one polygon with sixteen corners."""
+    mesh = Mesh("bollard")
+    mesh.lathe([(0.22, 0.0), (0.22, 0.06), (0.15, 0.10)], 16, (0.01, 0.01, 0.99, 0.15), "cast iron", 1)
+    mesh.lathe([(0.15, 0.10), (0.13, 0.3), (0.13, 0.42), (0.16, 0.5)], 16, (0.01, 0.18, 0.99, 0.6), "cast iron", 2)
+    mesh.lathe([(0.16, 0.5), (0.2, 0.53), (0.2, 0.57), (0.17, 0.6)], 16, (0.01, 0.63, 0.69, 0.74), "cast iron", 3)
+    mesh.cap(0.17, 0.6, 16, (0.71, 0.63, 0.99, 0.91), "cast iron")
+    return mesh.asset()
+
+
+def life_ring(columns: int = 32, rows: int = 12) -> Asset:
+    """A torus in two materials, each band unwrapped once and reused mirrored."""
+    mesh = Mesh("life_ring")
+    a, b = np.linspace(0, 2 * np.pi, columns + 1), np.linspace(0, 2 * np.pi, rows + 1)
+    ring = np.stack(np.broadcast_arrays((0.3 + 0.07 * np.cos(b)) * np.cos(a)[:, None], 0.07 * np.sin(b), -(0.3 + 0.07 * np.cos(b)) * np.sin(a)[:, None]), axis=-1)
+    step = columns // 8
+    for band in range(8):
+        part = ring[band * step : (band + 1) * step + 1]
+        u = np.linspace(0, 1, step + 1) if band % 4 < 2 else np.linspace(1, 0, step + 1)
+        low = 0.01 if band % 2 else 0.51
+        uvs = np.stack(np.broadcast_arrays(0.01 + 0.98 * u[:, None], (low + 0.48 * b / (2 * np.pi))[None, :]), axis=-1)
+        mesh.grid(part, uvs, "red canvas" if band % 2 else "white canvas", 1)
+    return welded(mesh.asset())
+
+
+def welded(asset: Asset) -> Asset:
+    """Points joined and normals built over what that joined."""
+    from tangentry.nodes.weld import weld
+
+    return normals(weld(asset, within=1e-6), method="angle")
+
+
+def buoy() -> Asset:
+    """A sphere, its poles degenerate as spheres' are."""
+    mesh = Mesh("buoy")
+    turn = np.linspace(-np.pi / 2, np.pi / 2, 17)
+    profile = [(0.35 * max(np.cos(t), 0.0) if 0 < k < 16 else 0.0, 0.35 + 0.35 * np.sin(t)) for k, t in enumerate(turn)]
+    mesh.lathe(profile, 32, (0.01, 0.01, 0.99, 0.99), "painted steel", collapsed=True)
+    return mesh.asset()
+
+
+def crate() -> Asset:
+    """Planks: opposite sides share a chart, one of them mirrored; a height map of wood grain goes with it."""
+    mesh = Mesh("crate")
+    mesh.box((-0.4, 0.0, -0.4), (0.4, 0.6, 0.4), (0.0, 0.0, 1.0, 1.0), "planks", stacked=True)
+    return mesh.asset()
+
+
+def quay_slab() -> Asset:
+    """Two metres of quay, its cobbles in a height map of 16 bits."""
+    mesh = Mesh("quay_slab")
+    mesh.box((-1.0, -0.15, -1.0), (1.0, 0.0, 1.0), (0.0, 0.0, 1.0, 1.0), "cobbles")
+    return mesh.asset()
+
+
+def stair() -> Asset:
+    """Five steps, hard edged: treads and risers in materials of their own, the flanks one polygon each."""
+    mesh = Mesh("stair")
+    for step in range(5):
+        y, z = 0.18 * step, -0.3 * step
+        v = 0.02 + 0.19 * step
+        for name, corners in (
+            ("risers", [(-0.6, y, z), (0.6, y, z), (0.6, y + 0.18, z), (-0.6, y + 0.18, z)]),
+            ("treads", [(-0.6, y + 0.18, z), (0.6, y + 0.18, z), (0.6, y + 0.18, z - 0.3), (-0.6, y + 0.18, z - 0.3)]),
+        ):
+            p0, t0, tall = len(mesh.points), len(mesh.uvs), 0.11 if name == "risers" else 0.18
+            mesh.points += corners
+            mesh.uvs += [(0.02, v), (0.76, v), (0.76, v + tall), (0.02, v + tall)]
+            mesh.face([(p0 + k, t0 + k) for k in range(4)], name)
+    outline = [(0.0, 0.0)]
+    for step in range(5):
+        outline += [(-0.3 * step, 0.18 * (step + 1)), (-0.3 * (step + 1), 0.18 * (step + 1))]
+    outline.append((-1.5, 0.0))
+    for x, order in ((0.6, 1), (-0.6, -1)):
+        p0, t0 = len(mesh.points), len(mesh.uvs)
+        mesh.points += [(x, y, z) for z, y in outline]
+        mesh.uvs += [((0.02 if x > 0 else 0.51) + (1 + z / 1.5 if x < 0 else -z / 1.5) * 0.47, 0.02 + y / 1.5 * 0.47) for z, y in outline]
+        ring = [(p0 + k, t0 + k) for k in range(len(outline))]
+        mesh.face(ring[::-1] if order < 0 else ring, "flanks")
+    return mesh.asset()
+
+
+def lantern() -> Asset:
+    """A post, a glass and a hood; a second UV set for baked light."""
+    mesh = Mesh("lantern")
+    mesh.lathe([(0.09, 0.0), (0.09, 0.05), (0.035, 0.12), (0.03, 2.4)], 12, (0.01, 0.01, 0.49, 0.99), "green paint")
+    mesh.lathe([(0.06, 2.4), (0.11, 2.45), (0.11, 2.7), (0.07, 2.75)], 12, (0.51, 0.01, 0.99, 0.45), "glass")
+    mesh.lathe([(0.15, 2.75), (0.09, 2.85), (0.02, 2.92), (0.0, 2.95)], 12, (0.51, 0.5, 0.99, 0.99), "green paint", 2)
+    asset = mesh.asset()
+    return replace(asset, parts=tuple(replace(part, uvs=(*part.uvs, Stream(part.uvs[0].values * np.float32(0.5), part.uvs[0].index))) for part in asset.parts))
+
+
+def bench() -> Asset:
+    """Three slats on two legs, each box in a cell of its own."""
+    mesh = Mesh("bench")
+    for k in range(3):
+        mesh.box((-0.7, 0.42, -0.2 + 0.14 * k), (0.7, 0.46, -0.08 + 0.14 * k), (0.0, k * 0.2, 1.0, k * 0.2 + 0.2), "oak")
+    for k, x in enumerate((-0.55, 0.47)):
+        mesh.box((x, 0.0, -0.18), (x + 0.08, 0.42, 0.18), (k * 0.5, 0.6, k * 0.5 + 0.5, 1.0), "cast iron")
+    return mesh.asset()
+
+
+def oar() -> Asset:
+    """A shaft and a blade, both halves of each on one chart, mirrored."""
+    mesh = Mesh("oar")
+    mesh.lathe([(0.018, 0.0), (0.022, 0.2), (0.025, 1.6), (0.02, 1.9)], 16, (0.01, 0.01, 0.24, 0.99), "ash wood", 1, mirrored=True)
+    blade = [(0.02, 1.9), (0.06, 2.0), (0.08, 2.2), (0.07, 2.45), (0.03, 2.5)]
+    mesh.lathe(blade, 16, (0.26, 0.01, 0.49, 0.6), "ash wood", 2, mirrored=True)
+    asset = mesh.asset()
+    points = asset.parts[0].points.values.copy()
+    points[:, 2] *= np.where(points[:, 1] > 1.9, np.maximum(0.25, 1 - (points[:, 1] - 1.9) * 7), 1).astype(np.float32)
+    part = replace(asset.parts[0], points=Stream(points, asset.parts[0].points.index))
+    return normals(replace(asset, parts=(part,)), method="crease", crease=50)
+
+
+def ticket_kiosk() -> Asset:
+    """A house for one, its gables polygons of five corners, in three materials."""
+    mesh = Mesh("ticket_kiosk")
+    w, h, top, d = 0.9, 2.1, 2.7, 0.8
+    t = 0.49
+    for z, flip in ((d, 1), (-d, -1)):
+        p0, t0 = len(mesh.points), len(mesh.uvs)
+        outline = [(-w, 0.0), (w, 0.0), (w, h), (0.0, top), (-w, h)]
+        mesh.points += [(x * flip, y, z) for x, y in outline]
+        left = 0.01 if flip > 0 else 0.51
+        mesh.uvs += [(left + (x + w) / top * t, 0.01 + y / top * t) for x, y in outline]
+        mesh.face([(p0 + k, t0 + k) for k in range(5)], "boards")
+    for x, flip in ((w, 1), (-w, -1)):
+        p0, t0 = len(mesh.points), len(mesh.uvs)
+        mesh.points += [(x, 0.0, d * flip), (x, 0.0, -d * flip), (x, h, -d * flip), (x, h, d * flip)]
+        left = 0.01 if flip > 0 else 0.51
+        mesh.uvs += [(left + a / top * t, 0.51 + b / top * t) for a, b in ((0, 0), (2 * d, 0), (2 * d, h), (0, h))]
+        mesh.face([(p0 + k, t0 + k) for k in range(4)], "plaster")
+    slope = float(np.hypot(w, top - h))
+    for flip in (1, -1):
+        p0, t0 = len(mesh.points), len(mesh.uvs)
+        mesh.points += [(w * flip, h, d * flip), (w * flip, h, -d * flip), (0.0, top, -d * flip), (0.0, top, d * flip)]
+        left = 0.01 if flip > 0 else 0.51
+        mesh.uvs += [(left + a / top * t, 0.01 + b / top * t) for a, b in ((0, 0), (2 * d, 0), (2 * d, slope), (0, slope))]
+        mesh.face([(p0 + k, t0 + k) for k in range(4)], "shingles")
+    return mesh.asset()
+
+
+def cleat(fine: int = 1) -> Asset:
+    """A mooring cleat: a foot and a horn. `fine` multiplies its resolution, and its detailed twin has a dented foot."""
+    mesh = Mesh("cleat")
+    foot = [(0.07, 0.0), (0.068, 0.02), (0.05, 0.04), (0.03, 0.07)]
+    horn = [(0.0, -0.16), (0.012, -0.155), (0.02, -0.1), (0.026, 0.0), (0.02, 0.1), (0.012, 0.155), (0.0, 0.16)]
+    foot, horn = (_refined(profile, fine) for profile in (foot, horn))
+    mesh.lathe(foot, 12 * fine, (0.01, 0.01, 0.99, 0.49), "galvanised steel", 1)
+    first = len(mesh.points)
+    mesh.lathe(horn, 12 * fine, (0.01, 0.51, 0.99, 0.99), "galvanised steel", 2)
+    mesh.points[first:] = [(y, 0.085 - x, z) for x, y, z in mesh.points[first:]]
+    if fine > 1:
+        mesh.points[:first] = [(x * _dent(x, y, z), y, z * _dent(x, y, z)) for x, y, z in mesh.points[:first]]
+    return mesh.asset()
+
+
+def _refined(profile: list[tuple[float, float]], fine: int) -> list[tuple[float, float]]:
+    at, wanted = np.arange(len(profile)), np.linspace(0, len(profile) - 1, (len(profile) - 1) * fine + 1)
+    return [(float(np.interp(k, at, [r for r, _ in profile])), float(np.interp(k, at, [h for _, h in profile]))) for k in wanted]
+
+
+def _dent(x: float, y: float, z: float) -> float:
+    return 1 - 0.02 * float(np.exp(-((y - 0.02) ** 2) / 2e-4)) * (1 + float(np.cos(9 * np.arctan2(z, x)))) / 2
+
+
+def mooring_post() -> Asset:
+    """A post of hammered timber, with a cap."""
+    mesh = Mesh("mooring_post")
+    mesh.lathe([(0.15, 0.0), (0.16, 0.8), (0.15, 1.5)], 20, (0.01, 0.01, 0.99, 0.69), "timber", 1)
+    mesh.lathe([(0.17, 1.5), (0.16, 1.56), (0.08, 1.62), (0.0, 1.64)], 20, (0.01, 0.71, 0.99, 0.99), "timber", 2)
+    return mesh.asset()
+
+
+def gangway() -> Asset:
+    """A ramp with two rails, in two materials; it brings the tangents it was made with."""
+    mesh = Mesh("gangway")
+    mesh.box((-0.6, 0.0, -2.0), (0.6, 0.08, 2.0), (0.0, 0.5, 1.0, 1.0), "planks")
+    for k, x in enumerate((-0.6, 0.55)):
+        mesh.box((x, 0.9, -2.0), (x + 0.05, 0.95, 2.0), (k * 0.5, 0.0, k * 0.5 + 0.5, 0.25), "rail")
+        for n, z in enumerate((-1.9, -0.02, 1.86)):
+            mesh.box((x, 0.08, z), (x + 0.05, 0.9, z + 0.05), (k * 0.5 + n * 0.16, 0.25, k * 0.5 + n * 0.16 + 0.16, 0.5), "rail")
+    asset = frames(mesh.asset())
+    return replace(asset, parts=tuple(replace(part, frames=replace(part.frames, method="stored")) for part in asset.parts if part.frames))
+
+
+# Height maps
+
+
+def cobbles(size: int = 256, across: int = 8) -> np.ndarray:
+    """(size, size, 1) uint16: rounded stones in staggered rows; it tiles."""
+    rng = np.random.default_rng(7)
+    y, x = np.meshgrid(np.arange(size), np.arange(size), indexing="ij")
+    row = (y * across // size) % across
+    column = ((x * across / size + 0.5 * (row % 2)) % across).astype(int)
+    dx = (x * across / size + 0.5 * (row % 2)) % 1 - 0.5
+    dy = (y * across / size) % 1 - 0.5
+    lift = rng.uniform(0.75, 1.0, (across, across))[row, column]
+    dome = np.clip(1 - (np.abs(dx) / 0.47) ** 4, 0, 1) * np.clip(1 - (np.abs(dy) / 0.47) ** 4, 0, 1)
+    return np.rint(np.sqrt(dome) * lift * 65535).astype(np.uint16)[..., None]
+
+
+def wood_grain(size: int = 256) -> np.ndarray:
+    """(size, size, 1) uint8: long grain with a few waves; it tiles."""
+    y, x = np.meshgrid(np.arange(size) / size, np.arange(size) / size, indexing="ij")
+    bend = 0.02 * np.sin(2 * np.pi * x) + 0.01 * np.sin(6 * np.pi * x + 1)
+    grain = 0.5 + 0.25 * np.sin(2 * np.pi * 16 * (y + bend)) + 0.15 * np.sin(2 * np.pi * 37 * (y + bend) + 2)
+    gap = np.minimum(1, np.abs(((y * 4) % 1) - 0.5) * 2 * 12)
+    return np.rint(np.clip(grain, 0, 1) * np.clip(gap, 0, 1) * 255).astype(np.uint8)[..., None]
+
+
+# The flawed ones
+
+
+def with_map(asset: Asset) -> Asset:
+    """The asset with a flat normal map in each material, so that its file says that frames are needed."""
+    flat = np.full((4, 4, 3), (128, 128, 255), np.uint8)
+    image = Image("flat_normal.png", "image/png", write_png(flat))
+    return replace(asset, materials=tuple(replace(one, maps=(MapUse("normal", 0),)) for one in asset.materials), images=(image,))
+
+
+def stored(asset: Asset, change: object = None) -> Asset:
+    """The asset with frames as if its file had brought them, each set of frames changed by a function."""
+    solved = frames(with_map(asset), where="all")
+    alter = change if callable(change) else (lambda part, made: made)
+    return replace(solved, parts=tuple(replace(part, frames=replace(alter(part, part.frames), method="stored")) for part in solved.parts))
+
+
+def shared_across_the_mirror(part: Part, made: Frames) -> Frames:
+    """One frame for every point, normal and UV, whichever side its faces are seen from."""
+    from tangentry.nodes.geometry.frames import identity
+
+    same = identity(part, part.normals, part.uvs[0])
+    first = np.zeros(int(same.max()) + 1, np.int32)
+    first[same[::-1]] = made.index[::-1]
+    return Frames(made.tangents[first], None, made.sides[first], made.fallback[first], same, made.uv, made.method)
+
+
+def zeroed(part: Part, made: Frames) -> Frames:
+    """Every seventh tangent of no length."""
+    tangents = made.tangents.copy()
+    tangents[::7] = 0
+    return replace(made, tangents=tangents)
+
+
+def sheared(asset: Asset, degrees: float) -> Asset:
+    """The asset with its UVs sheared along u."""
+    shear = np.array([[1, 0], [np.tan(np.radians(degrees)), 1]], np.float32)
+    return replace(asset, parts=tuple(replace(part, uvs=(Stream((part.uvs[0].values * np.float32(0.3)) @ shear, part.uvs[0].index),)) for part in asset.parts))
+
+
+def flattened(asset: Asset) -> Asset:
+    """The asset with all UVs of its second material in one place."""
+    part = asset.parts[1]
+    lost = replace(part, uvs=(Stream(np.full_like(part.uvs[0].values, 0.5), part.uvs[0].index),))
+    return replace(asset, parts=(asset.parts[0], lost, *asset.parts[2:]))
+
+
+def inside_out(asset: Asset) -> Asset:
+    """The asset with its normals turned inward."""
+    return replace(asset, parts=tuple(replace(part, normals=Stream(-part.normals.values, part.normals.index)) for part in asset.parts if part.normals))
+
+
+def with_a_fin() -> Asset:
+    """A crate with a third face on one of its edges."""
+    mesh = Mesh("crate_with_a_fin")
+    mesh.box((-0.4, 0.0, -0.4), (0.4, 0.6, 0.4), (0.0, 0.0, 1.0, 0.6), "planks")
+    mesh.points += [(0.7, 0.0, 0.7), (0.7, 0.6, 0.7)]
+    t0 = len(mesh.uvs)
+    mesh.uvs += [(0.1, 0.7), (0.3, 0.7), (0.3, 0.9), (0.1, 0.9)]
+    mesh.face([(5, t0), (8, t0 + 1), (9, t0 + 2), (7, t0 + 3)], "planks")
+    return mesh.asset()
+
+
+def without_uvs(asset: Asset) -> Asset:
+    """The asset before it was unwrapped."""
+    return replace(asset, parts=tuple(replace(part, uvs=()) for part in asset.parts))
+
+
+# Writing
+
+
+def write(folder: str, asset: Asset, suffix: str, stem: str = "") -> None:
+    """One prop in one format."""
+    stem = stem or asset.name
+    if suffix == ".obj":
+        for file in write_obj(asset, stem):
+            save(f"{folder}/{file.name}", file.content)
+    elif suffix == ".ply":
+        save(f"{folder}/{stem}.ply", write_ply(asset))
+    else:
+        save(f"{folder}/{stem}.glb", write_gltf(asset, None, stem, True)[0].content)
+
+
+def save(path: str, content: np.ndarray) -> None:
+    """Bytes into a file below this folder."""
+    (HERE / path).parent.mkdir(exist_ok=True)
+    (HERE / path).write_bytes(content.tobytes())
+
+
+def main() -> None:
+    """Make everything."""
+    for make, suffix in (
+        (bollard, ".obj"), (life_ring, ".glb"), (buoy, ".ply"), (crate, ".obj"), (quay_slab, ".obj"), (stair, ".obj"), (lantern, ".glb"),
+        (bench, ".obj"), (oar, ".glb"), (ticket_kiosk, ".obj"), (cleat, ".obj"), (mooring_post, ".ply"), (gangway, ".glb"),
+    ):
+        write("props", make(), suffix)
+    save("props/quay_slab_height.png", write_png(cobbles()))
+    save("props/crate_height.png", write_png(wood_grain()))
+    write("detail", cleat(6), ".obj", "cleat_detailed")
+    write("sent_back", sheared(bench(), 60), ".obj", "bench_sheared")
+    write("sent_back", flattened(ticket_kiosk()), ".obj", "kiosk_half_unwrapped")
+    write("sent_back", stored(oar(), shared_across_the_mirror), ".glb", "oar_sharing_its_seam")
+    write("sent_back", stored(life_ring(), zeroed), ".glb", "life_ring_without_tangents")
+    write("sent_back", inside_out(buoy()), ".ply", "buoy_inside_out")
+    write("sent_back", with_a_fin(), ".obj", "crate_with_a_fin")
+    write("sent_back", without_uvs(mooring_post()), ".obj", "post_without_uvs")
+    write("sent_back", stair(), ".obj", "stair_cut_off")
+    cut_off = HERE / "sent_back" / "stair_cut_off.obj"
+    lines = cut_off.read_text().splitlines(keepends=True)
+    last = max(k for k, line in enumerate(lines) if line.startswith("v "))
+    cut_off.write_text("".join(lines[: last - 3] + lines[last + 1 :]))
+
+
+if __name__ == "__main__":
+    main()
