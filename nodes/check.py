@@ -16,7 +16,7 @@ IDS = (
     "uv-missing", "uv-degenerate", "uv-mirrored", "uv-skewed", "uv-stretched", "uv-out-of-tile",
     "value-not-finite", "face-zero-area", "edge-non-manifold", "winding-inconsistent", "normal-non-unit", "normal-far", "normal-inverted",
     "frame-missing", "frame-shared", "frame-fallback", "tangent-zero", "tangent-non-unit", "tangent-leaning", "tangent-unexplained",
-    "tangent-without-uv", "side-invalid", "side-mixed", "side-flipped", "side-wrong", "convention-mixed",
+    "tangent-without-uv", "side-invalid", "side-mixed", "side-flipped", "side-wrong", "map-green-down", "convention-mixed",
 )
 
 
@@ -49,11 +49,13 @@ def check(
     from tangentry.nodes.checks.shape import shape_findings
     from tangentry.nodes.checks.uvs import uv_findings
     from tangentry.nodes.checks.view import View
+    from tangentry.nodes.maps.conventions import Green
 
     _known(asset.name, "severity", severity)
     _known(asset.name, "accept", accept)
     found: list[Finding] = []
-    for view in (View(asset, part) for part in asset.parts):
+    greens: dict[int, Green] = {}
+    for view in (View(asset, part, greens) for part in asset.parts):
         found += [*uv_findings(view, skew, degenerate, stretch), *shape_findings(view, normal), *frame_findings(view, lean, explained)]
     found += _mixed(asset, found)
     judged = (_judged(one, severity, accept) for one in found if severity.get(one.id) != "off")

@@ -15,7 +15,7 @@ def texture(
     *,
     file: InputFile | str | None = None,
     holds: Literal["normal", "height", "colour", "data"] = "normal",
-    green: Literal["up", "down", "undecided"] = "up",
+    green: Literal["up", "down", "measure"] = "up",
     encoding: Literal["unorm", "snorm", "xy", "octahedral"] = "unorm",
     if_missing: Literal["fail", "skip"] = "fail",
 ) -> Map | None:
@@ -23,7 +23,7 @@ def texture(
 
     file        the image; or give an asset instead
     holds       what its texels are; from an asset, which of its materials' maps are wanted
-    green       of normals: does green grow up the image or down
+    green       of normals: does green grow up the image or down; measure: as the texels tell, "undecided" where they don't
     encoding    of normals: how directions are stored
     if_missing  skip: leave the map out where there is none
 
@@ -37,8 +37,18 @@ def texture(
         return None
     if not found and asset is not None:
         raise InputError(asset.name, "", f"no material names a {holds} map", "name one, or set if_missing: skip")
-    convention = {"space": "tangent", "green": green, "encoding": encoding} if holds == "normal" else {}
-    return Map(tuple(Sheet(material, texels, holds, name=name, **convention) for material, texels, name in found))
+    if holds != "normal":
+        return Map(tuple(Sheet(material, texels, holds, name=name) for material, texels, name in found))
+    return Map(tuple(_normals(material, texels, name, green, encoding) for material, texels, name in found))
+
+
+def _normals(material: str, texels: Array, name: str, green: str, encoding: str) -> Sheet:
+    from tangentry.nodes.maps.conventions import measure_green
+
+    if texels.shape[2] < (2 if encoding in ("xy", "octahedral") else 3):
+        raise InputError(name, "", f"{texels.shape[2]} channels can't hold normals", "is it a height map? then holds: height")
+    verdict = measure_green(texels).verdict if green == "measure" else green
+    return Sheet(material, texels, "normal", "tangent", verdict, encoding, name)
 
 
 def _of_file(file: InputFile, if_missing: str) -> list[tuple[str, Array, str]]:

@@ -106,17 +106,32 @@ def _explained(view: View, limit: float) -> Iterator[Finding]:
             f"tangents more than {limit:g} degrees from what the UVs give, {share:.1%} of the corners (median {np.median(angle[defined]):.1f} degrees)",
             "solve the frames again: stored: replace, unless the maps were made in these", "corner", np.flatnonzero(off), angle[off], limit,
         )
-    yield from _flipped(view, defined, frames.sides[frames.index] != solved.sides[solved.index])
+    opposite = frames.sides[frames.index] != solved.sides[solved.index]
+    yield from _flipped(view, defined, opposite)
+    yield from _green(view, defined, opposite)
 
 
 def _flipped(view: View, defined: Array, opposite: Array) -> Iterator[Finding]:
     wrong = defined & opposite
     if not wrong.any():
         return
-    if wrong.sum() > FLIPPED * defined.sum():
-        yield view.finding(
-            "side-flipped", "warning", f"sides opposite to the rule on {wrong.sum() / defined.sum():.1%} of the corners: a map whose green points down would make that right",
-            "keep sides and map together; before solving again, turn green over", "corner", np.flatnonzero(wrong),
-        )
-    else:
+    if wrong.sum() <= FLIPPED * defined.sum():
         yield view.finding("side-wrong", "warning", "sides opposite to what the UVs give", "split mirrored charts and solve again", "corner", np.flatnonzero(wrong))
+        return
+    green = view.green.verdict if view.green is not None else "undecided"
+    severity, told, advice = {
+        "down": ("note", "the map's green points down, which makes that right", "keep sides and map together; before solving again, turn green over"),
+        "up": ("fault", "the map's green points up, so light comes out inverted", "solve the frames again: stored: replace"),
+        "undecided": ("warning", "a map whose green points down would make that right", "look which way green points; keep sides and map together"),
+    }[green]
+    yield view.finding("side-flipped", severity, f"sides opposite to the rule on {wrong.sum() / defined.sum():.1%} of the corners; {told}", advice, "corner", np.flatnonzero(wrong))
+
+
+def _green(view: View, defined: Array, opposite: Array) -> Iterator[Finding]:
+    """Sides that follow the rule beside a map whose green points down."""
+    if view.green is None or view.green.verdict != "down" or (defined & opposite).sum() > FLIPPED * defined.sum():
+        return
+    yield view.finding(
+        "map-green-down", "warning", f"sides follow the rule, but the map's green seems to point down (correlation {view.green.correlation:.2f})",
+        "turn green over: texture, encode with green: up", "", np.zeros(0, np.int32), np.array([view.green.correlation]),
+    )

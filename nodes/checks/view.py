@@ -6,10 +6,13 @@ from functools import cached_property
 
 import numpy as np
 
+from tangentry.nodes.formats.image_headers import is_image
+from tangentry.nodes.formats.images import read_image
 from tangentry.nodes.geometry.corners import distinct_rows, distinct_values
 from tangentry.nodes.geometry.directions import Directions, triangle_directions
 from tangentry.nodes.geometry.triangles import triangulate
 from tangentry.nodes.geometry.vectors import unit
+from tangentry.nodes.maps.conventions import Green, measure_green
 from tangentry.nodes.model import Asset, Frames, Part, Stream
 from tangentry.pipeline.flow import Array, Finding
 
@@ -17,8 +20,22 @@ from tangentry.pipeline.flow import Array, Finding
 class View:
     """A part of an asset, and what follows from it."""
 
-    def __init__(self, asset: Asset, part: Part) -> None:
+    def __init__(self, asset: Asset, part: Part, greens: dict[int, Green]) -> None:
         self.asset, self.part = asset, part
+        self._greens = greens  # by image row: a map is measured once, however many parts it serves
+
+    @cached_property
+    def green(self) -> Green | None:
+        """Which way green points in the part's normal map, as its texels tell; None where there is none to be read."""
+        material = self.asset.materials[self.part.material] if self.part.material >= 0 else None
+        use = next((one for one in material.maps if one.role == "normal"), None) if material else None
+        if use is None or not is_image(self.asset.images[use.image].content):
+            return None
+        if use.image not in self._greens:
+            image = self.asset.images[use.image]
+            texels = read_image(image.content, image.name)
+            self._greens[use.image] = measure_green(texels) if texels.shape[2] >= 3 else Green("undecided", 0.0)
+        return self._greens[use.image]
 
     @cached_property
     def triangles(self) -> Array:
@@ -102,7 +119,7 @@ class View:
         material = self.asset.materials[self.part.material].name if self.part.material >= 0 else ""
         figures = np.zeros(0, np.float32) if measured is None else np.asarray(measured, np.float32)
         return Finding(
-            id, severity, len(elements), what, advice, self.part.name, material, element,
+            id, severity, len(elements) if element else 1, what, advice, self.part.name, material, element,
             np.asarray(elements, np.int32), figures, limit,
         )
 
