@@ -7,16 +7,38 @@ from dataclasses import replace
 from typing import Literal
 
 import numpy as np
-
 from tangentry.nodes.model import Asset
 from tangentry.pipeline.errors import InputError, nearest
 from tangentry.pipeline.flow import Array, Finding, Findings
 
 IDS = (
-    "uv-missing", "uv-degenerate", "uv-mirrored", "uv-skewed", "uv-stretched", "uv-out-of-tile",
-    "value-not-finite", "face-zero-area", "edge-non-manifold", "winding-inconsistent", "normal-non-unit", "normal-far", "normal-inverted",
-    "frame-missing", "frame-shared", "frame-fallback", "tangent-zero", "tangent-non-unit", "tangent-leaning", "tangent-unexplained",
-    "tangent-without-uv", "side-invalid", "side-mixed", "side-flipped", "side-wrong", "map-green-down", "convention-mixed",
+    "uv-missing",
+    "uv-degenerate",
+    "uv-mirrored",
+    "uv-skewed",
+    "uv-stretched",
+    "uv-out-of-tile",
+    "value-not-finite",
+    "face-zero-area",
+    "edge-non-manifold",
+    "winding-inconsistent",
+    "normal-non-unit",
+    "normal-far",
+    "normal-inverted",
+    "frame-missing",
+    "frame-shared",
+    "frame-fallback",
+    "tangent-zero",
+    "tangent-non-unit",
+    "tangent-leaning",
+    "tangent-unexplained",
+    "tangent-without-uv",
+    "side-invalid",
+    "side-mixed",
+    "side-flipped",
+    "side-wrong",
+    "map-green-down",
+    "convention-mixed",
 )
 
 
@@ -56,7 +78,11 @@ def check(
     found: list[Finding] = []
     greens: dict[int, Green] = {}
     for view in (View(asset, part, greens) for part in asset.parts):
-        found += [*uv_findings(view, skew, degenerate, stretch), *shape_findings(view, normal), *frame_findings(view, lean, explained)]
+        found += [
+            *uv_findings(view, skew, degenerate, stretch),
+            *shape_findings(view, normal),
+            *frame_findings(view, lean, explained),
+        ]
     found += _mixed(asset, found)
     judged = (_judged(one, severity, accept) for one in found if severity.get(one.id) != "off")
     return Findings(asset.name, tuple(judged), _facts(asset))
@@ -65,22 +91,40 @@ def check(
 def _known(name: str, setting: str, given: dict[str, str]) -> None:
     for id in given:
         if id not in IDS:
-            raise InputError(name, f"setting {setting}", f'no finding is called "{id}"', f"the ids are {', '.join(IDS)}.{nearest(id, IDS)}")
+            raise InputError(
+                name,
+                f"setting {setting}",
+                f'no finding is called "{id}"',
+                f"the ids are {', '.join(IDS)}.{nearest(id, IDS)}",
+            )
 
 
-def _judged(finding: Finding, severity: dict[str, Literal["fault", "warning", "note", "off"]], accept: dict[str, str]) -> Finding:
+def _judged(
+    finding: Finding, severity: dict[str, Literal["fault", "warning", "note", "off"]], accept: dict[str, str]
+) -> Finding:
     return replace(finding, severity=severity.get(finding.id, finding.severity), accepted=accept.get(finding.id, ""))
 
 
 def _mixed(asset: Asset, found: list[Finding]) -> Iterator[Finding]:
     """Parts whose sides follow the rule beside parts whose sides are its opposite."""
     flipped = {one.part for one in found if one.id == "side-flipped"}
-    stored = {part.name for part in asset.parts if part.frames is not None and part.frames.method == "stored" and part.uvs}
+    stored = {
+        part.name for part in asset.parts if part.frames is not None and part.frames.method == "stored" and part.uvs
+    }
     if flipped and stored - flipped:
         empty: Array = np.zeros(0, np.int32)
         yield Finding(
-            "convention-mixed", "warning", len(flipped), f"sides are opposite to the rule on {len(flipped)} parts and follow it on {len(stored - flipped)}",
-            "export all parts alike", "", "", "", empty, np.zeros(0, np.float32), None,
+            "convention-mixed",
+            "warning",
+            len(flipped),
+            f"sides are opposite to the rule on {len(flipped)} parts and follow it on {len(stored - flipped)}",
+            "export all parts alike",
+            "",
+            "",
+            "",
+            empty,
+            np.zeros(0, np.float32),
+            None,
         )
 
 

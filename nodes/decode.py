@@ -13,6 +13,7 @@ def decode(map: Map) -> Map:
 
     return Map(
         tuple(
-            replace(sheet, texels=decoded(sheet), encoding="float", green="up") if sheet.holds == "normal" else sheet for sheet in map.sheets
+            replace(sheet, texels=decoded(sheet), encoding="float", green="up") if sheet.holds == "normal" else sheet
+            for sheet in map.sheets
         )
     )

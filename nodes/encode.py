@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from typing import Literal
 
-
 from tangentry.nodes.model import Map, Sheet
 from tangentry.pipeline.errors import InputError
 
@@ -25,14 +24,19 @@ def encode(
 
     Where only green changes, codes are flipped exactly. Raises InputError where a map's green is undecided.
     """
-    return Map(tuple(_encoded(sheet, encoding, bits, green) if sheet.holds == "normal" else sheet for sheet in map.sheets))
+    return Map(
+        tuple(_encoded(sheet, encoding, bits, green) if sheet.holds == "normal" else sheet for sheet in map.sheets)
+    )
 
 
 def _encoded(sheet: Sheet, encoding: str, bits: int, green: str) -> Sheet:
     from tangentry.nodes.maps.encodings import encoded
 
     if sheet.green == "undecided" and sheet.space == "tangent":
-        raise InputError(sheet.name or "map", "", "it is not known whether its green points up or down", "state it: texture, green: up or down")
+        raise InputError(
+            sheet.name or "map",
+            "",
+            "it is not known whether its green points up or down",
+            "state it: texture, green: up or down",
+        )
     return encoded(sheet, encoding, bits, green)
-
-

@@ -11,7 +11,9 @@ from tangentry.pipeline.flow import Files, Findings, OutFile, OutputFile
 WRITTEN = (".glb", ".gltf", ".ply", ".npz", ".obj")
 
 
-def export(asset: Asset, map: Map | None = None, unless_faulty: Findings | None = None, *, file: OutputFile | str) -> Files | None:
+def export(
+    asset: Asset, map: Map | None = None, unless_faulty: Findings | None = None, *, file: OutputFile | str
+) -> Files | None:
     """The asset as a file, with its frames and its maps; left out where `unless_faulty` holds a fault.
 
     file  where to; its suffix says the format: .glb, .gltf (buffer and images beside it), .ply, .npz, .obj

@@ -6,7 +6,6 @@ from dataclasses import replace
 from typing import Literal
 
 import numpy as np
-
 from tangentry.nodes.model import Asset, MapUse, Morph, Part, Stream
 from tangentry.nodes.normals import normals
 from tangentry.pipeline.errors import InputError
@@ -51,7 +50,9 @@ def _framed(asset: Asset, part: Part, method: str, stored: str, where: str, uv: 
     if chosen >= len(part.uvs):
         found = f"no UV set {chosen}" if part.uvs else "no UVs"
         raise InputError(
-            asset.name, f'part "{part.name}"', f"{found}, which its tangent frames would follow",
+            asset.name,
+            f'part "{part.name}"',
+            f"{found}, which its tangent frames would follow",
             "unwrap it and export it again, or leave it out",
         )
     return _solved(part, part.uvs[chosen], chosen, use, asset.v_down, method)
@@ -103,6 +104,8 @@ def _moved(part: Part, morph: Morph, stream: Stream, v_down: bool, tangents_of: 
     if morph.normals is not None:
         normal = normal + morph.normals[part.source]
         normal = normal / np.maximum(np.linalg.norm(normal, axis=1, keepdims=True), 1e-12)
-    moved = replace(part, points=Stream(points.astype(np.float32), corner), normals=Stream(normal.astype(np.float32), corner))
+    moved = replace(
+        part, points=Stream(points.astype(np.float32), corner), normals=Stream(normal.astype(np.float32), corner)
+    )
     delta: Array = tangents_of(part, moved, part.frames, stream, v_down)
     return delta

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import numpy as np
-
 from tangentry.nodes.model import Asset, Part
 from tangentry.pipeline.flow import Array, Findings, InputFile
 
@@ -42,7 +41,10 @@ def _image_facts(name: str, content: Array) -> Facts:
         "height": texels.shape[0],
         "channels": texels.shape[2],
         "bits a channel": texels.dtype.itemsize * 8,
-        "mean": " ".join(f"{value:.3f}" for value in texels.mean(axis=(0, 1)) / (1 if texels.dtype.kind == "f" else np.iinfo(texels.dtype).max)),
+        "mean": " ".join(
+            f"{value:.3f}"
+            for value in texels.mean(axis=(0, 1)) / (1 if texels.dtype.kind == "f" else np.iinfo(texels.dtype).max)
+        ),
     }
     if texels.shape[2] >= 3 and texels.dtype.kind == "u":
         vectors = texels[..., :3].astype(np.float32) * np.float32(2 / np.iinfo(texels.dtype).max) - 1
@@ -89,11 +91,19 @@ def _orientation(asset: Asset) -> Facts:
     from tangentry.nodes.geometry.directions import triangle_directions
     from tangentry.nodes.geometry.triangles import triangulate
 
-    sides = [triangle_directions(part, triangulate(part)[0], part.uvs[0], asset.v_down).side for part in asset.parts if part.uvs]
+    sides = [
+        triangle_directions(part, triangulate(part)[0], part.uvs[0], asset.v_down).side
+        for part in asset.parts
+        if part.uvs
+    ]
     side = np.concatenate(sides) if sides else np.zeros(0, np.int8)
     if not len(side):
         return {}
-    return {"triangles as wound in UV space": int((side > 0).sum()), "triangles mirrored in UV space": int((side < 0).sum()), "triangles without UV area": int((side == 0).sum())}
+    return {
+        "triangles as wound in UV space": int((side > 0).sum()),
+        "triangles mirrored in UV space": int((side < 0).sum()),
+        "triangles without UV area": int((side == 0).sum()),
+    }
 
 
 def _agreement(asset: Asset) -> Facts:

@@ -9,7 +9,14 @@ from tangentry.pipeline.errors import InputError, nearest
 from tangentry.pipeline.flow import InputFile
 
 READ = (".obj", ".ply", ".gltf", ".glb")
-STARTS = {b"glTF": ".glb", b"ply\n": ".ply", b"ply\r": ".ply", b"\x89PNG": "a PNG image", b"\xff\xd8\xff": "a JPEG image", b"PK\x03\x04": "a ZIP archive"}
+STARTS = {
+    b"glTF": ".glb",
+    b"ply\n": ".ply",
+    b"ply\r": ".ply",
+    b"\x89PNG": "a PNG image",
+    b"\xff\xd8\xff": "a JPEG image",
+    b"PK\x03\x04": "a ZIP archive",
+}
 
 
 def load(file: InputFile | str, *, if_missing: Literal["fail", "skip"] = "fail") -> Asset | None:
@@ -30,9 +37,16 @@ def load(file: InputFile | str, *, if_missing: Literal["fail", "skip"] = "fail")
     head = content[:4].tobytes()
     kind = next((kind for start, kind in STARTS.items() if head.startswith(start)), "")
     if file.suffix == ".stl":
-        raise InputError(file, "", "STL holds no UVs, so tangent frames have nothing to follow", "export it as OBJ, PLY or glTF")
+        raise InputError(
+            file, "", "STL holds no UVs, so tangent frames have nothing to follow", "export it as OBJ, PLY or glTF"
+        )
     if file.suffix not in READ:
-        raise InputError(file, "", f'suffix "{file.suffix}" names no mesh format; {", ".join(READ)} are read.{nearest(file.suffix, READ)}', "")
+        raise InputError(
+            file,
+            "",
+            f'suffix "{file.suffix}" names no mesh format; {", ".join(READ)} are read.{nearest(file.suffix, READ)}',
+            "",
+        )
     if kind and kind != file.suffix and (kind, file.suffix) != (".glb", ".gltf"):
         raise InputError(file, "", f"its suffix says {file.suffix}, but it holds {kind}", "give it its right suffix")
     if file.suffix == ".obj":

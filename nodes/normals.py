@@ -9,7 +9,10 @@ from tangentry.nodes.model import Asset, Part
 
 
 def normals(
-    asset: Asset, *, method: Literal["keep", "face", "area", "angle", "crease", "smoothing"] = "keep", crease: float = 30.0
+    asset: Asset,
+    *,
+    method: Literal["keep", "face", "area", "angle", "crease", "smoothing"] = "keep",
+    crease: float = 30.0,
 ) -> Asset:
     """The asset with a normal at every corner.
 

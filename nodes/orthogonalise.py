@@ -6,7 +6,6 @@ from dataclasses import replace
 from typing import Literal
 
 import numpy as np
-
 from tangentry.nodes.model import Asset, Frames, Morph, Part
 from tangentry.pipeline.flow import Array
 
@@ -43,7 +42,11 @@ def _squared(part: Part, method: str) -> Part:
     fallback = part.frames.fallback[row] | lost
     if len(first) == len(part.frames.tangents) and np.array_equal(squared, part.frames.tangents):
         return part if part.frames.bitangents is None else replace(part, frames=replace(part.frames, bitangents=None))
-    return replace(part, frames=Frames(squared, None, side, fallback, index, part.frames.uv, part.frames.method), morphs=_morphs(part, row))
+    return replace(
+        part,
+        frames=Frames(squared, None, side, fallback, index, part.frames.uv, part.frames.method),
+        morphs=_morphs(part, row),
+    )
 
 
 def _middle(frames: Frames, row: Array, normal: Array, tangent: Array, side: Array) -> Array:

@@ -6,7 +6,6 @@ from dataclasses import replace
 from typing import Literal
 
 import numpy as np
-
 from tangentry.nodes.model import Asset, Map, Part, Sheet
 from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array
@@ -51,7 +50,11 @@ def _sheet(sheet: Sheet, asset: Asset | None, height: float, size: float | None,
 def _heights(sheet: Sheet) -> Array:
     """(height, width) float32: the first channel, codes as 0..1."""
     first = sheet.texels[..., 0]
-    return first.astype(np.float32) if first.dtype.kind == "f" else first.astype(np.float32) / np.float32(np.iinfo(first.dtype).max)
+    return (
+        first.astype(np.float32)
+        if first.dtype.kind == "f"
+        else first.astype(np.float32) / np.float32(np.iinfo(first.dtype).max)
+    )
 
 
 def _texel(sheet: Sheet, asset: Asset | None, size: float | None, rows: int, columns: int) -> tuple[float, float]:
@@ -60,7 +63,12 @@ def _texel(sheet: Sheet, asset: Asset | None, size: float | None, rows: int, col
         return size / columns, size / columns
     parts = [part for part in (asset.parts if asset else ()) if part.uvs and _has(asset, part, sheet.material)]
     if not parts:
-        raise InputError(sheet.name or "relief", "", "how large a texel is on the surface is not known", "set `size`, or give the asset it lies on")
+        raise InputError(
+            sheet.name or "relief",
+            "",
+            "how large a texel is on the surface is not known",
+            "set `size`, or give the asset it lies on",
+        )
     steps = np.array([_steps(part) for part in parts])
     along_u, along_v = np.average(steps[:, :2], axis=0, weights=np.maximum(steps[:, 2], 1e-30))
     return float(along_u) / columns, float(along_v) / rows

@@ -5,7 +5,6 @@ from __future__ import annotations
 from dataclasses import replace
 
 import numpy as np
-
 from tangentry.nodes.model import Asset, Part, Stream
 from tangentry.pipeline.flow import Array
 
@@ -19,7 +18,9 @@ def split(asset: Asset, *, seams: bool = True, hard_edges: bool = True, mirrored
 
     Frames that the file brought stay. A later `frames` averages only among corners of one number.
     """
-    return replace(asset, parts=tuple(_numbered(part, asset.v_down, seams, hard_edges, mirrored) for part in asset.parts))
+    return replace(
+        asset, parts=tuple(_numbered(part, asset.v_down, seams, hard_edges, mirrored) for part in asset.parts)
+    )
 
 
 def _numbered(part: Part, v_down: bool, seams: bool, hard_edges: bool, mirrored: bool) -> Part:

@@ -8,7 +8,6 @@ import json
 from pathlib import PurePosixPath
 
 import numpy as np
-
 from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Files, Finding, Findings, OutFile, OutputFile
 
@@ -37,7 +36,13 @@ def _row(name: str, findings: Findings) -> dict[str, str | float]:
     for item in findings.items:
         told[item.id] = told.get(item.id, 0) + item.count
     found = "; ".join(f"{id} {count}" for id, count in told.items())
-    return {"asset": name, "verdict": verdict, **{f"{one}s": count for one, count in counts.items()}, **findings.facts, "findings": found}
+    return {
+        "asset": name,
+        "verdict": verdict,
+        **{f"{one}s": count for one, count in counts.items()},
+        **findings.facts,
+        "findings": found,
+    }
 
 
 def _severity(item: Finding) -> str:
@@ -65,5 +70,9 @@ def _json(rows: list[dict[str, str | float]]) -> str:
 
 def _markdown(rows: list[dict[str, str | float]]) -> str:
     columns = _columns(rows)
-    lines = [columns, ["---"] * len(columns), *([str(row.get(name, "")).replace("|", "\\|") for name in columns] for row in rows)]
+    lines = [
+        columns,
+        ["---"] * len(columns),
+        *([str(row.get(name, "")).replace("|", "\\|") for name in columns] for row in rows),
+    ]
     return "".join("| " + " | ".join(line) + " |\n" for line in lines)

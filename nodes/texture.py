@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from typing import Literal
 
-
 from tangentry.nodes.model import Asset, Map, Sheet
 from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array, InputFile
@@ -46,7 +45,9 @@ def _normals(material: str, texels: Array, name: str, green: str, encoding: str)
     from tangentry.nodes.maps.conventions import measure_green
 
     if texels.shape[2] < (2 if encoding in ("xy", "octahedral") else 3):
-        raise InputError(name, "", f"{texels.shape[2]} channels can't hold normals", "is it a height map? then holds: height")
+        raise InputError(
+            name, "", f"{texels.shape[2]} channels can't hold normals", "is it a height map? then holds: height"
+        )
     verdict = measure_green(texels).verdict if green == "measure" else green
     return Sheet(material, texels, "normal", "tangent", verdict, encoding, name)
 
@@ -70,10 +71,13 @@ def _of_asset(asset: Asset, holds: str) -> list[tuple[str, Array, str]]:
             continue
         image = asset.images[use.image]
         if not len(image.content):
-            raise InputError(asset.name, f'material "{material.name}"', f"its image {image.name} is not there", "put it beside the mesh")
+            raise InputError(
+                asset.name,
+                f'material "{material.name}"',
+                f"its image {image.name} is not there",
+                "put it beside the mesh",
+            )
         if use.image not in read:
             read[use.image] = read_image(image.content, f"{asset.name}: {image.name}")
         found.append((material.name, read[use.image], image.name))
     return found
-
-

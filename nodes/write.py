@@ -6,7 +6,6 @@ import re
 from pathlib import PurePosixPath
 
 import numpy as np
-
 from tangentry.nodes.model import Map, Sheet
 from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array, Files, OutFile, OutputFile
@@ -23,7 +22,9 @@ def write(map: Map, *, file: OutputFile | str) -> Files:
     if PurePosixPath(file).suffix.lower() != ".png":
         raise InputError(file, "", "only PNG is written", "end its name with .png")
     if len(map.sheets) > 1 and "*" not in file:
-        raise InputError(file, "", f"{len(map.sheets)} sheets for one file", "put * into its name, for each material's name")
+        raise InputError(
+            file, "", f"{len(map.sheets)} sheets for one file", "put * into its name, for each material's name"
+        )
     return Files(tuple(OutFile(file.replace("*", _plain(sheet.material)), _png(sheet)) for sheet in map.sheets))
 
 

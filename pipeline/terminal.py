@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING, Any, Self
 from tangentry.pipeline.kinds import REQUIRED, Kind, Kinds, in_words, show
 from tangentry.pipeline.plan import WHOLE, Planned
 from tangentry.pipeline.record import AssetRecord, Record
+from tangentry.pipeline.work import findings_in
 
 if TYPE_CHECKING:
     from rich.progress import TaskID
@@ -226,15 +227,15 @@ def facts_lines(found: list[tuple[str, Any]]) -> list[str]:
             f"    {name:{width}}  {value if isinstance(value, str) else format(value, '.6g')}"
             for name, value in facts.facts.items()
         ]
-        lines += [f"    {item.severity}: {item.id} ({item.count}): {item.what}" for item in facts.items]
+        lines += [
+            f"    {one['severity']}: {one['id']} ({one['count']}): {one['what']}" for one in findings_in({"": facts})
+        ]
         lines.append("")
     return lines[:-1]
 
 
 def facts_json(found: list[tuple[str, Any]]) -> str:
     """The facts of each file as JSON, version 1."""
-    from tangentry.pipeline.work import findings_in
-
     files = [
         {"file": file, "error": str(facts), "facts": None, "findings": []}
         if isinstance(facts, Exception)

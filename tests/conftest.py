@@ -48,7 +48,10 @@ def validate() -> Callable[..., dict[str, dict[str, Any]]]:
     def run(*files: Path) -> dict[str, dict[str, Any]]:
         done = subprocess.run(
             ["node", "-e", VALIDATE, str(VALIDATOR)],
-            input=json.dumps([str(file) for file in files]), capture_output=True, text=True, check=True,
+            input=json.dumps([str(file) for file in files]),
+            capture_output=True,
+            text=True,
+            check=True,
         )
         return dict(json.loads(done.stdout))
 

@@ -8,7 +8,6 @@ from __future__ import annotations
 from typing import NamedTuple
 
 import numpy as np
-
 from tangentry.nodes.model import Asset, Part, Stream
 from tangentry.pipeline.flow import Array
 
@@ -26,7 +25,15 @@ def asset(*parts: Part, name: str = "shape") -> Asset:
     return Asset(name, parts)
 
 
-def quads(points: Array, uvs: Array, normals: Array, point_index: Array, uv_index: Array, normal_index: Array, name: str = "shape") -> Part:
+def quads(
+    points: Array,
+    uvs: Array,
+    normals: Array,
+    point_index: Array,
+    uv_index: Array,
+    normal_index: Array,
+    name: str = "shape",
+) -> Part:
     """A part of quads from (faces, 4) index arrays."""
     starts = np.arange(len(point_index) + 1, dtype=np.int32) * 4
     streams = [
@@ -149,7 +156,14 @@ def box_part(size: float = 1.0) -> Part:
     x = np.array([[a, b, c] for a in (0, 1) for b in (0, 1) for c in (0, 1)], float) * size
     at = np.array([[1, 5, 7, 3], [4, 0, 2, 6], [5, 4, 6, 7], [0, 1, 3, 2], [3, 7, 6, 2], [0, 4, 5, 1]])
     normals = np.array([[0, 0, 1], [0, 0, -1], [1, 0, 0], [-1, 0, 0], [0, 1, 0], [0, -1, 0]], float)
-    uvs = np.array([[(col + 0.1 + 0.8 * s) / 3, (row + 0.1 + 0.8 * t) / 2] for row in (0, 1) for col in range(3) for s, t in ((0, 0), (1, 0), (1, 1), (0, 1))])
+    uvs = np.array(
+        [
+            [(col + 0.1 + 0.8 * s) / 3, (row + 0.1 + 0.8 * t) / 2]
+            for row in (0, 1)
+            for col in range(3)
+            for s, t in ((0, 0), (1, 0), (1, 1), (0, 1))
+        ]
+    )
     return quads(x, uvs, normals, at, np.arange(24).reshape(6, 4), np.repeat(np.arange(6), 4).reshape(6, 4), "box")
 
 

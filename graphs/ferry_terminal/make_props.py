@@ -1,6 +1,6 @@
 """Makes the props of the ferry terminal, and the flawed ones that are sent back. Run it again: it writes the same bytes.
 
-    python graphs/ferry_terminal/make_props.py
+python graphs/ferry_terminal/make_props.py
 """
 
 from __future__ import annotations
@@ -9,7 +9,6 @@ from dataclasses import dataclass, field, replace
 from pathlib import Path
 
 import numpy as np
-
 from tangentry.nodes.formats.gltf import write_gltf
 from tangentry.nodes.formats.images import write_png
 from tangentry.nodes.formats.obj import write_obj
@@ -41,7 +40,15 @@ class Mesh:
         self.smoothing.append(smoothing)
         self.material.append(material)
 
-    def grid(self, points: np.ndarray, uvs: np.ndarray, material: str, smoothing: int = 0, closed: bool = False, collapsed: bool = False) -> None:
+    def grid(
+        self,
+        points: np.ndarray,
+        uvs: np.ndarray,
+        material: str,
+        smoothing: int = 0,
+        closed: bool = False,
+        collapsed: bool = False,
+    ) -> None:
         """Add a grid of quads: points (columns, rows, 3) and uvs (columns, rows, 2).
 
         `closed` joins the last column of points to the first; `collapsed` keeps quads that have an edge of no length.
@@ -55,39 +62,83 @@ class Mesh:
             for j in range(rows - 1):
                 around = [(i, j), (i + 1, j), (i + 1, j + 1), (i, j + 1)]
                 if not collapsed:  # a quad with an edge of no length is a triangle
-                    ends = [(points[a, b] == points[c, d]).all() for (a, b), (c, d) in zip(around, around[1:] + around[:1], strict=True)]
+                    ends = [
+                        (points[a, b] == points[c, d]).all()
+                        for (a, b), (c, d) in zip(around, around[1:] + around[:1], strict=True)
+                    ]
                     around = [corner for corner, gone in zip(around, ends, strict=True) if not gone]
-                self.face([(p0 + (a % len(kept)) * rows + b, t0 + a * rows + b) for a, b in around], material, smoothing)
+                self.face(
+                    [(p0 + (a % len(kept)) * rows + b, t0 + a * rows + b) for a, b in around], material, smoothing
+                )
 
-    def lathe(self, profile: list[tuple[float, float]], sides: int, chart: tuple[float, float, float, float], material: str, smoothing: int = 1, mirrored: bool = False, collapsed: bool = False) -> None:
+    def lathe(
+        self,
+        profile: list[tuple[float, float]],
+        sides: int,
+        chart: tuple[float, float, float, float],
+        material: str,
+        smoothing: int = 1,
+        mirrored: bool = False,
+        collapsed: bool = False,
+    ) -> None:
         """Add a surface of revolution around y from (radius, height) points, bottom to top; `mirrored` lays both halves on one chart."""
         turn = np.linspace(0, 2 * np.pi, sides + 1)
         radius, height = np.array(profile).T
         along = np.concatenate([[0], np.cumsum(np.hypot(np.diff(radius), np.diff(height)))])
-        points = np.stack(np.broadcast_arrays(radius * np.cos(turn)[:, None], height[None, :], -radius * np.sin(turn)[:, None]), axis=-1)
+        points = np.stack(
+            np.broadcast_arrays(radius * np.cos(turn)[:, None], height[None, :], -radius * np.sin(turn)[:, None]),
+            axis=-1,
+        )
         u = np.linspace(0, 1, sides + 1)
         u = 1 - np.abs(2 * u - 1) if mirrored else u
         u0, v0, u1, v1 = chart
-        uvs = np.stack(np.broadcast_arrays((u0 + (u1 - u0) * u)[:, None], (v0 + (v1 - v0) * along / along[-1])[None, :]), axis=-1)
+        uvs = np.stack(
+            np.broadcast_arrays((u0 + (u1 - u0) * u)[:, None], (v0 + (v1 - v0) * along / along[-1])[None, :]), axis=-1
+        )
         self.grid(points, uvs, material, smoothing, True, collapsed)
 
-    def cap(self, radius: float, height: float, sides: int, chart: tuple[float, float, float, float], material: str, up: bool = True) -> None:
+    def cap(
+        self,
+        radius: float,
+        height: float,
+        sides: int,
+        chart: tuple[float, float, float, float],
+        material: str,
+        up: bool = True,
+    ) -> None:
         """Add a round lid, one polygon of so many sides."""
         turn = np.linspace(0, 2 * np.pi, sides, endpoint=False) * (1 if up else -1)
         u0, v0, u1, v1 = chart
         p0, t0 = len(self.points), len(self.uvs)
         self.points += [(radius * np.cos(a), height, -radius * np.sin(a)) for a in turn]
-        self.uvs += [((u0 + u1) / 2 + (u1 - u0) / 2 * np.cos(a), (v0 + v1) / 2 + (v1 - v0) / 2 * np.sin(a) * (1 if up else -1)) for a in turn]
+        self.uvs += [
+            ((u0 + u1) / 2 + (u1 - u0) / 2 * np.cos(a), (v0 + v1) / 2 + (v1 - v0) / 2 * np.sin(a) * (1 if up else -1))
+            for a in turn
+        ]
         self.face([(p0 + k, t0 + k) for k in range(sides)], material)
 
-    def box(self, low: tuple[float, float, float], high: tuple[float, float, float], cell: tuple[float, float, float, float], material: str, stacked: bool = False) -> None:
+    def box(
+        self,
+        low: tuple[float, float, float],
+        high: tuple[float, float, float],
+        cell: tuple[float, float, float, float],
+        material: str,
+        stacked: bool = False,
+    ) -> None:
         """Add a box whose six charts lie in a cell, 3 x 2; `stacked` lays opposite sides on one chart, one of them mirrored."""
         x = [(a, b, c) for a in (low[0], high[0]) for b in (low[1], high[1]) for c in (low[2], high[2])]
         p0 = len(self.points)
         self.points += x
         sides = [[1, 5, 7, 3], [4, 0, 2, 6], [5, 4, 6, 7], [0, 1, 3, 2], [3, 7, 6, 2], [0, 4, 5, 1]]
         size = np.subtract(high, low)
-        spans = [(size[0], size[1]), (size[0], size[1]), (size[2], size[1]), (size[2], size[1]), (size[0], size[2]), (size[0], size[2])]
+        spans = [
+            (size[0], size[1]),
+            (size[0], size[1]),
+            (size[2], size[1]),
+            (size[2], size[1]),
+            (size[0], size[2]),
+            (size[0], size[2]),
+        ]
         u0, v0, u1, v1 = cell
         columns, rows = (3, 1) if stacked else (3, 2)
         wide, high_ = (u1 - u0) / columns, (v1 - v0) / rows
@@ -112,7 +163,17 @@ class Mesh:
             corners = np.array([corner for k in chosen for corner in self.faces[k]], np.int32)
             starts = np.cumsum([0, *(len(self.faces[k]) for k in chosen)]).astype(np.int32)
             smoothing = np.array([self.smoothing[k] for k in chosen], np.int32)
-            parts.append(Part(self.name, row, starts, _used(points, corners[:, 0]), None, (_used(uvs, corners[:, 1]),), smoothing=smoothing))
+            parts.append(
+                Part(
+                    self.name,
+                    row,
+                    starts,
+                    _used(points, corners[:, 0]),
+                    None,
+                    (_used(uvs, corners[:, 1]),),
+                    smoothing=smoothing,
+                )
+            )
         asset = Asset(self.name, tuple(parts), tuple(Material(name) for name in names))
         return normals(asset, method="smoothing")
 
@@ -139,7 +200,14 @@ def life_ring(columns: int = 32, rows: int = 12) -> Asset:
     """A torus in two materials, each band unwrapped once and reused mirrored."""
     mesh = Mesh("life_ring")
     a, b = np.linspace(0, 2 * np.pi, columns + 1), np.linspace(0, 2 * np.pi, rows + 1)
-    ring = np.stack(np.broadcast_arrays((0.3 + 0.07 * np.cos(b)) * np.cos(a)[:, None], 0.07 * np.sin(b), -(0.3 + 0.07 * np.cos(b)) * np.sin(a)[:, None]), axis=-1)
+    ring = np.stack(
+        np.broadcast_arrays(
+            (0.3 + 0.07 * np.cos(b)) * np.cos(a)[:, None],
+            0.07 * np.sin(b),
+            -(0.3 + 0.07 * np.cos(b)) * np.sin(a)[:, None],
+        ),
+        axis=-1,
+    )
     step = columns // 8
     for band in range(8):
         part = ring[band * step : (band + 1) * step + 1]
@@ -201,7 +269,10 @@ def stair() -> Asset:
     for x, order in ((0.6, 1), (-0.6, -1)):
         p0, t0 = len(mesh.points), len(mesh.uvs)
         mesh.points += [(x, y, z) for z, y in outline]
-        mesh.uvs += [((0.02 if x > 0 else 0.51) + (1 + z / 1.5 if x < 0 else -z / 1.5) * 0.47, 0.02 + y / 1.5 * 0.47) for z, y in outline]
+        mesh.uvs += [
+            ((0.02 if x > 0 else 0.51) + (1 + z / 1.5 if x < 0 else -z / 1.5) * 0.47, 0.02 + y / 1.5 * 0.47)
+            for z, y in outline
+        ]
         ring = [(p0 + k, t0 + k) for k in range(len(outline))]
         mesh.face(ring[::-1] if order < 0 else ring, "flanks")
     return mesh.asset()
@@ -214,14 +285,22 @@ def lantern() -> Asset:
     mesh.lathe([(0.06, 2.4), (0.11, 2.45), (0.11, 2.7), (0.07, 2.75)], 12, (0.51, 0.01, 0.99, 0.45), "glass")
     mesh.lathe([(0.15, 2.75), (0.09, 2.85), (0.02, 2.92), (0.0, 2.95)], 12, (0.51, 0.5, 0.99, 0.99), "green paint", 2)
     asset = mesh.asset()
-    return replace(asset, parts=tuple(replace(part, uvs=(*part.uvs, Stream(part.uvs[0].values * np.float32(0.5), part.uvs[0].index))) for part in asset.parts))
+    return replace(
+        asset,
+        parts=tuple(
+            replace(part, uvs=(*part.uvs, Stream(part.uvs[0].values * np.float32(0.5), part.uvs[0].index)))
+            for part in asset.parts
+        ),
+    )
 
 
 def bench() -> Asset:
     """Three slats on two legs, each box in a cell of its own."""
     mesh = Mesh("bench")
     for k in range(3):
-        mesh.box((-0.7, 0.42, -0.2 + 0.14 * k), (0.7, 0.46, -0.08 + 0.14 * k), (0.0, k * 0.2, 1.0, k * 0.2 + 0.2), "oak")
+        mesh.box(
+            (-0.7, 0.42, -0.2 + 0.14 * k), (0.7, 0.46, -0.08 + 0.14 * k), (0.0, k * 0.2, 1.0, k * 0.2 + 0.2), "oak"
+        )
     for k, x in enumerate((-0.55, 0.47)):
         mesh.box((x, 0.0, -0.18), (x + 0.08, 0.42, 0.18), (k * 0.5, 0.6, k * 0.5 + 0.5, 1.0), "cast iron")
     return mesh.asset()
@@ -230,7 +309,14 @@ def bench() -> Asset:
 def oar() -> Asset:
     """A shaft and a blade, both halves of each on one chart, mirrored."""
     mesh = Mesh("oar")
-    mesh.lathe([(0.018, 0.0), (0.022, 0.2), (0.025, 1.6), (0.02, 1.9)], 16, (0.01, 0.01, 0.24, 0.99), "ash wood", 1, mirrored=True)
+    mesh.lathe(
+        [(0.018, 0.0), (0.022, 0.2), (0.025, 1.6), (0.02, 1.9)],
+        16,
+        (0.01, 0.01, 0.24, 0.99),
+        "ash wood",
+        1,
+        mirrored=True,
+    )
     blade = [(0.02, 1.9), (0.06, 2.0), (0.08, 2.2), (0.07, 2.45), (0.03, 2.5)]
     mesh.lathe(blade, 16, (0.26, 0.01, 0.49, 0.6), "ash wood", 2, mirrored=True)
     asset = mesh.asset()
@@ -263,7 +349,9 @@ def ticket_kiosk() -> Asset:
         p0, t0 = len(mesh.points), len(mesh.uvs)
         mesh.points += [(w * flip, h, d * flip), (w * flip, h, -d * flip), (0.0, top, -d * flip), (0.0, top, d * flip)]
         left = 0.01 if flip > 0 else 0.51
-        mesh.uvs += [(left + a / top * t, 0.01 + b / top * t) for a, b in ((0, 0), (2 * d, 0), (2 * d, slope), (0, slope))]
+        mesh.uvs += [
+            (left + a / top * t, 0.01 + b / top * t) for a, b in ((0, 0), (2 * d, 0), (2 * d, slope), (0, slope))
+        ]
         mesh.face([(p0 + k, t0 + k) for k in range(4)], "shingles")
     return mesh.asset()
 
@@ -285,7 +373,10 @@ def cleat(fine: int = 1) -> Asset:
 
 def _refined(profile: list[tuple[float, float]], fine: int) -> list[tuple[float, float]]:
     at, wanted = np.arange(len(profile)), np.linspace(0, len(profile) - 1, (len(profile) - 1) * fine + 1)
-    return [(float(np.interp(k, at, [r for r, _ in profile])), float(np.interp(k, at, [h for _, h in profile]))) for k in wanted]
+    return [
+        (float(np.interp(k, at, [r for r, _ in profile])), float(np.interp(k, at, [h for _, h in profile])))
+        for k in wanted
+    ]
 
 
 def _dent(x: float, y: float, z: float) -> float:
@@ -307,9 +398,17 @@ def gangway() -> Asset:
     for k, x in enumerate((-0.6, 0.55)):
         mesh.box((x, 0.9, -2.0), (x + 0.05, 0.95, 2.0), (k * 0.5, 0.0, k * 0.5 + 0.5, 0.25), "rail")
         for n, z in enumerate((-1.9, -0.02, 1.86)):
-            mesh.box((x, 0.08, z), (x + 0.05, 0.9, z + 0.05), (k * 0.5 + n * 0.16, 0.25, k * 0.5 + n * 0.16 + 0.16, 0.5), "rail")
+            mesh.box(
+                (x, 0.08, z),
+                (x + 0.05, 0.9, z + 0.05),
+                (k * 0.5 + n * 0.16, 0.25, k * 0.5 + n * 0.16 + 0.16, 0.5),
+                "rail",
+            )
     asset = frames(mesh.asset())
-    return replace(asset, parts=tuple(replace(part, frames=replace(part.frames, method="stored")) for part in asset.parts if part.frames))
+    return replace(
+        asset,
+        parts=tuple(replace(part, frames=replace(part.frames, method="stored")) for part in asset.parts if part.frames),
+    )
 
 
 # Height maps
@@ -344,14 +443,19 @@ def with_map(asset: Asset) -> Asset:
     """The asset with a flat normal map in each material, so that its file says that frames are needed."""
     flat = np.full((4, 4, 3), (128, 128, 255), np.uint8)
     image = Image("flat_normal.png", "image/png", write_png(flat))
-    return replace(asset, materials=tuple(replace(one, maps=(MapUse("normal", 0),)) for one in asset.materials), images=(image,))
+    return replace(
+        asset, materials=tuple(replace(one, maps=(MapUse("normal", 0),)) for one in asset.materials), images=(image,)
+    )
 
 
 def stored(asset: Asset, change: object = None) -> Asset:
     """The asset with frames as if its file had brought them, each set of frames changed by a function."""
     solved = frames(with_map(asset), where="all")
     alter = change if callable(change) else (lambda part, made: made)
-    return replace(solved, parts=tuple(replace(part, frames=replace(alter(part, part.frames), method="stored")) for part in solved.parts))
+    return replace(
+        solved,
+        parts=tuple(replace(part, frames=replace(alter(part, part.frames), method="stored")) for part in solved.parts),
+    )
 
 
 def shared_across_the_mirror(part: Part, made: Frames) -> Frames:
@@ -374,7 +478,13 @@ def zeroed(part: Part, made: Frames) -> Frames:
 def sheared(asset: Asset, degrees: float) -> Asset:
     """The asset with its UVs sheared along u."""
     shear = np.array([[1, 0], [np.tan(np.radians(degrees)), 1]], np.float32)
-    return replace(asset, parts=tuple(replace(part, uvs=(Stream((part.uvs[0].values * np.float32(0.3)) @ shear, part.uvs[0].index),)) for part in asset.parts))
+    return replace(
+        asset,
+        parts=tuple(
+            replace(part, uvs=(Stream((part.uvs[0].values * np.float32(0.3)) @ shear, part.uvs[0].index),))
+            for part in asset.parts
+        ),
+    )
 
 
 def flattened(asset: Asset) -> Asset:
@@ -386,7 +496,14 @@ def flattened(asset: Asset) -> Asset:
 
 def inside_out(asset: Asset) -> Asset:
     """The asset with its normals turned inward."""
-    return replace(asset, parts=tuple(replace(part, normals=Stream(-part.normals.values, part.normals.index)) for part in asset.parts if part.normals))
+    return replace(
+        asset,
+        parts=tuple(
+            replace(part, normals=Stream(-part.normals.values, part.normals.index))
+            for part in asset.parts
+            if part.normals
+        ),
+    )
 
 
 def with_a_fin() -> Asset:
@@ -429,8 +546,19 @@ def save(path: str, content: np.ndarray) -> None:
 def main() -> None:
     """Make everything."""
     for make, suffix in (
-        (bollard, ".obj"), (life_ring, ".glb"), (buoy, ".ply"), (crate, ".obj"), (quay_slab, ".obj"), (stair, ".obj"), (lantern, ".glb"),
-        (bench, ".obj"), (oar, ".glb"), (ticket_kiosk, ".obj"), (cleat, ".obj"), (mooring_post, ".ply"), (gangway, ".glb"),
+        (bollard, ".obj"),
+        (life_ring, ".glb"),
+        (buoy, ".ply"),
+        (crate, ".obj"),
+        (quay_slab, ".obj"),
+        (stair, ".obj"),
+        (lantern, ".glb"),
+        (bench, ".obj"),
+        (oar, ".glb"),
+        (ticket_kiosk, ".obj"),
+        (cleat, ".obj"),
+        (mooring_post, ".ply"),
+        (gangway, ".glb"),
     ):
         write("props", make(), suffix)
     save("props/quay_slab_height.png", write_png(cobbles()))

@@ -5,7 +5,6 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 import numpy as np
-
 from tangentry.nodes.checks.view import View
 from tangentry.nodes.geometry.vectors import angle_between, dot, unit
 from tangentry.pipeline.flow import Array, Finding
@@ -20,14 +19,28 @@ def frame_findings(view: View, lean: float, explained: float) -> Iterator[Findin
     if view.part.frames is None:
         if view.needs_frames:
             every = np.arange(view.part.face_count)
-            yield view.finding("frame-missing", "fault", "the material samples a tangent-space map, but there are no frames", "solve them: frames", "face", every)
+            yield view.finding(
+                "frame-missing",
+                "fault",
+                "the material samples a tangent-space map, but there are no frames",
+                "solve them: frames",
+                "face",
+                every,
+            )
         return
     yield from _soundness(view, lean)
     yield from _sides(view)
     yield from _shared(view)
     if view.part.frames.fallback.any():
         corners = np.flatnonzero(view.part.frames.fallback[view.part.frames.index])
-        yield view.finding("frame-fallback", "note", "corners whose UVs define no tangent; one was taken from nearby or chosen", "unwrap the faces there if they show", "corner", corners)
+        yield view.finding(
+            "frame-fallback",
+            "note",
+            "corners whose UVs define no tangent; one was taken from nearby or chosen",
+            "unwrap the faces there if they show",
+            "corner",
+            corners,
+        )
     if view.part.frames.method == "stored":
         yield from _explained(view, explained)
 
@@ -39,18 +52,40 @@ def _soundness(view: View, lean: float) -> Iterator[Finding]:
     length = np.sqrt(dot(tangent, tangent))
     zero = length < 1e-6
     if zero.any():
-        yield view.finding("tangent-zero", "fault", "tangents of no length", "solve the frames again: stored: replace", "corner", np.flatnonzero(zero))
+        yield view.finding(
+            "tangent-zero",
+            "fault",
+            "tangents of no length",
+            "solve the frames again: stored: replace",
+            "corner",
+            np.flatnonzero(zero),
+        )
     unfit = ~zero & (np.abs(length - 1) > UNIT)
     if unfit.any():
-        yield view.finding("tangent-non-unit", "fault", "tangents that are not of length one", "solve the frames again: stored: replace", "corner", np.flatnonzero(unfit), length[unfit], UNIT)
+        yield view.finding(
+            "tangent-non-unit",
+            "fault",
+            "tangents that are not of length one",
+            "solve the frames again: stored: replace",
+            "corner",
+            np.flatnonzero(unfit),
+            length[unfit],
+            UNIT,
+        )
     if part.normals is None:
         return
     off = np.abs(90 - angle_between(unit(tangent), unit(part.normals.values[part.normals.index].astype(np.float64))))
     leaning = ~zero & (off > lean) & (frames.bitangents is None)
     if leaning.any():
         yield view.finding(
-            "tangent-leaning", "warning", f"tangents up to {off[leaning].max():.1f} degrees off the plane of their normal (limit {lean:g})",
-            "square them: orthogonalise", "corner", np.flatnonzero(leaning), off[leaning], lean,
+            "tangent-leaning",
+            "warning",
+            f"tangents up to {off[leaning].max():.1f} degrees off the plane of their normal (limit {lean:g})",
+            "square them: orthogonalise",
+            "corner",
+            np.flatnonzero(leaning),
+            off[leaning],
+            lean,
         )
 
 
@@ -59,13 +94,24 @@ def _sides(view: View) -> Iterator[Finding]:
     assert frames is not None
     side = frames.sides[frames.index]
     if (side == 0).any():
-        yield view.finding("side-invalid", "fault", "frames whose side is neither +1 nor -1", "solve the frames again: stored: replace", "corner", np.flatnonzero(side == 0))
+        yield view.finding(
+            "side-invalid",
+            "fault",
+            "frames whose side is neither +1 nor -1",
+            "solve the frames again: stored: replace",
+            "corner",
+            np.flatnonzero(side == 0),
+        )
     each = side[view.triangles]
     mixed = (each != each[:, :1]).any(axis=1) & (each != 0).all(axis=1)
     if mixed.any():
         yield view.finding(
-            "side-mixed", "fault", "triangles whose corners are of different sides: the bitangent turns over inside them",
-            "split mirrored charts and solve again: split, frames with stored: replace", "face", view.faces_of(mixed),
+            "side-mixed",
+            "fault",
+            "triangles whose corners are of different sides: the bitangent turns over inside them",
+            "split mirrored charts and solve again: split, frames with stored: replace",
+            "face",
+            view.faces_of(mixed),
         )
 
 
@@ -82,8 +128,12 @@ def _shared(view: View) -> Iterator[Finding]:
     both = seen == 3
     if both.any():
         yield view.finding(
-            "frame-shared", "fault", f"{int(both.sum())} frames shared by faces of mirrored charts: a seam will show",
-            "split mirrored charts and solve again: split, frames with stored: replace", "corner", np.flatnonzero(both[frames.index]),
+            "frame-shared",
+            "fault",
+            f"{int(both.sum())} frames shared by faces of mirrored charts: a seam will show",
+            "split mirrored charts and solve again: split, frames with stored: replace",
+            "corner",
+            np.flatnonzero(both[frames.index]),
         )
 
 
@@ -93,18 +143,32 @@ def _explained(view: View, limit: float) -> Iterator[Finding]:
     assert frames is not None
     if solved is None:
         if view.uv is None:
-            yield view.finding("tangent-without-uv", "warning", "the file brings tangents, but no UVs they could follow", "leave the tangents out, or add the UVs", "corner", np.arange(view.part.corner_count))
+            yield view.finding(
+                "tangent-without-uv",
+                "warning",
+                "the file brings tangents, but no UVs they could follow",
+                "leave the tangents out, or add the UVs",
+                "corner",
+                np.arange(view.part.corner_count),
+            )
         return
     has_length = dot(frames.tangents.astype(np.float64), frames.tangents.astype(np.float64)) > 1e-12
     defined = ~solved.fallback[solved.index] & has_length[frames.index]
-    angle = angle_between(unit(np.nan_to_num(frames.tangents).astype(np.float64))[frames.index], solved.tangents[solved.index])
+    angle = angle_between(
+        unit(np.nan_to_num(frames.tangents).astype(np.float64))[frames.index], solved.tangents[solved.index]
+    )
     off = defined & (angle > limit)
     if off.any():
         share = float(off.sum() / max(defined.sum(), 1))
         yield view.finding(
-            "tangent-unexplained", "fault" if share > JUNK else "warning",
+            "tangent-unexplained",
+            "fault" if share > JUNK else "warning",
             f"tangents more than {limit:g} degrees from what the UVs give, {share:.1%} of the corners (median {np.median(angle[defined]):.1f} degrees)",
-            "solve the frames again: stored: replace, unless the maps were made in these", "corner", np.flatnonzero(off), angle[off], limit,
+            "solve the frames again: stored: replace, unless the maps were made in these",
+            "corner",
+            np.flatnonzero(off),
+            angle[off],
+            limit,
         )
     opposite = frames.sides[frames.index] != solved.sides[solved.index]
     yield from _flipped(view, defined, opposite)
@@ -116,15 +180,41 @@ def _flipped(view: View, defined: Array, opposite: Array) -> Iterator[Finding]:
     if not wrong.any():
         return
     if wrong.sum() <= FLIPPED * defined.sum():
-        yield view.finding("side-wrong", "warning", "sides opposite to what the UVs give", "split mirrored charts and solve again", "corner", np.flatnonzero(wrong))
+        yield view.finding(
+            "side-wrong",
+            "warning",
+            "sides opposite to what the UVs give",
+            "split mirrored charts and solve again",
+            "corner",
+            np.flatnonzero(wrong),
+        )
         return
     green = view.green.verdict if view.green is not None else "undecided"
     severity, told, advice = {
-        "down": ("note", "the map's green points down, which makes that right", "keep sides and map together; before solving again, turn green over"),
-        "up": ("fault", "the map's green points up, so light comes out inverted", "solve the frames again: stored: replace"),
-        "undecided": ("warning", "a map whose green points down would make that right", "look which way green points; keep sides and map together"),
+        "down": (
+            "note",
+            "the map's green points down, which makes that right",
+            "keep sides and map together; before solving again, turn green over",
+        ),
+        "up": (
+            "fault",
+            "the map's green points up, so light comes out inverted",
+            "solve the frames again: stored: replace",
+        ),
+        "undecided": (
+            "warning",
+            "a map whose green points down would make that right",
+            "look which way green points; keep sides and map together",
+        ),
     }[green]
-    yield view.finding("side-flipped", severity, f"sides opposite to the rule on {wrong.sum() / defined.sum():.1%} of the corners; {told}", advice, "corner", np.flatnonzero(wrong))
+    yield view.finding(
+        "side-flipped",
+        severity,
+        f"sides opposite to the rule on {wrong.sum() / defined.sum():.1%} of the corners; {told}",
+        advice,
+        "corner",
+        np.flatnonzero(wrong),
+    )
 
 
 def _green(view: View, defined: Array, opposite: Array) -> Iterator[Finding]:
@@ -132,6 +222,11 @@ def _green(view: View, defined: Array, opposite: Array) -> Iterator[Finding]:
     if view.green is None or view.green.verdict != "down" or (defined & opposite).sum() > FLIPPED * defined.sum():
         return
     yield view.finding(
-        "map-green-down", "warning", f"sides follow the rule, but the map's green seems to point down (correlation {view.green.correlation:.2f})",
-        "turn green over: texture, encode with green: up", "", np.zeros(0, np.int32), np.array([view.green.correlation]),
+        "map-green-down",
+        "warning",
+        f"sides follow the rule, but the map's green seems to point down (correlation {view.green.correlation:.2f})",
+        "turn green over: texture, encode with green: up",
+        "",
+        np.zeros(0, np.int32),
+        np.array([view.green.correlation]),
     )

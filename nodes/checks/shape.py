@@ -5,7 +5,6 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 import numpy as np
-
 from tangentry.nodes.checks.view import View
 from tangentry.nodes.geometry.vectors import angle_between, dot
 from tangentry.pipeline.flow import Array, Finding
@@ -25,10 +24,24 @@ def _non_finite(view: View) -> Iterator[Finding]:
     for name, stream in streams.items():
         if stream is not None and not np.isfinite(stream.values).all():
             bad = ~np.isfinite(stream.values).all(axis=1)[stream.index]
-            yield view.finding("value-not-finite", "fault", f"{name} that are not finite numbers", "export the mesh again", "corner", np.flatnonzero(bad))
+            yield view.finding(
+                "value-not-finite",
+                "fault",
+                f"{name} that are not finite numbers",
+                "export the mesh again",
+                "corner",
+                np.flatnonzero(bad),
+            )
     if part.frames is not None and not np.isfinite(part.frames.tangents).all():
         bad = ~np.isfinite(part.frames.tangents).all(axis=1)[part.frames.index]
-        yield view.finding("value-not-finite", "fault", "tangents that are not finite numbers", "solve the frames again: stored: replace", "corner", np.flatnonzero(bad))
+        yield view.finding(
+            "value-not-finite",
+            "fault",
+            "tangents that are not finite numbers",
+            "solve the frames again: stored: replace",
+            "corner",
+            np.flatnonzero(bad),
+        )
 
 
 def _zero_area(view: View) -> Iterator[Finding]:
@@ -57,16 +70,26 @@ def _edges(view: View) -> Iterator[Finding]:
     if many.any():
         members = order[np.repeat(first[many], count[many]) + _within(count[many])]
         yield view.finding(
-            "edge-non-manifold", "warning", f"edges with more than two faces: {int(many.sum())}, {int(count.max())} faces at most",
-            "separate the faces that should not share the edge", "corner", corner[members], np.repeat(count[many], count[many]), 2.0,
+            "edge-non-manifold",
+            "warning",
+            f"edges with more than two faces: {int(many.sum())}, {int(count.max())} faces at most",
+            "separate the faces that should not share the edge",
+            "corner",
+            corner[members],
+            np.repeat(count[many], count[many]),
+            2.0,
         )
     pairs = count == 2
     one, two = order[first[pairs]], order[first[pairs] + 1]
     against = a[one] == a[two]
     if against.any():
         yield view.finding(
-            "winding-inconsistent", "warning", "edges whose two faces are wound against each other", "make the winding consistent",
-            "corner", corner[one[against]],
+            "winding-inconsistent",
+            "warning",
+            "edges whose two faces are wound against each other",
+            "make the winding consistent",
+            "corner",
+            corner[one[against]],
         )
 
 
@@ -87,8 +110,14 @@ def _normals(view: View, limit: float) -> Iterator[Finding]:
     unfit = np.abs(length - 1) > 0.01
     if unfit.any():
         yield view.finding(
-            "normal-non-unit", "fault", "normals that are not of length one", "normalise them on export, or rebuild them: normals",
-            "corner", np.unique(corner[unfit]), None, 0.01,
+            "normal-non-unit",
+            "fault",
+            "normals that are not of length one",
+            "normalise them on export, or rebuild them: normals",
+            "corner",
+            np.unique(corner[unfit]),
+            None,
+            0.01,
         )
     face_normal = np.repeat(view.triangle_normal, 3, axis=0)
     sound = ~unfit & (np.repeat(view.area, 3) > 0)
@@ -100,10 +129,14 @@ def _normals(view: View, limit: float) -> Iterator[Finding]:
         where, worst = _worst(corner[far], angle[far])
         inverted = share > 0.5
         yield view.finding(
-            "normal-inverted" if inverted else "normal-far", "fault" if inverted else "warning",
+            "normal-inverted" if inverted else "normal-far",
+            "fault" if inverted else "warning",
             f"normals up to {worst.max():.0f} degrees from their face (limit {limit:g}), {share:.0%} of the surface",
             "turn the faces or the normals over" if inverted else "look at the shading there, or rebuild them: normals",
-            "corner", where, worst, limit,
+            "corner",
+            where,
+            worst,
+            limit,
         )
 
 

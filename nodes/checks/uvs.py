@@ -5,7 +5,6 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 import numpy as np
-
 from tangentry.nodes.checks.view import View
 from tangentry.nodes.geometry.vectors import angle_between
 from tangentry.pipeline.flow import Array, Finding
@@ -19,7 +18,14 @@ def uv_findings(view: View, skew: float | None, degenerate: float, stretch: floa
     if view.uv is None:
         if view.needs_frames:
             every = np.arange(view.part.face_count)
-            yield view.finding("uv-missing", "fault", "the material samples a tangent-space map, but there are no UVs", "unwrap the mesh", "face", every)
+            yield view.finding(
+                "uv-missing",
+                "fault",
+                "the material samples a tangent-space map, but there are no UVs",
+                "unwrap the mesh",
+                "face",
+                every,
+            )
         return
     yield from _degenerate(view, degenerate)
     yield from _mirrored(view)
@@ -44,8 +50,14 @@ def _degenerate(view: View, limit: float) -> Iterator[Finding]:
         share = float(view.area[flat].sum() / view.area.sum())
         severity = "fault" if share > limit else "warning"
         yield view.finding(
-            "uv-degenerate", severity, f"faces whose UVs have no area, {share:.1%} of the surface: nothing defines a tangent there",
-            "unwrap these faces", "face", view.faces_of(flat), None, limit,
+            "uv-degenerate",
+            severity,
+            f"faces whose UVs have no area, {share:.1%} of the surface: nothing defines a tangent there",
+            "unwrap these faces",
+            "face",
+            view.faces_of(flat),
+            None,
+            limit,
         )
 
 
@@ -56,8 +68,12 @@ def _mirrored(view: View) -> Iterator[Finding]:
     mirrored = side == -majority
     if mirrored.any():
         yield view.finding(
-            "uv-mirrored", "note", "faces seen from the other side in UV space than most", "nothing, if they are meant to share texels",
-            "face", view.faces_of(mirrored),
+            "uv-mirrored",
+            "note",
+            "faces seen from the other side in UV space than most",
+            "nothing, if they are meant to share texels",
+            "face",
+            view.faces_of(mirrored),
         )
 
 
@@ -74,8 +90,14 @@ def _skewed(view: View, limit: float | None) -> Iterator[Finding]:
         np.maximum.at(worst, view.face[beyond], off[beyond])
         shown = SKEW_NOTICED if limit is None else limit
         yield view.finding(
-            "uv-skewed", "warning" if limit is None else "fault", f"tangent and bitangent up to {worst.max():.1f} degrees away from square (limit {shown:g})",
-            "unwrap with less shear, or bake and decode with skewed frames alike", "face", faces, worst[faces], shown,
+            "uv-skewed",
+            "warning" if limit is None else "fault",
+            f"tangent and bitangent up to {worst.max():.1f} degrees away from square (limit {shown:g})",
+            "unwrap with less shear, or bake and decode with skewed frames alike",
+            "face",
+            faces,
+            worst[faces],
+            shown,
         )
 
 
@@ -107,8 +129,14 @@ def _stretched(view: View, limit: float) -> Iterator[Finding]:
         worst = np.zeros(view.part.face_count)
         np.maximum.at(worst, view.face[beyond], np.minimum(ratio[beyond], 1e30))
         yield view.finding(
-            "uv-stretched", "warning", f"texels up to {worst.max():.3g} times as long as wide on the surface (limit {limit:g})",
-            "unwrap with less stretch", "face", faces, worst[faces], limit,
+            "uv-stretched",
+            "warning",
+            f"texels up to {worst.max():.3g} times as long as wide on the surface (limit {limit:g})",
+            "unwrap with less stretch",
+            "face",
+            faces,
+            worst[faces],
+            limit,
         )
 
 
@@ -119,5 +147,10 @@ def _out_of_tile(view: View) -> Iterator[Finding]:
     if outside.any():
         owner = np.repeat(np.arange(view.part.face_count), np.diff(view.part.starts))
         yield view.finding(
-            "uv-out-of-tile", "note", "faces with UVs outside 0..1", "nothing, if the map tiles", "face", np.unique(owner[outside]),
+            "uv-out-of-tile",
+            "note",
+            "faces with UVs outside 0..1",
+            "nothing, if the map tiles",
+            "face",
+            np.unique(owner[outside]),
         )

@@ -5,7 +5,6 @@ from __future__ import annotations
 from functools import cached_property
 
 import numpy as np
-
 from tangentry.nodes.formats.image_headers import is_image
 from tangentry.nodes.formats.images import read_image
 from tangentry.nodes.geometry.corners import distinct_rows, distinct_values
@@ -112,15 +111,31 @@ class View:
         return solve_frames(self.part, self.uv, self.uv_set, self.asset.v_down, "mikktspace")
 
     def finding(
-        self, id: str, severity: str, what: str, advice: str, element: str, elements: Array,
-        measured: Array | None = None, limit: float | None = None,
+        self,
+        id: str,
+        severity: str,
+        what: str,
+        advice: str,
+        element: str,
+        elements: Array,
+        measured: Array | None = None,
+        limit: float | None = None,
     ) -> Finding:
         """A finding in this part."""
         material = self.asset.materials[self.part.material].name if self.part.material >= 0 else ""
         figures = np.zeros(0, np.float32) if measured is None else np.asarray(measured, np.float32)
         return Finding(
-            id, severity, len(elements) if element else 1, what, advice, self.part.name, material, element,
-            np.asarray(elements, np.int32), figures, limit,
+            id,
+            severity,
+            len(elements) if element else 1,
+            what,
+            advice,
+            self.part.name,
+            material,
+            element,
+            np.asarray(elements, np.int32),
+            figures,
+            limit,
         )
 
     def faces_of(self, triangles: Array) -> Array:

@@ -5,12 +5,18 @@ from __future__ import annotations
 from typing import Any
 
 import numpy as np
-
 from tangentry.nodes.formats.gltf_container import EXPORT_AGAIN, entries
 from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array, InputFile
 
-COMPONENTS = {5120: np.dtype("i1"), 5121: np.dtype("u1"), 5122: np.dtype("<i2"), 5123: np.dtype("<u2"), 5125: np.dtype("<u4"), 5126: np.dtype("<f4")}
+COMPONENTS = {
+    5120: np.dtype("i1"),
+    5121: np.dtype("u1"),
+    5122: np.dtype("<i2"),
+    5123: np.dtype("<u2"),
+    5125: np.dtype("<u4"),
+    5126: np.dtype("<f4"),
+}
 WIDTHS = {"SCALAR": 1, "VEC2": 2, "VEC3": 3, "VEC4": 4, "MAT2": 4, "MAT3": 9, "MAT4": 16}
 MOST = 2**28  # elements of an accessor without data of its own: sparse or zero
 
@@ -28,7 +34,9 @@ class Accessors:
     def entry(self, number: object, place: str) -> dict[str, Any]:
         """The accessor's own JSON. Raises InputError where there is no such accessor."""
         if not isinstance(number, int) or not 0 <= number < len(self.list):
-            raise InputError(self.file, place, f"accessor {number!r} does not exist (there are {len(self.list)})", EXPORT_AGAIN)
+            raise InputError(
+                self.file, place, f"accessor {number!r} does not exist (there are {len(self.list)})", EXPORT_AGAIN
+            )
         return self.list[number]
 
     def raw(self, number: int, place: str) -> Array:
@@ -52,9 +60,18 @@ class Accessors:
         return self._values[number]
 
     def _read(self, entry: dict[str, Any], place: str) -> Array:
-        component, width, count = COMPONENTS.get(entry.get("componentType", 0)), WIDTHS.get(str(entry.get("type"))), entry.get("count")
+        component, width, count = (
+            COMPONENTS.get(entry.get("componentType", 0)),
+            WIDTHS.get(str(entry.get("type"))),
+            entry.get("count"),
+        )
         if component is None or width is None:
-            raise InputError(self.file, place, f"componentType {entry.get('componentType')!r}, type {entry.get('type')!r}", EXPORT_AGAIN)
+            raise InputError(
+                self.file,
+                place,
+                f"componentType {entry.get('componentType')!r}, type {entry.get('type')!r}",
+                EXPORT_AGAIN,
+            )
         if not isinstance(count, int) or count < 1:
             raise InputError(self.file, place, f"count is {count!r}", EXPORT_AGAIN)
         if "bufferView" in entry:
@@ -65,10 +82,14 @@ class Accessors:
             raise InputError(self.file, place, f"{count} elements without data", EXPORT_AGAIN)
         return self._substituted(elements, entry["sparse"], place) if "sparse" in entry else elements
 
-    def _elements(self, view: object, offset: object, component: np.dtype[Any], width: int, count: int, place: str) -> Array:
+    def _elements(
+        self, view: object, offset: object, component: np.dtype[Any], width: int, count: int, place: str
+    ) -> Array:
         """(count, width) elements of a buffer view, without a copy where the bytes allow it."""
         if not isinstance(view, int) or not 0 <= view < len(self.views):
-            raise InputError(self.file, place, f"bufferView {view!r} does not exist (there are {len(self.views)})", EXPORT_AGAIN)
+            raise InputError(
+                self.file, place, f"bufferView {view!r} does not exist (there are {len(self.views)})", EXPORT_AGAIN
+            )
         stride = self.views[view].get("byteStride") or component.itemsize * width
         content = self.view(view)
         size = component.itemsize * width
@@ -76,7 +97,9 @@ class Accessors:
             raise InputError(self.file, place, f"byteOffset {offset!r}, byteStride {stride!r}", EXPORT_AGAIN)
         if offset + stride * (count - 1) + size > len(content):
             there = max(0, (len(content) - offset - size) // stride + 1)
-            raise InputError(self.file, place, f"{count} elements announced, {there} fit into bufferView {view}", EXPORT_AGAIN)
+            raise InputError(
+                self.file, place, f"{count} elements announced, {there} fit into bufferView {view}", EXPORT_AGAIN
+            )
         rows = np.lib.stride_tricks.as_strided(content[offset:], (count, size), (stride, 1), writeable=False)
         return np.ascontiguousarray(rows).view(component)
 
@@ -85,21 +108,45 @@ class Accessors:
         view, place = self.views[number], f"bufferView {number}"
         buffer, offset, size = view.get("buffer"), view.get("byteOffset", 0), view.get("byteLength")
         if not isinstance(buffer, int) or not 0 <= buffer < len(self.buffers):
-            raise InputError(self.file, place, f"buffer {buffer!r} does not exist (there are {len(self.buffers)})", EXPORT_AGAIN)
-        if not isinstance(offset, int) or not isinstance(size, int) or offset < 0 or size < 0 or offset + size > len(self.buffers[buffer]):
-            raise InputError(self.file, place, f"bytes {offset!r} + {size!r} lie outside buffer {buffer}, which has {len(self.buffers[buffer])}", EXPORT_AGAIN)
+            raise InputError(
+                self.file, place, f"buffer {buffer!r} does not exist (there are {len(self.buffers)})", EXPORT_AGAIN
+            )
+        if (
+            not isinstance(offset, int)
+            or not isinstance(size, int)
+            or offset < 0
+            or size < 0
+            or offset + size > len(self.buffers[buffer])
+        ):
+            raise InputError(
+                self.file,
+                place,
+                f"bytes {offset!r} + {size!r} lie outside buffer {buffer}, which has {len(self.buffers[buffer])}",
+                EXPORT_AGAIN,
+            )
         return self.buffers[buffer][offset : offset + size]
 
     def _substituted(self, elements: Array, sparse: Any, place: str) -> Array:
         try:
             count, at, new = sparse["count"], sparse["indices"], sparse["values"]
             component = COMPONENTS[at["componentType"]]
-            rows = self._elements(at["bufferView"], at.get("byteOffset", 0), component, 1, count, f"{place}, sparse indices")[:, 0]
-            values = self._elements(new["bufferView"], new.get("byteOffset", 0), elements.dtype, elements.shape[1], count, f"{place}, sparse values")
+            rows = self._elements(
+                at["bufferView"], at.get("byteOffset", 0), component, 1, count, f"{place}, sparse indices"
+            )[:, 0]
+            values = self._elements(
+                new["bufferView"],
+                new.get("byteOffset", 0),
+                elements.dtype,
+                elements.shape[1],
+                count,
+                f"{place}, sparse values",
+            )
         except (KeyError, TypeError, ValueError) as error:
             raise InputError(self.file, place, f"its sparse part is incomplete ({error})", EXPORT_AGAIN) from None
         if rows.size and int(rows.max()) >= len(elements):
-            raise InputError(self.file, place, f"sparse index {int(rows.max())}, but it has {len(elements)} elements", EXPORT_AGAIN)
+            raise InputError(
+                self.file, place, f"sparse index {int(rows.max())}, but it has {len(elements)} elements", EXPORT_AGAIN
+            )
         elements = elements.copy()
         elements[rows] = values
         return elements

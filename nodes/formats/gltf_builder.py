@@ -6,13 +6,19 @@ import json
 from typing import Any
 
 import numpy as np
-
 from tangentry.nodes.formats.gltf_accessors import WIDTHS
 from tangentry.nodes.model import Image
 from tangentry.pipeline.flow import Array, OutFile
 
 GENERATOR = "tangentry"
-TYPE_CODES = {np.dtype("i1"): 5120, np.dtype("u1"): 5121, np.dtype("<i2"): 5122, np.dtype("<u2"): 5123, np.dtype("<u4"): 5125, np.dtype("<f4"): 5126}
+TYPE_CODES = {
+    np.dtype("i1"): 5120,
+    np.dtype("u1"): 5121,
+    np.dtype("<i2"): 5122,
+    np.dtype("<u2"): 5123,
+    np.dtype("<u4"): 5125,
+    np.dtype("<f4"): 5126,
+}
 VECTORS = {1: "SCALAR", 2: "VEC2", 3: "VEC3", 4: "VEC4"}
 VERTICES, INDICES = 34962, 34963  # buffer view targets
 ALIGN = 4
@@ -22,7 +28,9 @@ class Builder:
     """Takes views and accessors, gives files."""
 
     def __init__(self, document: dict[str, Any] | None = None, views: list[Array] | None = None) -> None:
-        self.document: dict[str, Any] = document if document is not None else {"asset": {"version": "2.0", "generator": GENERATOR}}
+        self.document: dict[str, Any] = (
+            document if document is not None else {"asset": {"version": "2.0", "generator": GENERATOR}}
+        )
         self._views: list[Array] = views if views is not None else []
         self.images: list[Image] = []  # what the document's images hold, one for one
 
@@ -50,7 +58,13 @@ class Builder:
 
     def indices(self, corners: Array, vertices: int, replaces: int | None = None) -> int:
         """Add an accessor of indices, of the smallest type that holds them; gives its number."""
-        kind = np.uint8 if vertices < 256 and replaces is not None and self._component(replaces) == 5121 else np.uint16 if vertices < 65536 else np.uint32
+        kind = (
+            np.uint8
+            if vertices < 256 and replaces is not None and self._component(replaces) == 5121
+            else np.uint16
+            if vertices < 65536
+            else np.uint32
+        )
         values = corners.astype(kind)[:, None]
         return self._entry(self.view(values.view(np.uint8).reshape(-1), target=INDICES), values, replaces)
 
@@ -58,12 +72,22 @@ class Builder:
         return int(self.list("accessors")[accessor]["componentType"])
 
     def _entry(self, view: int, values: Array, replaces: int | None, **more: Any) -> int:
-        entry = {"bufferView": view, "componentType": TYPE_CODES[values.dtype.newbyteorder("<")], "count": len(values), "type": VECTORS[values.shape[1]], **more}
+        entry = {
+            "bufferView": view,
+            "componentType": TYPE_CODES[values.dtype.newbyteorder("<")],
+            "count": len(values),
+            "type": VECTORS[values.shape[1]],
+            **more,
+        }
         accessors = self.list("accessors")
         if replaces is None:
             accessors.append(entry)
             return len(accessors) - 1
-        kept = {name: value for name, value in accessors[replaces].items() if name in ("name", "extras", "extensions", "normalized")}
+        kept = {
+            name: value
+            for name, value in accessors[replaces].items()
+            if name in ("name", "extras", "extensions", "normalized")
+        }
         accessors[replaces] = kept | entry
         return replaces
 
@@ -99,7 +123,11 @@ class Builder:
 
     def _only_buffer(self, size: int, uri: str) -> None:
         """One buffer in place of all; what the first one carried besides its data stays."""
-        kept = {name: value for name, value in next(iter(self.document.get("buffers", [])), {}).items() if name not in ("uri", "byteLength")}
+        kept = {
+            name: value
+            for name, value in next(iter(self.document.get("buffers", [])), {}).items()
+            if name not in ("uri", "byteLength")
+        }
         self.document.pop("buffers", None)
         if size:
             self.document["buffers"] = [{**kept, "byteLength": size, **({"uri": uri} if uri else {})}]

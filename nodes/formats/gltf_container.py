@@ -10,7 +10,6 @@ from typing import Any
 from urllib.parse import unquote, unquote_to_bytes
 
 import numpy as np
-
 from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array, InputFile
 
@@ -31,7 +30,9 @@ def read_container(file: InputFile) -> tuple[dict[str, Any], list[Array]]:
     version = document.get("asset", {}).get("version") if isinstance(document.get("asset"), dict) else None
     if not isinstance(version, str) or version.split(".")[0] != "2":
         raise InputError(file, "asset.version", f"{version!r}, but glTF 2.x is read", "convert the file to glTF 2.0")
-    return document, [_buffer(file, number, one, binary) for number, one in enumerate(entries(file, document, "buffers"))]
+    return document, [
+        _buffer(file, number, one, binary) for number, one in enumerate(entries(file, document, "buffers"))
+    ]
 
 
 def entries(file: InputFile, document: dict[str, Any], name: str) -> list[dict[str, Any]]:
@@ -49,13 +50,17 @@ def _glb(file: InputFile, content: Array) -> tuple[Array, Array | None]:
     if version != 2:
         raise InputError(file, "header", f"version {version}, but version 2 is read", EXPORT_AGAIN)
     if length > len(content):
-        raise InputError(file, "header", f"{length} bytes announced, {len(content)} there: the file is cut off", EXPORT_AGAIN)
+        raise InputError(
+            file, "header", f"{length} bytes announced, {len(content)} there: the file is cut off", EXPORT_AGAIN
+        )
     chunks: dict[int, Array] = {}
     at = 12
     while at + 8 <= length:
         size, kind = (int(word) for word in content[at : at + 8].copy().view("<u4"))
         if at + 8 + size > length:
-            raise InputError(file, f"chunk at byte {at}", f"{size} bytes announced, {length - at - 8} there", EXPORT_AGAIN)
+            raise InputError(
+                file, f"chunk at byte {at}", f"{size} bytes announced, {length - at - 8} there", EXPORT_AGAIN
+            )
         chunks.setdefault(kind, content[at + 8 : at + 8 + size])
         at += 8 + (size + 3) // 4 * 4
     if JSON_CHUNK not in chunks:
@@ -71,7 +76,9 @@ def _json(file: InputFile, text: Array) -> dict[str, Any]:
     except UnicodeDecodeError as error:
         raise InputError(file, f"byte {error.start}", "not UTF-8: this is no glTF file", EXPORT_AGAIN) from None
     except json.JSONDecodeError as error:
-        raise InputError(file, f"line {error.lineno}, column {error.colno}", f"not JSON: {error.msg}", EXPORT_AGAIN) from None
+        raise InputError(
+            file, f"line {error.lineno}, column {error.colno}", f"not JSON: {error.msg}", EXPORT_AGAIN
+        ) from None
     except RecursionError:
         raise InputError(file, "", "JSON nested too deeply", EXPORT_AGAIN) from None
     if not isinstance(document, dict):
@@ -90,7 +97,9 @@ def _buffer(file: InputFile, number: int, buffer: dict[str, Any], binary: Array 
     else:
         raise InputError(file, place, "neither a uri nor a binary chunk", EXPORT_AGAIN)
     if len(content) < size:
-        raise InputError(file, place, f"byteLength is {size}, but {len(content)} bytes are there: the data is cut off", EXPORT_AGAIN)
+        raise InputError(
+            file, place, f"byteLength is {size}, but {len(content)} bytes are there: the data is cut off", EXPORT_AGAIN
+        )
     return content[:size]
 
 
@@ -113,5 +122,10 @@ def side_file(file: InputFile, place: str, uri: str) -> InputFile:
     """The file beside this one that a relative uri names."""
     name = unquote(uri)
     if SCHEME.match(uri) or name.startswith(("/", "\\")) or "\0" in name:
-        raise InputError(file, place, f"uri {uri[:80]!r} is not a relative path; nothing else is read", "put the file beside this one")
+        raise InputError(
+            file,
+            place,
+            f"uri {uri[:80]!r} is not a relative path; nothing else is read",
+            "put the file beside this one",
+        )
     return file.beside(name.replace("\\", "/") if "\\" in name and "/" not in name else name)

@@ -7,7 +7,6 @@ from collections import Counter
 from typing import Any
 
 import numpy as np
-
 from tangentry.nodes.formats.gltf_accessors import Accessors
 from tangentry.nodes.formats.gltf_builder import Builder, bounds
 from tangentry.nodes.formats.vertices import label_of, tangent_rows
@@ -60,7 +59,11 @@ class _Editing:
         """The attributes whose values at some corner are no longer those of the document, as streams."""
         assert part.source is not None
         new: dict[str, Stream] = {}
-        streams = {"POSITION": part.points, "NORMAL": part.normals, **{f"TEXCOORD_{n}": uv for n, uv in enumerate(part.uvs)}}
+        streams = {
+            "POSITION": part.points,
+            "NORMAL": part.normals,
+            **{f"TEXCOORD_{n}": uv for n, uv in enumerate(part.uvs)},
+        }
         for name, stream in streams.items():
             if stream is None:
                 continue
@@ -134,7 +137,9 @@ class _Editing:
         self.uses[number] = 1
         return number
 
-    def _morph_tangents(self, part: Part, primitive: dict[str, Any], vertex: Array, corner: Array, vertices: int) -> None:
+    def _morph_tangents(
+        self, part: Part, primitive: dict[str, Any], vertex: Array, corner: Array, vertices: int
+    ) -> None:
         """TANGENT displacements for targets whose normals move; vertex[k] is shown by corner[k]."""
         if part.frames is None or part.frames.method == "stored":
             return

@@ -5,10 +5,9 @@ from __future__ import annotations
 from typing import Any
 
 import numpy as np
-
 from tangentry.nodes.formats.gltf_builder import Builder, bounds
 from tangentry.nodes.formats.gltf_reading import sniff
-from tangentry.nodes.formats.vertices import Vertices, vertices_of
+from tangentry.nodes.formats.vertices import vertices_of
 from tangentry.nodes.model import Asset, Image, MapUse, Part
 from tangentry.pipeline.flow import Array
 
@@ -43,7 +42,10 @@ def _primitive(builder: Builder, asset: Asset, part: Part) -> dict[str, Any]:
         attributes[f"TEXCOORD_{number}"] = builder.accessor(uv if asset.v_down else _turned(uv))
     for number, colour in enumerate(found.colours):
         attributes[f"COLOR_{number}"] = builder.accessor(colour)
-    primitive: dict[str, Any] = {"attributes": attributes, "indices": builder.indices(found.triangles.ravel(), len(found.points))}
+    primitive: dict[str, Any] = {
+        "attributes": attributes,
+        "indices": builder.indices(found.triangles.ravel(), len(found.points)),
+    }
     if part.material >= 0:
         primitive["material"] = part.material
     return primitive

@@ -7,7 +7,6 @@ import math
 from typing import Any
 
 import numpy as np
-
 from tangentry.nodes.formats.gltf_accessors import Accessors
 from tangentry.nodes.formats.gltf_container import DATA_URI, EXPORT_AGAIN, entries, read_container, resolve, side_file
 from tangentry.nodes.model import Asset, Document, Frames, Image, MapUse, Material, Morph, Part, Stream
@@ -16,7 +15,11 @@ from tangentry.pipeline.flow import Array, InputFile
 
 TRIANGLES, STRIP, FAN = 4, 5, 6
 MODES = {0: "points", 1: "lines", 2: "line loops", 3: "line strips"}
-PACKED = {"KHR_draco_mesh_compression": "Draco", "EXT_meshopt_compression": "meshopt", "KHR_meshopt_compression": "meshopt"}
+PACKED = {
+    "KHR_draco_mesh_compression": "Draco",
+    "EXT_meshopt_compression": "meshopt",
+    "KHR_meshopt_compression": "meshopt",
+}
 CORE_MAPS = {"normalTexture": "normal", "occlusionTexture": "occlusion", "emissiveTexture": "emissive"}
 METALLIC_MAPS = {"baseColorTexture": "colour", "metallicRoughnessTexture": "metallic roughness"}
 IMAGE_EXTENSIONS = ("KHR_texture_basisu", "EXT_texture_webp", "EXT_texture_avif", "MSFT_texture_dds")
@@ -35,7 +38,9 @@ def read_gltf(file: InputFile) -> Asset:
             raise InputError(file, name, f"{what}-compressed meshes are not read", "export without mesh compression")
     accessors = Accessors(file, document, buffers)
     images = tuple(_image(file, number, one, accessors) for number, one in enumerate(entries(file, document, "images")))
-    materials = tuple(_material(file, number, one, document) for number, one in enumerate(entries(file, document, "materials")))
+    materials = tuple(
+        _material(file, number, one, document) for number, one in enumerate(entries(file, document, "materials"))
+    )
     parts: list[Part] = []
     notes: list[str] = []
     for m, mesh in enumerate(entries(file, document, "meshes")):
@@ -45,12 +50,22 @@ def read_gltf(file: InputFile) -> Asset:
         for p, primitive in enumerate(primitives):
             mode = primitive.get("mode", TRIANGLES)
             if mode in (TRIANGLES, STRIP, FAN):
-                parts.append(_Primitive(file, accessors, primitive, m, p, materials).part(str(mesh.get("name", f"mesh {m}"))))
+                parts.append(
+                    _Primitive(file, accessors, primitive, m, p, materials).part(str(mesh.get("name", f"mesh {m}")))
+                )
             else:
                 notes.append(f"mesh {m} primitive {p}: {MODES.get(mode, f'mode {mode!r}')} carried through as they are")
     if not parts:
         raise InputError(file, "", "there are no triangles in it", "export the mesh with its faces")
-    return Asset(file.path, tuple(parts), materials, images, True, Document("gltf", json.dumps(document), tuple(buffers)), tuple(notes))
+    return Asset(
+        file.path,
+        tuple(parts),
+        materials,
+        images,
+        True,
+        Document("gltf", json.dumps(document), tuple(buffers)),
+        tuple(notes),
+    )
 
 
 # Materials and images
@@ -91,7 +106,9 @@ def _material(file: InputFile, number: int, material: dict[str, Any], document: 
     uses = [_use(file, f"{place}, {key}", material.get(key), role, document) for key, role in CORE_MAPS.items()]
     metallic = material.get("pbrMetallicRoughness", {})
     if isinstance(metallic, dict):
-        uses += [_use(file, f"{place}, {key}", metallic.get(key), role, document) for key, role in METALLIC_MAPS.items()]
+        uses += [
+            _use(file, f"{place}, {key}", metallic.get(key), role, document) for key, role in METALLIC_MAPS.items()
+        ]
     extensions = material.get("extensions", {})
     for name, extension in extensions.items() if isinstance(extensions, dict) else ():
         for key, info in extension.items() if isinstance(extension, dict) else ():
@@ -118,7 +135,11 @@ def _use(file: InputFile, place: str, info: Any, role: str, document: dict[str, 
     source = _texture_image(textures[index])
     if source is None or not 0 <= source < len(document.get("images", [])):
         return None
-    moved = info.get("extensions", {}).get("KHR_texture_transform", {}) if isinstance(info.get("extensions", {}), dict) else {}
+    moved = (
+        info.get("extensions", {}).get("KHR_texture_transform", {})
+        if isinstance(info.get("extensions", {}), dict)
+        else {}
+    )
     uv = moved.get("texCoord", info.get("texCoord", 0))
     offset, scale = moved.get("offset", [0, 0]), moved.get("scale", [1, 1])
     strength = info.get("scale", info.get("strength", 1.0))
@@ -127,7 +148,9 @@ def _use(file: InputFile, place: str, info: Any, role: str, document: dict[str, 
         if len(numbers) != 6 or not all(math.isfinite(value) for value in numbers) or not isinstance(uv, int) or uv < 0:
             raise ValueError
     except (TypeError, ValueError):
-        raise InputError(file, place, "its texCoord, transform or scale is not made of proper numbers", EXPORT_AGAIN) from None
+        raise InputError(
+            file, place, "its texCoord, transform or scale is not made of proper numbers", EXPORT_AGAIN
+        ) from None
     return MapUse(role, source, uv, tuple(numbers[:5]), numbers[5])
 
 
@@ -146,7 +169,15 @@ def _texture_image(texture: dict[str, Any]) -> int | None:
 class _Primitive:
     """One primitive under reading."""
 
-    def __init__(self, file: InputFile, accessors: Accessors, primitive: dict[str, Any], m: int, p: int, materials: tuple[Material, ...]) -> None:
+    def __init__(
+        self,
+        file: InputFile,
+        accessors: Accessors,
+        primitive: dict[str, Any],
+        m: int,
+        p: int,
+        materials: tuple[Material, ...],
+    ) -> None:
         self.file, self.accessors, self.primitive, self.at = file, accessors, primitive, (m, p)
         self.place, self.materials = f"mesh {m} primitive {p}", materials
         attributes = primitive.get("attributes")
@@ -160,7 +191,9 @@ class _Primitive:
         finite = np.isfinite(points).all(axis=1)
         if not finite.all():
             vertex = int(np.argmin(finite))
-            raise InputError(self.file, f"{self.place}, vertex {vertex}", f"its position is {points[vertex].tolist()}", EXPORT_AGAIN)
+            raise InputError(
+                self.file, f"{self.place}, vertex {vertex}", f"its position is {points[vertex].tolist()}", EXPORT_AGAIN
+            )
         self.count = len(points)
         index = self._corners()
         normals = self._attribute("NORMAL", (3,))
@@ -188,7 +221,9 @@ class _Primitive:
         place = f"{self.place}, {name}"
         values = self.accessors.values(self.attributes[name], place) if isinstance(self.attributes[name], int) else None
         if values is None or values.shape[1] not in widths:
-            raise InputError(self.file, place, "its accessor is not of the type that this attribute needs", EXPORT_AGAIN)
+            raise InputError(
+                self.file, place, "its accessor is not of the type that this attribute needs", EXPORT_AGAIN
+            )
         if name != "POSITION" and len(values) != self.count:
             raise InputError(self.file, place, f"{len(values)} elements, but POSITION has {self.count}", EXPORT_AGAIN)
         return values
@@ -204,12 +239,17 @@ class _Primitive:
         if "indices" in self.primitive:
             raw = self.accessors.raw(self.primitive["indices"], f"{self.place}, indices")
             if raw.shape[1] != 1 or raw.dtype.kind != "u":
-                raise InputError(self.file, f"{self.place}, indices", "they are not unsigned whole numbers", EXPORT_AGAIN)
+                raise InputError(
+                    self.file, f"{self.place}, indices", "they are not unsigned whole numbers", EXPORT_AGAIN
+                )
             index = raw[:, 0].astype(np.int64)
             if index.size and int(index.max()) >= self.count:
                 corner = int(np.argmax(index >= self.count))
                 raise InputError(
-                    self.file, f"{self.place}, indices", f"index {corner} is {int(index[corner])}, but there are {self.count} vertices", EXPORT_AGAIN
+                    self.file,
+                    f"{self.place}, indices",
+                    f"index {corner} is {int(index[corner])}, but there are {self.count} vertices",
+                    EXPORT_AGAIN,
                 )
         else:
             index = np.arange(self.count, dtype=np.int64)
@@ -224,14 +264,23 @@ class _Primitive:
             raise InputError(self.file, self.place, f"{len(index)} corners are too few for a triangle", EXPORT_AGAIN)
         triangles = index[: len(index) // 3 * 3].reshape(-1, 3)
         if mode != TRIANGLES:  # strips are stitched together by triangles without area
-            stitch = (triangles[:, 0] == triangles[:, 1]) | (triangles[:, 1] == triangles[:, 2]) | (triangles[:, 2] == triangles[:, 0])
+            stitch = (
+                (triangles[:, 0] == triangles[:, 1])
+                | (triangles[:, 1] == triangles[:, 2])
+                | (triangles[:, 2] == triangles[:, 0])
+            )
             triangles = triangles[~stitch]
         return np.ascontiguousarray(triangles.ravel(), np.int32)
 
     def _material(self) -> int:
         material = self.primitive.get("material", -1)
         if material != -1 and (not isinstance(material, int) or not 0 <= material < len(self.materials)):
-            raise InputError(self.file, self.place, f"material {material!r} does not exist (there are {len(self.materials)})", EXPORT_AGAIN)
+            raise InputError(
+                self.file,
+                self.place,
+                f"material {material!r} does not exist (there are {len(self.materials)})",
+                EXPORT_AGAIN,
+            )
         return int(material)
 
     def _frames(self, index: Array, uv_sets: int) -> Frames | None:
@@ -241,14 +290,17 @@ class _Primitive:
         use = self.materials[self._material()].tangent_space_map if self._material() >= 0 else None
         uv = use.uv if use is not None and use.uv < uv_sets else min(0, uv_sets - 1)
         sides = np.sign(np.nan_to_num(stored[:, 3])).astype(np.int8)
-        return Frames(np.ascontiguousarray(stored[:, :3]), None, sides, np.zeros(len(stored), bool), index, uv, "stored")
+        return Frames(
+            np.ascontiguousarray(stored[:, :3]), None, sides, np.zeros(len(stored), bool), index, uv, "stored"
+        )
 
     def _morphs(self) -> tuple[Morph, ...]:
         targets = self.primitive.get("targets", [])
         if not isinstance(targets, list) or not all(isinstance(one, dict) for one in targets):
             raise InputError(self.file, self.place, "its morph targets are not a list of objects", EXPORT_AGAIN)
         return tuple(
-            Morph(*(self._displacement(t, target, name) for name in ("POSITION", "NORMAL", "TANGENT"))) for t, target in enumerate(targets)
+            Morph(*(self._displacement(t, target, name) for name in ("POSITION", "NORMAL", "TANGENT")))
+            for t, target in enumerate(targets)
         )
 
     def _displacement(self, t: int, target: dict[str, Any], name: str) -> Array | None:

@@ -6,7 +6,6 @@ import re
 from pathlib import PurePosixPath
 
 import numpy as np
-
 from tangentry.nodes.formats.gltf_builder import Builder
 from tangentry.nodes.formats.gltf_editing import edited_document
 from tangentry.nodes.formats.gltf_making import new_document
@@ -78,16 +77,26 @@ def _place_maps(builder: Builder, maps: Map, stem: str, binary: bool, asset: Ass
     by_name = {sheet.material: number for number, sheet in enumerate(maps.sheets)}
     for number, sheet in enumerate(maps.sheets):
         if sheet.holds != "normal" or sheet.space not in ("tangent", ""):
-            raise InputError(asset.name, f"map {sheet.name or number}", f"it holds {sheet.space} {sheet.holds}, not tangent-space normals", "turn it into them first: `relief`, `reencode`")
+            raise InputError(
+                asset.name,
+                f"map {sheet.name or number}",
+                f"it holds {sheet.space} {sheet.holds}, not tangent-space normals",
+                "turn it into them first: `relief`, `reencode`",
+            )
     for material in _materials(builder, asset):
         chosen = by_name.get(str(material.get("name", "")), by_name.get(""))
         if chosen is None:
             continue
         if chosen not in textures:
             content = write_png(as_gltf_texels(maps.sheets[chosen]))
-            textures[chosen] = _texture(builder, content, f"{stem}_normal_{chosen}" if len(maps.sheets) > 1 else f"{stem}_normal", binary, files)
+            textures[chosen] = _texture(
+                builder, content, f"{stem}_normal_{chosen}" if len(maps.sheets) > 1 else f"{stem}_normal", binary, files
+            )
         info = material.get("normalTexture", {})
-        material["normalTexture"] = {"index": textures[chosen], **{key: info[key] for key in ("scale", "texCoord", "extensions", "extras") if key in info}}
+        material["normalTexture"] = {
+            "index": textures[chosen],
+            **{key: info[key] for key in ("scale", "texCoord", "extensions", "extras") if key in info},
+        }
     return files
 
 

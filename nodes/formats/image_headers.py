@@ -5,7 +5,6 @@ from __future__ import annotations
 import struct
 from typing import NamedTuple
 
-
 from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array
 
@@ -82,13 +81,15 @@ def _tiff(data: bytes, order: str) -> ImageHeader:
         place = at + 2 + 12 * entry
         tag, kind = struct.unpack(order + "HH", data[place : place + 4])
         if tag in (256, 257):
-            size[tag] = struct.unpack(order + ("H" if kind == 3 else "I"), data[place + 8 : place + (10 if kind == 3 else 12)])[0]
+            size[tag] = struct.unpack(
+                order + ("H" if kind == 3 else "I"), data[place + 8 : place + (10 if kind == 3 else 12)]
+            )[0]
     return ImageHeader("TIFF", int(size.get(256, 0)), int(size.get(257, 0)))
 
 
 def is_image(content: Array) -> bool:
     """Does a file begin like an image that can be read?"""
     head = content[:12].tobytes()
-    return head.startswith((b"\x89PNG", b"\xff\xd8", b"II*\0", b"MM\0*")) or (head[:4] == b"RIFF" and head[8:12] == b"WEBP")
-
-
+    return head.startswith((b"\x89PNG", b"\xff\xd8", b"II*\0", b"MM\0*")) or (
+        head[:4] == b"RIFF" and head[8:12] == b"WEBP"
+    )

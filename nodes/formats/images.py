@@ -6,7 +6,6 @@ The size is read from the header and held against a limit before anything is dec
 from __future__ import annotations
 
 import numpy as np
-
 from tangentry.nodes.formats.image_headers import ImageHeader, read_header
 from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array
@@ -29,13 +28,21 @@ def read_image(content: Array, name: str, pixels: int = MOST_PIXELS) -> Array:
     header = read_header(content, name)
     if header.width * header.height > pixels:
         raise InputError(
-            name, "header", f"{header.width} x {header.height} pixels, more than the {pixels:,} that are read", "make it smaller"
+            name,
+            "header",
+            f"{header.width} x {header.height} pixels, more than the {pixels:,} that are read",
+            "make it smaller",
         )
     texels = _decode(content, header, name)
     if texels.ndim == 2:
         texels = texels[:, :, None]
     if texels.ndim != 3 or texels.shape[:2] != (header.height, header.width):
-        raise InputError(name, "", f"decoded to {texels.shape}, not to {header.height} rows of {header.width}", "save it as a plain PNG")
+        raise InputError(
+            name,
+            "",
+            f"decoded to {texels.shape}, not to {header.height} rows of {header.width}",
+            "save it as a plain PNG",
+        )
     return _plain(texels, name)
 
 
@@ -52,7 +59,12 @@ def _decode(content: Array, header: ImageHeader, name: str) -> Array:
     try:
         texels: Array = decode(content.tobytes())
     except (trouble, ValueError, RuntimeError, MemoryError) as error:
-        raise InputError(name, "", f"{header.format} data can't be decoded: {error}", "the file is damaged or cut off: export it again") from None
+        raise InputError(
+            name,
+            "",
+            f"{header.format} data can't be decoded: {error}",
+            "the file is damaged or cut off: export it again",
+        ) from None
     return texels
 
 
@@ -75,4 +87,3 @@ def write_png(texels: Array) -> Array:
 
     plane = texels[:, :, 0] if texels.shape[2] == 1 else texels
     return np.frombuffer(imagecodecs.png_encode(np.ascontiguousarray(plane)), np.uint8)
-

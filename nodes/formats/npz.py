@@ -6,7 +6,6 @@ import io
 import zipfile
 
 import numpy as np
-
 from tangentry.nodes.formats.vertices import vertices_of
 from tangentry.nodes.model import Asset
 from tangentry.pipeline.flow import Array
@@ -20,11 +19,16 @@ def write_npz(asset: Asset) -> Array:
     Triangles are (n, 3) int32 rows of the vertex arrays; tangents (vertices, 4) float32 with the side last; v as the
     asset has it, told by the array `v_down`.
     """
-    arrays: dict[str, Array] = {"v_down": np.array(asset.v_down), "names": np.array([part.name for part in asset.parts])}
+    arrays: dict[str, Array] = {
+        "v_down": np.array(asset.v_down),
+        "names": np.array([part.name for part in asset.parts]),
+    }
     for k, part in enumerate(asset.parts):
         found = vertices_of(part)
         arrays |= {f"{k}/triangles": found.triangles, f"{k}/points": found.points}
-        arrays |= {f"{k}/uv{n}": uv for n, uv in enumerate(found.uvs)} | {f"{k}/colour{n}": one for n, one in enumerate(found.colours)}
+        arrays |= {f"{k}/uv{n}": uv for n, uv in enumerate(found.uvs)} | {
+            f"{k}/colour{n}": one for n, one in enumerate(found.colours)
+        }
         if found.normals is not None:
             arrays[f"{k}/normals"] = found.normals
         if found.tangents is not None:

@@ -5,7 +5,6 @@ from __future__ import annotations
 from dataclasses import replace
 
 import numpy as np
-
 from tangentry.nodes.formats.obj_materials import Materials
 from tangentry.nodes.formats.obj_scan import Statements, read_statements
 from tangentry.nodes.geometry.normals import build_normals
@@ -33,7 +32,9 @@ def read_obj(file: InputFile) -> Asset:
         faces = np.flatnonzero(owner == row).astype(np.int32)
         if len(faces):
             parts.append(_part(found, faces, name, material, smoothing, notes))
-    return Asset(file.path, tuple(parts), materials.all(), tuple(materials.images), False, None, (*notes, *materials.notes))
+    return Asset(
+        file.path, tuple(parts), materials.all(), tuple(materials.images), False, None, (*notes, *materials.notes)
+    )
 
 
 def _owners(found: Statements, materials: Materials) -> tuple[Array, list[tuple[str, int]], Array | None]:
@@ -120,7 +121,9 @@ def _normals(found: Statements, index: Array, part: Part, notes: list[str]) -> S
     unit = np.where((np.abs(length - 1) < 1e-6)[:, None], found.normals, scaled).astype(np.float32)
     if not bare.any():
         return _stream(unit, index)
-    notes.append(f'{np.count_nonzero(bare)} corners of part "{part.name}" have no normals and are given those of their faces')
+    notes.append(
+        f'{np.count_nonzero(bare)} corners of part "{part.name}" have no normals and are given those of their faces'
+    )
     own = build_normals(part, "face")
     rows = np.where(bare, own.index + len(unit), index).astype(np.int32)
     return _stream(np.concatenate([np.where(sound[:, None], unit, 0), own.values]).astype(np.float32), rows)
@@ -152,7 +155,9 @@ def write_obj(asset: Asset, stem: str) -> tuple[OutFile, ...]:
 
 
 def _faces(part: Part, streams: list[Stream | None], before: Array) -> list[str]:
-    columns = [(stream.index + before[k] + 1).astype(str) if stream is not None else None for k, stream in enumerate(streams)]
+    columns = [
+        (stream.index + before[k] + 1).astype(str) if stream is not None else None for k, stream in enumerate(streams)
+    ]
     words = columns[0]
     assert words is not None
     if columns[1] is not None or columns[2] is not None:

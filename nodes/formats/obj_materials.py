@@ -5,18 +5,38 @@ from __future__ import annotations
 import ntpath
 
 import numpy as np
-
 from tangentry.nodes.formats.gltf_reading import sniff
 from tangentry.nodes.model import Image, MapUse, Material
 from tangentry.pipeline.flow import InputFile
 
 ROLES = {
-    "map_kd": "colour", "map_ke": "emissive", "map_ks": "specular", "map_ns": "gloss", "map_d": "opacity", "map_ka": "ambient",
-    "map_pr": "roughness", "map_pm": "metallic", "bump": "height", "map_bump": "height", "disp": "height", "norm": "normal",
+    "map_kd": "colour",
+    "map_ke": "emissive",
+    "map_ks": "specular",
+    "map_ns": "gloss",
+    "map_d": "opacity",
+    "map_ka": "ambient",
+    "map_pr": "roughness",
+    "map_pm": "metallic",
+    "bump": "height",
+    "map_bump": "height",
+    "disp": "height",
+    "norm": "normal",
 }  # norm, map_pr and map_pm: common practice, no source
 OPTION_WORDS = {
-    "-blendu": 1, "-blendv": 1, "-boost": 1, "-bm": 1, "-cc": 1, "-clamp": 1, "-imfchan": 1, "-mm": 2, "-texres": 1, "-type": 1,
-    "-o": 3, "-s": 3, "-t": 3,
+    "-blendu": 1,
+    "-blendv": 1,
+    "-boost": 1,
+    "-bm": 1,
+    "-cc": 1,
+    "-clamp": 1,
+    "-imfchan": 1,
+    "-mm": 2,
+    "-texres": 1,
+    "-type": 1,
+    "-o": 3,
+    "-s": 3,
+    "-t": 3,
 }
 
 

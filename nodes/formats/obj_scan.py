@@ -6,7 +6,6 @@ from typing import NamedTuple
 
 import numpy as np
 from numba import njit
-
 from tangentry.nodes.formats.scan import as_text, read_integer, read_number, skip_line, skip_space, skip_word
 from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array, InputFile
@@ -51,7 +50,9 @@ def _line(text: Array, at: int) -> int:
 
 
 def _words(text: Array, at: int) -> tuple[str, str]:
-    line = text[at : skip_line(text, at)].tobytes().decode("utf-8", "replace").replace("\\\r\n", " ").replace("\\\n", " ")
+    line = (
+        text[at : skip_line(text, at)].tobytes().decode("utf-8", "replace").replace("\\\r\n", " ").replace("\\\n", " ")
+    )
     keyword, _, rest = line.strip().partition(" ")
     if "\t" in keyword:
         keyword, _, rest = line.strip().partition("\t")

@@ -5,7 +5,6 @@ from __future__ import annotations
 from typing import NamedTuple
 
 import numpy as np
-
 from tangentry.nodes.formats.gltf_reading import sniff
 from tangentry.nodes.formats.vertices import vertices_of
 from tangentry.nodes.model import Asset, Image, MapUse, Material, Part, Stream
@@ -13,9 +12,14 @@ from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array, InputFile
 
 TYPES = {
-    **dict.fromkeys(("char", "int8"), "i1"), **dict.fromkeys(("uchar", "uint8"), "u1"), **dict.fromkeys(("short", "int16"), "i2"),
-    **dict.fromkeys(("ushort", "uint16"), "u2"), **dict.fromkeys(("int", "int32"), "i4"), **dict.fromkeys(("uint", "uint32"), "u4"),
-    **dict.fromkeys(("float", "float32"), "f4"), **dict.fromkeys(("double", "float64"), "f8"),
+    **dict.fromkeys(("char", "int8"), "i1"),
+    **dict.fromkeys(("uchar", "uint8"), "u1"),
+    **dict.fromkeys(("short", "int16"), "i2"),
+    **dict.fromkeys(("ushort", "uint16"), "u2"),
+    **dict.fromkeys(("int", "int32"), "i4"),
+    **dict.fromkeys(("uint", "uint32"), "u4"),
+    **dict.fromkeys(("float", "float32"), "f4"),
+    **dict.fromkeys(("double", "float64"), "f8"),
 }
 ORDERS = {"ascii": "", "binary_little_endian": "<", "binary_big_endian": ">"}
 UV_NAMES = (("s", "t"), ("u", "v"), ("texture_u", "texture_v"))
@@ -39,7 +43,9 @@ class Element(NamedTuple):
     properties: list[Property]
 
 
-Columns = dict[str, Array]  # scalar properties (count,) by name; lists as name -> flat values, and name + "#" -> lengths
+Columns = dict[
+    str, Array
+]  # scalar properties (count,) by name; lists as name -> flat values, and name + "#" -> lengths
 
 
 def read_ply(file: InputFile) -> Asset:
@@ -49,7 +55,11 @@ def read_ply(file: InputFile) -> Asset:
     """
     content = file.bytes()
     order, elements, textures, body = _header(file, content)
-    read = _read_ascii(file, content[body:], elements) if order == "" else _read_binary(file, content[body:], elements, order)
+    read = (
+        _read_ascii(file, content[body:], elements)
+        if order == ""
+        else _read_binary(file, content[body:], elements, order)
+    )
     if "tristrips" in read:
         raise InputError(file, "element tristrips", "triangle strips are not read", "export with faces")
     vertex, face = read.get("vertex", {}), read.get("face", {})
@@ -100,7 +110,12 @@ def _read_binary(file: InputFile, body: Array, elements: list[Element], order: s
             kinds = np.dtype([(f"{k}", order + one.kind) for k, one in enumerate(element.properties)])
             size = kinds.itemsize * element.count
             if at + size > len(body):
-                raise InputError(file, f"element {element.name}", f"{element.count} announced, {(len(body) - at) // max(kinds.itemsize, 1)} there", AGAIN)
+                raise InputError(
+                    file,
+                    f"element {element.name}",
+                    f"{element.count} announced, {(len(body) - at) // max(kinds.itemsize, 1)} there",
+                    AGAIN,
+                )
             rows = body[at : at + size].view(kinds) if size else np.zeros(0, kinds)
             read[element.name] = {one.name: rows[f"{k}"] for k, one in enumerate(element.properties)}
             at += size
@@ -129,7 +144,9 @@ def _binary_lists(file: InputFile, body: Array, at: int, element: Element, order
                 lengths[one.name].append(count)
             kind = np.dtype(order + one.kind)
             if count < 0 or at + kind.itemsize * count > len(data):
-                raise InputError(file, f"{element.name} {row}", f"a list of {count} does not fit: the file is cut off", AGAIN)
+                raise InputError(
+                    file, f"{element.name} {row}", f"a list of {count} does not fit: the file is cut off", AGAIN
+                )
             out[one.name].append(np.frombuffer(data, kind, count, at))
             at += kind.itemsize * count
     columns: Columns = {name: np.concatenate(values) if values else np.zeros(0) for name, values in out.items()}
@@ -177,7 +194,12 @@ def _read_ascii(file: InputFile, body: Array, elements: list[Element]) -> dict[s
         width = len(element.properties)
         if not any(one.length for one in element.properties):
             if at + width * element.count > len(words):
-                raise InputError(file, f"element {element.name}", f"{element.count} announced, {(len(words) - at) // max(width, 1)} there", AGAIN)
+                raise InputError(
+                    file,
+                    f"element {element.name}",
+                    f"{element.count} announced, {(len(words) - at) // max(width, 1)} there",
+                    AGAIN,
+                )
             rows = words[at : at + width * element.count].reshape(element.count, width)
             read[element.name] = {one.name: rows[:, k] for k, one in enumerate(element.properties)}
             at += width * element.count
@@ -197,7 +219,9 @@ def _ascii_lists(file: InputFile, words: Array, at: int, element: Element) -> tu
                 at += 1
                 lengths[one.name].append(count)
             if count < 0 or at + count > len(words):
-                raise InputError(file, f"{element.name} {row}", f"a list of {count} does not fit: the file is cut off", AGAIN)
+                raise InputError(
+                    file, f"{element.name} {row}", f"a list of {count} does not fit: the file is cut off", AGAIN
+                )
             out[one.name].append(words[at : at + count])
             at += count
     columns: Columns = {name: np.concatenate(values) if values else np.zeros(0) for name, values in out.items()}
@@ -206,7 +230,9 @@ def _ascii_lists(file: InputFile, words: Array, at: int, element: Element) -> tu
 
 def _asset(file: InputFile, vertex: Columns, face: Columns, name: str, textures: list[str]) -> Asset:
     if not all(axis in vertex for axis in "xyz"):
-        raise InputError(file, "element vertex", f"it has {', '.join(vertex) or 'no properties'}, but not x, y and z", AGAIN)
+        raise InputError(
+            file, "element vertex", f"it has {', '.join(vertex) or 'no properties'}, but not x, y and z", AGAIN
+        )
     points = _table(vertex, ("x", "y", "z"))
     finite = np.isfinite(points).all(axis=1)
     if not finite.all():
@@ -216,14 +242,26 @@ def _asset(file: InputFile, vertex: Columns, face: Columns, name: str, textures:
     if index.size and (index.min() < 0 or index.max() >= len(points)):
         corner = int(np.argmax((index < 0) | (index >= len(points))))
         row = int(np.searchsorted(np.cumsum(sizes), corner, side="right"))
-        raise InputError(file, f"face {row}", f"vertex index {int(index[corner])}, but the file has {len(points)} vertices", AGAIN)
+        raise InputError(
+            file, f"face {row}", f"vertex index {int(index[corner])}, but the file has {len(points)} vertices", AGAIN
+        )
     at = index.astype(np.int32)
     notes = []
     if (sizes < 3).any():
         notes.append(f"{int((sizes < 3).sum())} faces of fewer than three corners")
     starts = np.concatenate([[0], np.cumsum(sizes)]).astype(np.int32)
-    normals = Stream(_table(vertex, ("nx", "ny", "nz")), at) if all(one in vertex for one in ("nx", "ny", "nz")) else None
-    part = Part(file.stem, 0 if textures else -1, starts, Stream(points, at), normals, _uvs(vertex, face, at), _colours(vertex, at))
+    normals = (
+        Stream(_table(vertex, ("nx", "ny", "nz")), at) if all(one in vertex for one in ("nx", "ny", "nz")) else None
+    )
+    part = Part(
+        file.stem,
+        0 if textures else -1,
+        starts,
+        Stream(points, at),
+        normals,
+        _uvs(vertex, face, at),
+        _colours(vertex, at),
+    )
     images = []
     for texture in textures:
         beside = file.beside(texture.replace("\\", "/").split("/")[-1])
@@ -267,7 +305,12 @@ def write_ply(asset: Asset) -> Array:
     has_normals = all(one.normals is not None for one in found)
     has_uvs = all(one.uvs for one in found)
     has_frames = all(one.tangents is not None for one in found)
-    names = [*"xyz", *(("nx", "ny", "nz") if has_normals else ()), *("st" if has_uvs else ()), *(("tx", "ty", "tz", "side") if has_frames else ())]
+    names = [
+        *"xyz",
+        *(("nx", "ny", "nz") if has_normals else ()),
+        *("st" if has_uvs else ()),
+        *(("tx", "ty", "tz", "side") if has_frames else ()),
+    ]
     tables, faces, before = [], [], 0
     for one in found:
         columns = [one.points]
@@ -286,5 +329,7 @@ def write_ply(asset: Asset) -> Array:
     header += [f"property float {name}" for name in names]
     header += [f"element face {sum(map(len, faces))}", "property list uchar int vertex_indices", "end_header"]
     parts = [np.frombuffer(("\n".join(header) + "\n").encode(), np.uint8)]
-    parts += [table.view(np.uint8).reshape(-1) for table in tables] + [rows.view(np.uint8).reshape(-1) for rows in faces]
+    parts += [table.view(np.uint8).reshape(-1) for table in tables] + [
+        rows.view(np.uint8).reshape(-1) for rows in faces
+    ]
     return np.concatenate(parts)

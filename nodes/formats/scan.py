@@ -8,7 +8,6 @@ from __future__ import annotations
 
 import numpy as np
 from numba import njit
-
 from tangentry.pipeline.flow import Array
 
 NEWLINE, HASH, BACKSLASH = 10, 35, 92

@@ -5,7 +5,6 @@ from __future__ import annotations
 from typing import NamedTuple
 
 import numpy as np
-
 from tangentry.nodes.geometry.corners import distinct_rows, distinct_values
 from tangentry.nodes.geometry.triangles import triangulate
 from tangentry.nodes.model import Frames, Part, Stream

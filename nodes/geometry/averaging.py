@@ -1,9 +1,9 @@
 """Tangent frames as sums over the triangles around a vertex, by weights of one's choice, skew kept.
 
-    face      each face its own frame
-    uniform   every triangle counts alike
-    area      by its area in space (Max 1999 discusses such weights for normals)
-    angle     by its angle at the corner (Thuermer & Wuethrich 1998)
+face      each face its own frame
+uniform   every triangle counts alike
+area      by its area in space (Max 1999 discusses such weights for normals)
+angle     by its angle at the corner (Thuermer & Wuethrich 1998)
 """
 
 from __future__ import annotations
@@ -12,7 +12,6 @@ from typing import NamedTuple
 
 import numpy as np
 from numba import njit
-
 from tangentry.nodes.geometry.directions import Directions
 from tangentry.nodes.geometry.vectors import dot, unit
 from tangentry.pipeline.flow import Array
@@ -48,7 +47,9 @@ def average(triangles: Array, vertex: Array, normal: Array, found: Directions, w
 
 
 @njit(cache=True, nogil=True)
-def _add_up(triangles: Array, vertex: Array, tangent: Array, bitangent: Array, weight: Array, t_sum: Array, b_sum: Array) -> None:
+def _add_up(
+    triangles: Array, vertex: Array, tangent: Array, bitangent: Array, weight: Array, t_sum: Array, b_sum: Array
+) -> None:
     for t in range(len(triangles)):
         for k in range(3):
             v, w = vertex[triangles[t, k]], np.float64(weight[t, k])

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import numpy as np
 from numba import njit
-
 from tangentry.pipeline.flow import Array
 
 AHEAD = 12  # keys whose slot is touched before it is needed: the table is larger than the cache
@@ -35,7 +34,11 @@ def distinct_values(*arrays: Array) -> tuple[Array, Array]:
 
     arrays   (rows, width) float32 each
     """
-    planes = [np.ascontiguousarray(array[:, k] + np.float32(0)).view(np.int32) for array in arrays for k in range(array.shape[1])]
+    planes = [
+        np.ascontiguousarray(array[:, k] + np.float32(0)).view(np.int32)
+        for array in arrays
+        for k in range(array.shape[1])
+    ]
     return distinct_rows(*planes)
 
 

@@ -12,7 +12,6 @@ from typing import NamedTuple
 
 import numpy as np
 from numba import njit
-
 from tangentry.nodes.model import Part, Stream
 from tangentry.pipeline.flow import Array
 
@@ -45,8 +44,18 @@ def triangle_directions(part: Part, triangles: Array, uv: Stream, v_down: bool) 
 
 @njit(cache=True, nogil=True)
 def _directions(
-    triangles: Array, points: Array, at: Array, uvs: Array, uv_at: Array, up: float,
-    tangent: Array, bitangent: Array, side: Array, uv_area: Array, area: Array, angle: Array,
+    triangles: Array,
+    points: Array,
+    at: Array,
+    uvs: Array,
+    uv_at: Array,
+    up: float,
+    tangent: Array,
+    bitangent: Array,
+    side: Array,
+    uv_area: Array,
+    area: Array,
+    angle: Array,
 ) -> None:
     for t in range(len(triangles)):
         c0, c1, c2 = triangles[t, 0], triangles[t, 1], triangles[t, 2]

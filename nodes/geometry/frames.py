@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import numpy as np
-
 from tangentry.nodes.geometry import averaging, mikktspace
 from tangentry.nodes.geometry.corners import distinct_rows, distinct_values
 from tangentry.nodes.geometry.directions import Directions, triangle_directions
@@ -44,7 +43,9 @@ def solve_frames(part: Part, uv: Stream, uv_set: int, v_down: bool, method: str)
 
 def identity(part: Part, *streams: Stream | None) -> Array:
     """(corners,) int32: equal where a corner's position and the values of every stream are, whatever the indices say."""
-    labels = [distinct_values(stream.values)[0][stream.index] for stream in (part.points, *streams) if stream is not None]
+    labels = [
+        distinct_values(stream.values)[0][stream.index] for stream in (part.points, *streams) if stream is not None
+    ]
     return distinct_rows(*labels)[0]
 
 

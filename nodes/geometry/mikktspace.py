@@ -15,7 +15,6 @@ from typing import NamedTuple
 
 import numpy as np
 from numba import njit
-
 from tangentry.nodes.geometry.directions import Directions
 from tangentry.nodes.geometry.unions import number, union
 from tangentry.pipeline.flow import Array
@@ -29,7 +28,16 @@ class Solved(NamedTuple):
     index: Array  # (corners,) int32: the group of each corner
 
 
-def solve(starts: Array, triangles: Array, face: Array, vertex: Array, points: Array, at: Array, normal: Array, found: Directions) -> Solved:
+def solve(
+    starts: Array,
+    triangles: Array,
+    face: Array,
+    vertex: Array,
+    points: Array,
+    at: Array,
+    normal: Array,
+    found: Directions,
+) -> Solved:
     """Solve a part.
 
     starts     (faces + 1,) int32
@@ -53,7 +61,9 @@ def solve(starts: Array, triangles: Array, face: Array, vertex: Array, points: A
     return Solved(tangent, group_side, index)
 
 
-def sides_of_faces(starts: Array, face: Array, vertex: Array, found: Directions) -> tuple[Array, Array, tuple[Array, Array, Array]]:
+def sides_of_faces(
+    starts: Array, face: Array, vertex: Array, found: Directions
+) -> tuple[Array, Array, tuple[Array, Array, Array]]:
     """The side each face is seen from, whether it has area, and its edges: (side, solid, edge table).
 
     side (faces,) int8: +1 as wound, -1 mirrored; a face without UV area takes the side of its neighbours, 0 where they have none.
@@ -108,7 +118,9 @@ def _edge_slot(a: int, b: int, size: int) -> int:
 
 
 @njit(cache=True, nogil=True)
-def _adopt_sides(starts: Array, vertex: Array, solid: Array, side: Array, slots: Array, chain: Array, owner: Array) -> None:
+def _adopt_sides(
+    starts: Array, vertex: Array, solid: Array, side: Array, slots: Array, chain: Array, owner: Array
+) -> None:
     """Faces without UV area take the side that most of their neighbours have, wave after wave."""
     faces = len(starts) - 1
     front = np.empty(faces, np.int32)
@@ -149,7 +161,9 @@ def _adopt_sides(starts: Array, vertex: Array, solid: Array, side: Array, slots:
 
 
 @njit(cache=True, nogil=True)
-def _join(starts: Array, vertex: Array, solid: Array, side: Array, slots: Array, chain: Array, owner: Array, parent: Array) -> None:
+def _join(
+    starts: Array, vertex: Array, solid: Array, side: Array, slots: Array, chain: Array, owner: Array, parent: Array
+) -> None:
     """Join the corners at both ends of every edge between faces seen from one side."""
     for f in range(len(starts) - 1):
         if not solid[f]:
@@ -171,8 +185,17 @@ def _join(starts: Array, vertex: Array, solid: Array, side: Array, slots: Array,
 
 @njit(cache=True, nogil=True)
 def _add_up(
-    triangles: Array, face: Array, points: Array, at: Array, normal: Array,
-    tangent: Array, tri_side: Array, side: Array, index: Array, total: Array, group_side: Array,
+    triangles: Array,
+    face: Array,
+    points: Array,
+    at: Array,
+    normal: Array,
+    tangent: Array,
+    tri_side: Array,
+    side: Array,
+    index: Array,
+    total: Array,
+    group_side: Array,
 ) -> None:
     for t in range(len(triangles)):
         for k in range(3):

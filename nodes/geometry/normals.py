@@ -1,17 +1,16 @@
 """Vertex normals as sums over the faces around a point.
 
-    face        each face its own
-    area        all faces of a point, by area (Max 1999)
-    angle       all faces of a point, by the angle at the corner (Thuermer & Wuethrich 1998)
-    crease      by angle, but never across an edge whose faces stand at more than a given angle
-    smoothing   by angle, but only between faces of one smoothing group (group 0: none)
+face        each face its own
+area        all faces of a point, by area (Max 1999)
+angle       all faces of a point, by the angle at the corner (Thuermer & Wuethrich 1998)
+crease      by angle, but never across an edge whose faces stand at more than a given angle
+smoothing   by angle, but only between faces of one smoothing group (group 0: none)
 """
 
 from __future__ import annotations
 
 import numpy as np
 from numba import njit
-
 from tangentry.nodes.geometry.corners import distinct_rows, distinct_values
 from tangentry.nodes.geometry.triangles import triangulate
 from tangentry.nodes.geometry.unions import number, union
@@ -81,7 +80,9 @@ def _add_up(triangles: Array, index: Array, normal: Array, weight: Array, total:
 
 def _joined(part: Part, point: Array, face_normal: Array, method: str, crease: float) -> Array:
     """(corners,) int32: groups of corners joined over the edges that are smooth."""
-    group = part.smoothing if method == "smoothing" and part.smoothing is not None else np.zeros(part.face_count, np.int32)
+    group = (
+        part.smoothing if method == "smoothing" and part.smoothing is not None else np.zeros(part.face_count, np.int32)
+    )
     limit = np.cos(np.radians(crease)) if method == "crease" else 2.0
     parent = np.arange(part.corner_count, dtype=np.int32)
     _join_smooth(part.starts, point.astype(np.int32), face_normal, np.ascontiguousarray(group, np.int32), limit, parent)
@@ -125,5 +126,3 @@ def _join_smooth(starts: Array, point: Array, face_normal: Array, group: Array, 
                 other = chain[other]
             chain[c] = slots[slot]
             slots[slot] = c
-
-

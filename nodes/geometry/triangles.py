@@ -9,7 +9,6 @@ from __future__ import annotations
 
 import numpy as np
 from numba import njit
-
 from tangentry.nodes.model import Part
 from tangentry.pipeline.flow import Array
 
@@ -29,12 +28,23 @@ def triangulate(part: Part) -> tuple[Array, Array]:
     uv = part.uvs[0] if part.uvs else None
     uv_values = uv.values if uv is not None else np.zeros((1, 2), np.float32)
     uv_index = uv.index if uv is not None else np.zeros(len(part.points.index), np.int32)
-    _cut_all(part.starts, part.points.values, part.points.index, uv_values, uv_index, int(sizes.max(initial=3)), triangles, face)
+    _cut_all(
+        part.starts,
+        part.points.values,
+        part.points.index,
+        uv_values,
+        uv_index,
+        int(sizes.max(initial=3)),
+        triangles,
+        face,
+    )
     return triangles, face
 
 
 @njit(cache=True, nogil=True)
-def _cut_all(starts: Array, points: Array, at: Array, uvs: Array, uv_at: Array, most: int, triangles: Array, face: Array) -> None:
+def _cut_all(
+    starts: Array, points: Array, at: Array, uvs: Array, uv_at: Array, most: int, triangles: Array, face: Array
+) -> None:
     done = 0
     ring = np.empty(most, np.int32)
     flat = np.empty((most, 2))
@@ -119,7 +129,9 @@ def _is_ear(flat: Array, ring: Array, size: int, k: int) -> bool:
         if p == a or p == b or p == c:
             continue
         if _turn(flat, a, b, p) >= 0 and _turn(flat, b, c, p) >= 0 and _turn(flat, c, a, p) >= 0:
-            same = (flat[p, 0] == flat[a, 0] and flat[p, 1] == flat[a, 1]) or (flat[p, 0] == flat[c, 0] and flat[p, 1] == flat[c, 1])
+            same = (flat[p, 0] == flat[a, 0] and flat[p, 1] == flat[a, 1]) or (
+                flat[p, 0] == flat[c, 0] and flat[p, 1] == flat[c, 1]
+            )
             if not same:
                 return False
     return True

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from numba import njit
-
 from tangentry.pipeline.flow import Array
 
 

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import numpy as np
 from numba import njit
-
 from tangentry.nodes.geometry.corners import distinct_values
 from tangentry.nodes.geometry.unions import number, root, union
 from tangentry.pipeline.flow import Array
@@ -51,7 +50,12 @@ def _join(points: Array, cells: Array, square: float, parent: Array) -> None:
             cx, cy, cz = x + near % 3 - 1, y + near // 3 % 3 - 1, z + near // 9 - 1
             other = slots[_slot(cx, cy, cz, size)]
             while other >= 0:
-                if cells[other, 0] == cx and cells[other, 1] == cy and cells[other, 2] == cz and root(parent, other) != root(parent, p):
+                if (
+                    cells[other, 0] == cx
+                    and cells[other, 1] == cy
+                    and cells[other, 2] == cz
+                    and root(parent, other) != root(parent, p)
+                ):
                     gap = 0.0
                     for k in range(3):
                         gap += (points[p, k] - points[other, k]) ** 2

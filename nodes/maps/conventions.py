@@ -5,7 +5,6 @@ from __future__ import annotations
 from typing import NamedTuple
 
 import numpy as np
-
 from tangentry.nodes.maps.encodings import decode_texels
 from tangentry.pipeline.flow import Array
 
@@ -35,8 +34,8 @@ def measure_green(texels: Array) -> Green:
     p, q = -normals[..., 0] / safe, -normals[..., 1] / safe
     if min(z.shape) < 3:
         return Green("undecided", 0.0)
-    dp_dy = (p[:-2, 1:-1] - p[2:, 1:-1])  # rows go down, y goes up
-    dq_dx = (q[1:-1, 2:] - q[1:-1, :-2])
+    dp_dy = p[:-2, 1:-1] - p[2:, 1:-1]  # rows go down, y goes up
+    dq_dx = q[1:-1, 2:] - q[1:-1, :-2]
     usable = sure[1:-1, 1:-1] & sure[:-2, 1:-1] & sure[2:, 1:-1] & sure[1:-1, 2:] & sure[1:-1, :-2]
     a, b = dp_dy[usable].astype(np.float64), dq_dx[usable].astype(np.float64)
     power = float(np.sqrt((a * a).sum() * (b * b).sum()))

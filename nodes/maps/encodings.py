@@ -14,7 +14,6 @@ from __future__ import annotations
 from dataclasses import replace
 
 import numpy as np
-
 from tangentry.nodes.model import Sheet
 from tangentry.pipeline.flow import Array
 
@@ -60,7 +59,9 @@ def decode_texels(texels: Array, encoding: str, green: str) -> Array:
             x, y = normals[..., 0], normals[..., 1]
             normals = np.stack([x, y, np.sqrt(np.maximum(0, 1 - x * x - y * y))], axis=-1)
     length = np.sqrt(np.einsum("...i,...i->...", normals, normals))[..., None]
-    normals = np.where(length > 0, normals / np.where(length > 0, length, 1), np.array([0, 0, 1], np.float32)).astype(np.float32)
+    normals = np.where(length > 0, normals / np.where(length > 0, length, 1), np.array([0, 0, 1], np.float32)).astype(
+        np.float32
+    )
     return normals * np.array([1, -1, 1], np.float32) if green == "down" else normals
 
 
@@ -86,7 +87,11 @@ def decoded(sheet: Sheet) -> Array:
 def encoded(sheet: Sheet, encoding: str, bits: int, green: str) -> Sheet:
     """A sheet's normals in another encoding. Codes that only change the side of green are flipped exactly."""
     wanted = np.uint8 if bits == 8 else np.uint16
-    if sheet.encoding == encoding == "unorm" and sheet.texels.dtype == wanted and "undecided" not in (sheet.green, green):
+    if (
+        sheet.encoding == encoding == "unorm"
+        and sheet.texels.dtype == wanted
+        and "undecided" not in (sheet.green, green)
+    ):
         texels = sheet.texels
         if sheet.green != green:
             texels = texels.copy()

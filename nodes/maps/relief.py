@@ -9,7 +9,6 @@ Back by Frankot & Chellappa (1988): the integrable surface nearest to the slopes
 from __future__ import annotations
 
 import numpy as np
-
 from tangentry.pipeline.flow import Array
 
 SCHARR = (3 / 16, 10 / 16, 3 / 16)

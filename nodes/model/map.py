@@ -14,7 +14,9 @@ class Sheet:
     holds: str  # "normal", "height", "colour", "data"
     space: str = ""  # of normals: "tangent", "object" or "world"
     green: str = ""  # of tangent-space normals: "up" (y grows up the image), "down" or "undecided"
-    encoding: str = "unorm"  # "unorm": -1..1 over the code range; "snorm"; "xy": z rebuilt; "octahedral"; "float": as is
+    encoding: str = (
+        "unorm"  # "unorm": -1..1 over the code range; "snorm"; "xy": z rebuilt; "octahedral"; "float": as is
+    )
     name: str = ""  # where it came from, for messages
 
 

@@ -1,7 +1,7 @@
 """How long whole commands take, each beside something well known in the same run. Prints ratios of medians.
 
-    python tests/benchmarks/builds.py            all
-    python tests/benchmarks/builds.py nothing    one: help, nothing, workers, demo, large
+python tests/benchmarks/builds.py            all
+python tests/benchmarks/builds.py nothing    one: help, nothing, workers, demo, large
 """
 
 from __future__ import annotations
@@ -53,15 +53,19 @@ def pairs(first: Sequence[str], second: Sequence[str], cwd: Path | None = None, 
 
 def peak_megabytes(words: Sequence[str]) -> tuple[float, float]:
     """Wall-clock time and peak memory of a command, measured by a process that runs nothing else."""
-    script = "import resource, subprocess, sys, time; t = time.perf_counter(); subprocess.run(sys.argv[1:], stdout=subprocess.DEVNULL); print(time.perf_counter() - t, resource.getrusage(resource.RUSAGE_CHILDREN).ru_maxrss)"  # noqa: E501
-    told = subprocess.run([sys.executable, "-c", script, *words], capture_output=True, text=True, check=True).stdout.split()
+    script = "import resource, subprocess, sys, time; t = time.perf_counter(); subprocess.run(sys.argv[1:], stdout=subprocess.DEVNULL); print(time.perf_counter() - t, resource.getrusage(resource.RUSAGE_CHILDREN).ru_maxrss)"
+    told = subprocess.run(
+        [sys.executable, "-c", script, *words], capture_output=True, text=True, check=True
+    ).stdout.split()
     return float(told[0]), float(told[1]) / 1024
 
 
 def help_starts(_: Path) -> None:
     """--help beside the import of numpy."""
     ours, numpy = pairs([TANGENTRY, "--help"], [sys.executable, "-c", "import numpy"])
-    print(f"help      tangentry --help {ours * 1e3:.0f} ms, python -c 'import numpy' {numpy * 1e3:.0f} ms: {ours / numpy:.2f}")
+    print(
+        f"help      tangentry --help {ours * 1e3:.0f} ms, python -c 'import numpy' {numpy * 1e3:.0f} ms: {ours / numpy:.2f}"
+    )
 
 
 def nothing_changed(folder: Path) -> None:
@@ -70,13 +74,19 @@ def nothing_changed(folder: Path) -> None:
     (folder / ".gitignore").write_text(".tangentry\n")
     build, status = [TANGENTRY, "build", "graph.yaml"], ["git", "status"]
     seconds(build, folder)
-    for words in (["init", "-q"], ["add", "-A"], ["-c", "user.name=bench", "-c", "user.email=bench@localhost", "commit", "-qm", "all"]):
+    for words in (
+        ["init", "-q"],
+        ["add", "-A"],
+        ["-c", "user.name=bench", "-c", "user.email=bench@localhost", "commit", "-qm", "all"],
+    ):
         seconds(["git", *words], folder)
     time.sleep(2.5)
     seconds(build, folder)
     ours, git = pairs(build, status, folder)
     bare = statistics.median(seconds([sys.executable, "-c", "pass"]) for _ in range(11))
-    print(f"nothing   build {ours * 1e3:.0f} ms, git status {git * 1e3:.0f} ms, python {bare * 1e3:.0f} ms: (build - python) / git {(ours - bare) / git:.2f}")  # noqa: E501
+    print(
+        f"nothing   build {ours * 1e3:.0f} ms, git status {git * 1e3:.0f} ms, python {bare * 1e3:.0f} ms: (build - python) / git {(ours - bare) / git:.2f}"
+    )
 
 
 def _library(folder: Path, count: int) -> None:
@@ -117,20 +127,23 @@ def _many_props(folder: Path, copies: int) -> Path:
 
 def demo(folder: Path) -> None:
     """The demo library: a first build, and one with nothing changed."""
-    shutil.copytree(ROOT / "graphs" / "ferry_terminal", folder / "demo", ignore=shutil.ignore_patterns("build", ".tangentry"))
+    shutil.copytree(
+        ROOT / "graphs" / "ferry_terminal", folder / "demo", ignore=shutil.ignore_patterns("build", ".tangentry")
+    )
     build = [TANGENTRY, "build", str(folder / "demo" / "ferry_terminal.yaml")]
     first, memory = peak_megabytes(build)
     time.sleep(2.5)
     seconds(build)
     again, memory_again = peak_megabytes(build)
-    print(f"demo      first build {first:.2f} s, {memory:.0f} MB; nothing changed {again * 1e3:.0f} ms, {memory_again:.0f} MB")
+    print(
+        f"demo      first build {first:.2f} s, {memory:.0f} MB; nothing changed {again * 1e3:.0f} ms, {memory_again:.0f} MB"
+    )
 
 
 def large(folder: Path) -> None:
     """One OBJ of 1,000,000 triangles, load to export."""
     sys.path.insert(0, str(ROOT / "tests"))
     from shapes import torus
-
     from tangentry.nodes.formats.obj import write_obj
 
     (folder / "props").mkdir()
