@@ -1,0 +1,207 @@
+"""What runs, what is reused, and how a build ends."""
+
+from __future__ import annotations
+
+import random
+import shutil
+from pathlib import Path
+from typing import Any
+
+import pytest
+
+EVERY = sorted(["take", "loud", "judge", "put"] * 3 + ["join"])
+
+
+def states(record: Any) -> dict[str, str]:
+    return {asset.name: asset.state for asset in record.assets}
+
+
+def test_a_first_build_runs_every_step_once(project):
+    record = project.build()
+
+    assert project.calls == EVERY
+    assert record.sound and set(states(record).values()) == {"made"}
+    assert project.read("made/a.out") == "HELLO A\nHELLO A\n"
+
+
+def test_a_second_build_runs_nothing(project):
+    project.build()
+
+    record = project.build()
+
+    assert project.calls == []
+    assert set(states(record).values()) == {"unchanged"} and record.count("reused") == 13
+
+
+def test_touching_one_prop_reruns_only_its_branch(project):
+    project.build()
+    project.write("props/b.txt", "good day b\n")
+
+    record = project.build()
+
+    assert project.calls == sorted(["take", "loud", "judge", "put", "join"])
+    assert states(record) == {"props/a.txt": "unchanged", "props/b.txt": "made", "props/c.txt": "unchanged"}
+
+
+def test_a_rerun_that_gives_the_same_value_stops_there(project):
+    project.build()
+    project.edit("kinds/helper.py", "upper()", "upper().replace('ß', 'SS')")
+
+    project.build()
+
+    assert project.calls == ["loud"] * 3
+
+
+def test_a_changed_setting_reruns_only_what_is_downstream(project):
+    project.build()
+
+    project.build({"times": 3})
+
+    assert project.calls == sorted(["loud", "judge", "put"] * 3 + ["join"])
+
+
+def test_a_side_file_that_appears_reruns_its_asset(project):
+    project.build()
+    project.write("props/a.side", "and more\n")
+
+    record = project.build()
+
+    assert states(record)["props/a.txt"] == "made" and project.calls.count("take") == 1
+    assert "AND MORE" in project.read("made/a.out")
+
+
+def test_a_side_file_that_changes_or_goes_reruns_its_asset(project):
+    side = project.write("props/a.side", "and more\n")
+    project.build()
+    side.write_text("and less\n")
+    project.build()
+    assert project.calls.count("take") == 1 and "AND LESS" in project.read("made/a.out")
+    side.unlink()
+
+    project.build()
+
+    assert project.read("made/a.out") == "HELLO A\nHELLO A\n"
+
+
+def test_one_assets_failure_never_stops_the_others(project):
+    project.write("props/b.txt", "broken\n")
+
+    record = project.build()
+
+    assert states(record) == {"props/a.txt": "made", "props/b.txt": "failed", "props/c.txt": "made"}
+    assert record.assets[1].errors == ["props/b.txt: word 1: it says broken; write something else"]
+    assert "props/b.txt" not in project.read("made/all.out")
+
+
+def test_a_broken_file_is_not_read_again_until_it_changes(project):
+    project.write("props/b.txt", "broken\n")
+    project.build()
+
+    assert project.build().assets[1].state == "failed"
+    assert project.calls == []
+
+
+def test_a_nodes_own_fault_is_told_with_its_traceback_and_tried_again(project):
+    project.write("props/b.txt", "bug\n")
+    record = project.build()
+    step = record.assets[1].plain()["steps"][0]
+
+    project.build()
+
+    assert step["error"] == 'node "raw" (take) failed: RuntimeError: a bug of the node\'s own'
+    assert "Traceback" in step["detail"] and project.calls == ["take"]
+
+
+def test_a_faulty_asset_is_held_back(project):
+    project.write("props/b.txt", "rude\n")
+
+    record = project.build()
+
+    assert states(record)["props/b.txt"] == "faulty" and not record.sound
+    assert not (project.folder / "made/b.out").exists()
+    assert [one["id"] for one in record.assets[1].findings] == ["rude"]
+
+
+def test_what_a_skip_leaves_out_optional_inputs_see_as_nothing(project):
+    project.edit("graph.yaml", "text: raw,", "text: raw, other: extra,")
+    project.edit("graph.yaml", "  said:", '  extra:   {node: take, file: "props/{stem}.more", if_missing: skip, log: LOG}\n  said:')
+    project.edit("graph.yaml", "LOG", str(project.log))
+    project.write("props/a.more", "plus\n")
+
+    record = project.build()
+
+    assert record.sound and "PLUS" in project.read("made/a.out") and "PLUS" not in project.read("made/b.out")
+
+
+def test_what_needs_a_skipped_value_is_skipped_and_says_so(project):
+    project.edit("graph.yaml", 'file: "{file}",', 'file: "{stem}.gone", if_missing: skip,')
+
+    record = project.build()
+
+    told = {step["node"]: (step["state"], step.get("because")) for step in record.assets[0].steps}
+    assert told == {"raw": ("ran", None), "said": ("skipped", "raw"), "verdict": ("skipped", "said"), "done": ("skipped", "said")}
+
+
+def test_reasons_are_data(project):
+    project.build()
+    project.write("props/b.txt", "good day b\n")
+
+    steps = {step["node"]: step for step in project.build({"times": 5}).assets[1].steps}
+
+    assert [reason["text"] for reason in steps["raw"]["reasons"]] == ["file props/b.txt changed"]
+    assert steps["said"]["reasons"][0] | {} == {
+        "what": "setting", "name": "times", "before": 2, "after": 5, "text": "setting times changed 2 -> 5",
+    }
+
+
+def edit(project: Any, rng: random.Random, fresh: str) -> set[str] | None:
+    """Change one thing of a project, anything; gives the assets it may concern, None for all."""
+    props = project.folder / "props"
+    if not (props / "a.txt").exists():
+        project.write("props/a.txt", f"hello {fresh}\n")
+        return {"props/a.txt"}
+    stem = rng.choice(sorted(path.stem for path in props.glob("*.txt")))
+    what = rng.choice(["prop", "side", "side gone", "setting", "source", "helper", "added", "renamed", "removed", "wiring"])
+    if what in ("prop", "side"):
+        project.write(f"props/{stem}.{'txt' if what == 'prop' else 'side'}", f"words {fresh}\n")
+    elif what == "side gone":
+        (props / f"{stem}.side").unlink(missing_ok=True)
+    elif what == "added":
+        stem = f"d{fresh}"
+        project.write(f"props/{stem}.txt", "new\n")
+    elif what == "renamed":
+        (props / f"{stem}.txt").rename(props / f"r{fresh}.txt")
+        stem = f"r{fresh}"
+    elif what == "removed":
+        (props / f"{stem}.txt").unlink()
+        return set()
+    else:
+        path, old, new = {
+            "setting": ("graph.yaml", "times: 2", "times: 3"),
+            "source": ("kinds/loud.py", "* times", f"* times + '{fresh}'"),
+            "helper": ("kinds/helper.py", "words.upper()", f"words.upper() + '{fresh}'"),
+            "wiring": ("graph.yaml", "{node: put, text: said", "{node: put, text: raw"),
+        }[what]
+        project.write(path, project.read(path).replace(old, new))
+        return None
+    return {f"props/{stem}.txt"}
+
+
+@pytest.mark.parametrize("seed", range(8))
+def test_after_any_edits_a_build_equals_one_from_scratch_and_repeats_nothing(project, tmp_path_factory, seed):
+    rng = random.Random(seed)
+    project.build()
+    for turn in range(6):
+        concerned = edit(project, rng, f"{seed}{turn}")
+        record = project.build(tidy=True)
+        assert len(project.calls) == record.count("ran")
+        assert concerned is None or {name for name, state in states(record).items() if state == "made"} <= concerned
+    assert project.build().count("ran") == 0
+    outputs = {path.name: path.read_text() for path in (project.folder / "made").iterdir()}
+    left_out = shutil.ignore_patterns("made", ".tangentry")
+    fresh = Path(shutil.copytree(project.folder, tmp_path_factory.mktemp("fresh") / "p", ignore=left_out))
+    project.graph = fresh / "graph.yaml"
+
+    project.build()
+
+    assert {path.name: path.read_text() for path in (fresh / "made").iterdir()} == outputs
