@@ -26,6 +26,8 @@ MOST_NODES = 20_000
 
 @dataclasses.dataclass(frozen=True)
 class Reference:
+    """A name as it stands in a graph file, and where."""
+
     target: str | None  # the node, by its full name, with `.output`; None: an input of this graph that nobody fills
     text: str
     mark: Mark
@@ -53,6 +55,7 @@ class Reading:
     count: int = 0
 
     def wrong(self, mark: object, what: str) -> None:
+        """Note a problem and its place."""
         self.problems.append(f"{mark}: {what}")
 
 
@@ -67,6 +70,7 @@ class Scope:
     inputs: dict[str, Reference] = dataclasses.field(default_factory=dict)
 
     def refer(self, text: str, mark: Mark) -> Reference:
+        """What a name means here."""
         head, _, output = text.partition(".")
         if head in self.inputs:
             outer = self.inputs[head]
@@ -76,6 +80,7 @@ class Scope:
 
 
 def open_graph(path: Path, shown: str) -> Node:
+    """The document of a graph file. Raises GraphError where it can't be read or is no mapping."""
     try:
         content = path.read_bytes()
     except OSError as error:
@@ -87,6 +92,7 @@ def open_graph(path: Path, shown: str) -> Node:
 
 
 def check_top(root: Node, reading: Reading, nested: bool) -> None:
+    """Note what is wrong with the top-level keys."""
     version = root.value.get("tangentry")
     if version is None:
         reading.wrong(root.mark, f"the version of the format is missing; begin with `tangentry: {FORMAT}`")
@@ -116,6 +122,7 @@ def _mapping(root: Node, key: str, reading: Reading) -> Node | None:
 
 
 def read_options(root: Node, sets: Mapping[str, Any], reading: Reading) -> dict[str, Any]:
+    """A graph's options, with those set from outside. Notes options that it does not have."""
     node = _mapping(root, "options", reading)
     options: dict[str, Any] = {}
     for name, value in (node.value if node else {}).items():
@@ -135,6 +142,7 @@ def read_options(root: Node, sets: Mapping[str, Any], reading: Reading) -> dict[
 
 
 def read_section(root: Node, key: str, scope: Scope, reading: Reading) -> list[Draft]:
+    """The nodes of a section, those of graphs used as nodes among them."""
     node = _mapping(root, key, reading)
     drafts: list[Draft] = []
     for name, entry in (node.value if node else {}).items():

@@ -41,6 +41,7 @@ def fill(value: Any, known: Mapping[str, Any], later: Iterable[str], wrong: Any)
 
 
 def text_of(value: Any) -> str:
+    """A value as a part of a text."""
     if value is None or isinstance(value, bool):
         return {None: "", True: "true", False: "false"}[value]
     return str(value)
