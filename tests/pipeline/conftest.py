@@ -6,7 +6,6 @@ from pathlib import Path
 from typing import Any
 
 import pytest
-
 from tangentry.pipeline.build import run_build
 from tangentry.pipeline.graph import read_graph
 from tangentry.pipeline.record import Record

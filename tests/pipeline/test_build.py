@@ -124,7 +124,11 @@ def test_a_faulty_asset_is_held_back(project):
 
 def test_what_a_skip_leaves_out_optional_inputs_see_as_nothing(project):
     project.edit("graph.yaml", "text: raw,", "text: raw, other: extra,")
-    project.edit("graph.yaml", "  said:", '  extra:   {node: take, file: "props/{stem}.more", if_missing: skip, log: LOG}\n  said:')
+    project.edit(
+        "graph.yaml",
+        "  said:",
+        '  extra:   {node: take, file: "props/{stem}.more", if_missing: skip, log: LOG}\n  said:',
+    )
     project.edit("graph.yaml", "LOG", str(project.log))
     project.write("props/a.more", "plus\n")
 
@@ -139,7 +143,12 @@ def test_what_needs_a_skipped_value_is_skipped_and_says_so(project):
     record = project.build()
 
     told = {step["node"]: (step["state"], step.get("because")) for step in record.assets[0].steps}
-    assert told == {"raw": ("ran", None), "said": ("skipped", "raw"), "verdict": ("skipped", "said"), "done": ("skipped", "said")}
+    assert told == {
+        "raw": ("ran", None),
+        "said": ("skipped", "raw"),
+        "verdict": ("skipped", "said"),
+        "done": ("skipped", "said"),
+    }
 
 
 def test_reasons_are_data(project):
@@ -150,7 +159,11 @@ def test_reasons_are_data(project):
 
     assert [reason["text"] for reason in steps["raw"]["reasons"]] == ["file props/b.txt changed"]
     assert steps["said"]["reasons"][0] | {} == {
-        "what": "setting", "name": "times", "before": 2, "after": 5, "text": "setting times changed 2 -> 5",
+        "what": "setting",
+        "name": "times",
+        "before": 2,
+        "after": 5,
+        "text": "setting times changed 2 -> 5",
     }
 
 
@@ -161,7 +174,9 @@ def edit(project: Any, rng: random.Random, fresh: str) -> set[str] | None:
         project.write("props/a.txt", f"hello {fresh}\n")
         return {"props/a.txt"}
     stem = rng.choice(sorted(path.stem for path in props.glob("*.txt")))
-    what = rng.choice(["prop", "side", "side gone", "setting", "source", "helper", "added", "renamed", "removed", "wiring"])
+    what = rng.choice(
+        ["prop", "side", "side gone", "setting", "source", "helper", "added", "renamed", "removed", "wiring"]
+    )
     if what in ("prop", "side"):
         project.write(f"props/{stem}.{'txt' if what == 'prop' else 'side'}", f"words {fresh}\n")
     elif what == "side gone":

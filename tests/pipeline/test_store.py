@@ -7,7 +7,6 @@ import time
 
 import numpy as np
 import pytest
-
 from tangentry.pipeline.flow import Array, flow_value
 from tangentry.pipeline.store import Damaged, Result, Store, StoreError
 
@@ -85,8 +84,12 @@ def test_a_damaged_object_is_noticed_and_set_aside(tmp_path, room, harm):
     path = max((tmp_path / room).glob("*/*"), key=lambda path: path.stat().st_size)
     content = bytearray(path.read_bytes())
     content[-20] ^= 1
-    {"truncated": lambda: path.write_bytes(content[:-9]), "flipped": lambda: path.write_bytes(content),
-     "gone": path.unlink, "emptied": lambda: path.write_bytes(b"")}[harm]()
+    {
+        "truncated": lambda: path.write_bytes(content[:-9]),
+        "flipped": lambda: path.write_bytes(content),
+        "gone": path.unlink,
+        "emptied": lambda: path.write_bytes(b""),
+    }[harm]()
 
     with pytest.raises(Damaged):
         Store(tmp_path).fetch(digest, Tree)

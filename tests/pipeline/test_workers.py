@@ -51,14 +51,19 @@ def test_a_killed_worker_costs_its_step_alone_and_the_next_build_resumes(project
     second = project.build(workers=2)
 
     failed = [asset for asset in first.assets if asset.state == "failed"]
-    assert len(failed) == 1 and failed[0].errors == ['node "late": its worker process ended by signal 9 while it ran (killed, or out of memory)']
+    assert len(failed) == 1 and failed[0].errors == [
+        'node "late": its worker process ended by signal 9 while it ran (killed, or out of memory)'
+    ]
     assert first.count("failed") == 1 and second.sound and second.states["made"] == 1
 
 
 def test_an_interrupt_ends_within_two_seconds_and_the_next_build_goes_on(project):
     with_slow(project, "{node: slow, text: raw, seconds: 1.5}")
     build = subprocess.Popen(
-        [sys.executable, "-m", "tangentry.pipeline.cli", "build", str(project.graph)], stderr=subprocess.PIPE, stdout=subprocess.PIPE, text=True
+        [sys.executable, "-m", "tangentry.pipeline.cli", "build", str(project.graph)],
+        stderr=subprocess.PIPE,
+        stdout=subprocess.PIPE,
+        text=True,
     )
     deadline = time.monotonic() + 20
     while time.monotonic() < deadline and not (project.log.exists() and "take" in project.calls):
@@ -76,7 +81,10 @@ def test_an_interrupt_ends_within_two_seconds_and_the_next_build_goes_on(project
 def test_two_builds_at_once_are_safe(project):
     with_slow(project, "{node: slow, text: raw, seconds: 0.2}")
     words = [sys.executable, "-m", "tangentry.pipeline.cli", "build", str(project.graph)]
-    both = [subprocess.Popen(words, stdout=subprocess.PIPE, stderr=subprocess.STDOUT, text=True, env={**os.environ}) for _ in range(2)]
+    both = [
+        subprocess.Popen(words, stdout=subprocess.PIPE, stderr=subprocess.STDOUT, text=True, env={**os.environ})
+        for _ in range(2)
+    ]
     told = [one.communicate(timeout=60)[0] for one in both]
 
     assert [one.returncode for one in both] == [0, 0], told
