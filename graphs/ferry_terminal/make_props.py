@@ -1,4 +1,4 @@
-"""Makes the props of the ferry terminal, and the flawed ones that are sent back. Run it again: it writes the same bytes.
+"""Makes the props of the ferry terminal, and the flawed ones that are sent back; each time the same bytes.
 
 python graphs/ferry_terminal/make_props.py
 """
@@ -81,7 +81,10 @@ class Mesh:
         mirrored: bool = False,
         collapsed: bool = False,
     ) -> None:
-        """Add a surface of revolution around y from (radius, height) points, bottom to top; `mirrored` lays both halves on one chart."""
+        """Add a surface of revolution around y from (radius, height) points, bottom to top.
+
+        `mirrored` lays both halves on one chart; `collapsed` keeps quads that have an edge of no length.
+        """
         turn = np.linspace(0, 2 * np.pi, sides + 1)
         radius, height = np.array(profile).T
         along = np.concatenate([[0], np.cumsum(np.hypot(np.diff(radius), np.diff(height)))])
@@ -125,7 +128,10 @@ class Mesh:
         material: str,
         stacked: bool = False,
     ) -> None:
-        """Add a box whose six charts lie in a cell, 3 x 2; `stacked` lays opposite sides on one chart, one of them mirrored."""
+        """Add a box whose six charts lie in a cell, 3 x 2.
+
+        `stacked` lays opposite sides on one chart, one of them mirrored.
+        """
         x = [(a, b, c) for a in (low[0], high[0]) for b in (low[1], high[1]) for c in (low[2], high[2])]
         p0 = len(self.points)
         self.points += x
@@ -242,9 +248,21 @@ def crate() -> Asset:
 
 
 def quay_slab() -> Asset:
-    """Two metres of quay, its cobbles in a height map of 16 bits."""
+    """Two metres of quay, its cobbles in a height map of 16 bits; open below, where nobody looks."""
     mesh = Mesh("quay_slab")
-    mesh.box((-1.0, -0.15, -1.0), (1.0, 0.0, 1.0), (0.0, 0.0, 1.0, 1.0), "cobbles")
+    wide, deep, scale = 2.0, 0.15, 0.42  # metres, metres, UV units per metre
+    mesh.points = [(x, y, z) for y in (-deep, 0.0) for x, z in ((-1.0, 1.0), (1.0, 1.0), (1.0, -1.0), (-1.0, -1.0))]
+    top = wide * scale
+    mesh.uvs = [(GUTTER + u * top, GUTTER + v * top) for u, v in ((0, 0), (1, 0), (1, 1), (0, 1))]
+    mesh.face([(4 + k, k) for k in range(4)], "cobbles")
+    for side in range(4):
+        low, high = (0.86, 0.93)[side % 2], (0.86, 0.93)[side % 2] + deep * scale
+        chart = [(GUTTER, low), (GUTTER + top, low), (GUTTER + top, high), (GUTTER, high)]
+        if side > 1:  # a quarter turn: these two stand right of the top's chart
+            chart = [(low + high - v, u) for u, v in chart]
+        t0, after = len(mesh.uvs), (side + 1) % 4
+        mesh.uvs += chart
+        mesh.face([(c, t0 + k) for k, c in enumerate((side, after, 4 + after, 4 + side))], "cobbles")
     return mesh.asset()
 
 
@@ -266,7 +284,7 @@ def stair() -> Asset:
     for step in range(5):
         outline += [(-0.3 * step, 0.18 * (step + 1)), (-0.3 * (step + 1), 0.18 * (step + 1))]
     outline.append((-1.5, 0.0))
-    for x, order in ((0.6, 1), (-0.6, -1)):
+    for x in (0.6, -0.6):
         p0, t0 = len(mesh.points), len(mesh.uvs)
         mesh.points += [(x, y, z) for z, y in outline]
         mesh.uvs += [
@@ -274,7 +292,7 @@ def stair() -> Asset:
             for z, y in outline
         ]
         ring = [(p0 + k, t0 + k) for k in range(len(outline))]
-        mesh.face(ring[::-1] if order < 0 else ring, "flanks")
+        mesh.face(ring[::-1] if x > 0 else ring, "flanks")
     return mesh.asset()
 
 
@@ -302,7 +320,7 @@ def bench() -> Asset:
             (-0.7, 0.42, -0.2 + 0.14 * k), (0.7, 0.46, -0.08 + 0.14 * k), (0.0, k * 0.2, 1.0, k * 0.2 + 0.2), "oak"
         )
     for k, x in enumerate((-0.55, 0.47)):
-        mesh.box((x, 0.0, -0.18), (x + 0.08, 0.42, 0.18), (k * 0.5, 0.6, k * 0.5 + 0.5, 1.0), "cast iron")
+        mesh.box((x, 0.0, -0.18), (x + 0.08, 0.42, 0.18), (k * 0.5, 0.6, k * 0.5 + 0.5, 1.0), "wrought iron")
     return mesh.asset()
 
 
@@ -312,13 +330,13 @@ def oar() -> Asset:
     mesh.lathe(
         [(0.018, 0.0), (0.022, 0.2), (0.025, 1.6), (0.02, 1.9)],
         16,
-        (0.01, 0.01, 0.24, 0.99),
+        (0.01, 0.01, 0.05, 0.99),
         "ash wood",
         1,
         mirrored=True,
     )
     blade = [(0.02, 1.9), (0.06, 2.0), (0.08, 2.2), (0.07, 2.45), (0.03, 2.5)]
-    mesh.lathe(blade, 16, (0.26, 0.01, 0.49, 0.6), "ash wood", 2, mirrored=True)
+    mesh.lathe(blade, 16, (0.07, 0.01, 0.17, 0.32), "ash wood", 2, mirrored=True)
     asset = mesh.asset()
     points = asset.parts[0].points.values.copy()
     points[:, 2] *= np.where(points[:, 1] > 1.9, np.maximum(0.25, 1 - (points[:, 1] - 1.9) * 7), 1).astype(np.float32)
@@ -362,9 +380,9 @@ def cleat(fine: int = 1) -> Asset:
     foot = [(0.07, 0.0), (0.068, 0.02), (0.05, 0.04), (0.03, 0.07)]
     horn = [(0.0, -0.16), (0.012, -0.155), (0.02, -0.1), (0.026, 0.0), (0.02, 0.1), (0.012, 0.155), (0.0, 0.16)]
     foot, horn = (_refined(profile, fine) for profile in (foot, horn))
-    mesh.lathe(foot, 12 * fine, (0.01, 0.01, 0.99, 0.49), "galvanised steel", 1)
+    mesh.lathe(foot, 12 * fine, (0.01, 0.01, 0.99, 0.3), "galvanised steel", 1)
     first = len(mesh.points)
-    mesh.lathe(horn, 12 * fine, (0.01, 0.51, 0.99, 0.99), "galvanised steel", 2)
+    mesh.lathe(horn, 12 * fine, (0.01, 0.32, 0.25, 0.99), "galvanised steel", 2)
     mesh.points[first:] = [(y, 0.085 - x, z) for x, y, z in mesh.points[first:]]
     if fine > 1:
         mesh.points[:first] = [(x * _dent(x, y, z), y, z * _dent(x, y, z)) for x, y, z in mesh.points[:first]]
@@ -394,7 +412,7 @@ def mooring_post() -> Asset:
 def gangway() -> Asset:
     """A ramp with two rails, in two materials; it brings the tangents it was made with."""
     mesh = Mesh("gangway")
-    mesh.box((-0.6, 0.0, -2.0), (0.6, 0.08, 2.0), (0.0, 0.5, 1.0, 1.0), "planks")
+    mesh.box((-0.6, 0.0, -2.0), (0.6, 0.08, 2.0), (0.0, 0.5, 1.0, 1.0), "decking")
     for k, x in enumerate((-0.6, 0.55)):
         mesh.box((x, 0.9, -2.0), (x + 0.05, 0.95, 2.0), (k * 0.5, 0.0, k * 0.5 + 0.5, 0.25), "rail")
         for n, z in enumerate((-1.9, -0.02, 1.86)):
@@ -414,26 +432,110 @@ def gangway() -> Asset:
 # Height maps
 
 
-def cobbles(size: int = 256, across: int = 8) -> np.ndarray:
+def _texel_centres(size: int) -> tuple[np.ndarray, np.ndarray]:
+    """x rightward and y downward, 0 to 1, of every texel."""
+    at = (np.arange(size) + 0.5) / size
+    return at[None, :], at[:, None]
+
+
+def cobbles(size: int = 256, across: int = 14) -> np.ndarray:
     """(size, size, 1) uint16: rounded stones in staggered rows; it tiles."""
-    rng = np.random.default_rng(7)
-    y, x = np.meshgrid(np.arange(size), np.arange(size), indexing="ij")
-    row = (y * across // size) % across
-    column = ((x * across / size + 0.5 * (row % 2)) % across).astype(int)
-    dx = (x * across / size + 0.5 * (row % 2)) % 1 - 0.5
-    dy = (y * across / size) % 1 - 0.5
-    lift = rng.uniform(0.75, 1.0, (across, across))[row, column]
+    x, y = _texel_centres(size)
+    row = np.floor(y * across).astype(int)
+    along = x * across + 0.5 * (row % 2)
+    dx, dy = along % 1 - 0.5, y * across % 1 - 0.5
+    lift = np.random.default_rng(7).uniform(0.7, 1.0, (across, across))[row, along.astype(int) % across]
     dome = np.clip(1 - (np.abs(dx) / 0.47) ** 4, 0, 1) * np.clip(1 - (np.abs(dy) / 0.47) ** 4, 0, 1)
     return np.rint(np.sqrt(dome) * lift * 65535).astype(np.uint16)[..., None]
 
 
-def wood_grain(size: int = 256) -> np.ndarray:
-    """(size, size, 1) uint8: long grain with a few waves; it tiles."""
-    y, x = np.meshgrid(np.arange(size) / size, np.arange(size) / size, indexing="ij")
+def wood_grain(size: int = 256, planks: int = 12) -> np.ndarray:
+    """(size, size, 1) uint8: planks along x with a gap between, the grain in gentle waves; it tiles."""
+    x, y = _texel_centres(size)
     bend = 0.02 * np.sin(2 * np.pi * x) + 0.01 * np.sin(6 * np.pi * x + 1)
-    grain = 0.5 + 0.25 * np.sin(2 * np.pi * 16 * (y + bend)) + 0.15 * np.sin(2 * np.pi * 37 * (y + bend) + 2)
-    gap = np.minimum(1, np.abs(((y * 4) % 1) - 0.5) * 2 * 12)
-    return np.rint(np.clip(grain, 0, 1) * np.clip(gap, 0, 1) * 255).astype(np.uint8)[..., None]
+    grain = 0.6 + 0.2 * np.sin(2 * np.pi * 16 * (y + bend)) + 0.15 * np.sin(2 * np.pi * 37 * (y + bend) + 2)
+    gap = np.minimum(1, (0.5 - np.abs(y * planks % 1 - 0.5)) * 10)
+    return np.rint(np.clip(grain, 0, 1) * gap * 255).astype(np.uint8)[..., None]
+
+
+# Colours: a pattern of light and dark for each material, and the bands painted over it, each from a height v upward
+
+Colour = tuple[int, int, int]
+PAINT: dict[str, tuple[str, list[tuple[float, Colour]]]] = {
+    "ash wood": ("upright grain", [(0, (206, 170, 118)), (0.9, (186, 52, 44)), (0.955, (206, 170, 118))]),
+    "boards": ("planks", [(0, (74, 122, 138))]),
+    "cast iron": ("worn", [(0, (62, 66, 72)), (0.62, (214, 170, 52))]),
+    "cobbles": ("stones", [(0, (182, 178, 170))]),
+    "decking": ("narrow planks", [(0, (168, 132, 92))]),
+    "flanks": ("worn", [(0, (128, 126, 122))]),
+    "galvanised steel": ("worn", [(0, (158, 168, 176))]),
+    "glass": ("worn", [(0, (250, 214, 130))]),
+    "green paint": ("worn", [(0, (34, 84, 66))]),
+    "oak": ("grain", [(0, (176, 128, 76))]),
+    "painted steel": ("worn", [(0, (178, 40, 36)), (0.42, (232, 226, 212)), (0.6, (178, 40, 36))]),
+    "planks": ("planks", [(0, (182, 138, 88))]),
+    "plaster": ("worn", [(0, (226, 214, 190))]),
+    "rail": ("worn", [(0, (226, 226, 220))]),
+    "red canvas": ("worn", [(0, (196, 44, 38))]),
+    "risers": ("worn", [(0, (112, 110, 106))]),
+    "shingles": ("courses", [(0, (142, 62, 48))]),
+    "timber": ("upright grain", [(0, (72, 58, 46)), (0.12, (112, 86, 60)), (0.7, (230, 226, 214))]),
+    "treads": ("worn", [(0, (170, 166, 156))]),
+    "white canvas": ("worn", [(0, (240, 236, 226))]),
+    "wrought iron": ("worn", [(0, (54, 58, 62))]),
+}
+
+
+def paint(name: str, size: int = 128) -> np.ndarray:
+    """(size, size, 3) uint8: the colour texture of a material."""
+    pattern, bands = PAINT[name]
+    _, y = _texel_centres(size)
+    colour = np.empty((size, size, 3))
+    for low, tint in bands:
+        colour[1 - y[:, 0] >= low] = tint
+    if name == "boards":
+        ticket_window(colour)
+    return np.rint(np.clip(colour * shade(pattern, size)[..., None], 0, 255)).astype(np.uint8)
+
+
+def shade(pattern: str, size: int) -> np.ndarray:
+    """(size, size) float64 about 1: how light a material is, texel by texel; it tiles."""
+    if pattern == "stones":
+        return 0.45 + 0.6 * cobbles(size)[..., 0] / 65535
+    if pattern.endswith(("grain", "planks")):
+        grain = wood_grain(size, {"planks": 12, "narrow planks": 32}.get(pattern, 1))[..., 0] / 255
+        return 0.7 + 0.4 * (grain.T if "upright" in pattern else grain)
+    x, y = _texel_centres(size)
+    worn = 1 + 0.04 * sum(
+        np.sin(2 * np.pi * (a * x + b * y) + c) for a, b, c in ((3, 1, 0), (-2, 5, 1), (7, 4, 2), (5, -9, 3))
+    )
+    if pattern == "courses":
+        row = np.floor(y * 24)
+        joint = (0.5 - np.abs((x * 16 + 0.5 * (row % 2)) % 1 - 0.5)) * 8
+        return worn * (0.6 + 0.4 * np.minimum(1, np.minimum(joint, (1 - y * 24 % 1) * 4)))
+    return worn
+
+
+def ticket_window(colour: np.ndarray) -> None:
+    """Paint a window with a sill, and a door, into the charts of the kiosk's gables."""
+    for (u0, v0, u1, v1), tint in (
+        ((0.08, 0.20, 0.26, 0.36), (236, 228, 206)),
+        ((0.09, 0.22, 0.25, 0.35), (38, 52, 66)),
+        ((0.60, 0.01, 0.76, 0.36), (236, 228, 206)),
+        ((0.61, 0.01, 0.75, 0.35), (122, 58, 44)),
+    ):
+        x, y = _texel_centres(len(colour))
+        colour[((x > u0) & (x < u1) & (1 - y > v0) & (1 - y < v1))] = tint
+
+
+def painted(asset: Asset) -> Asset:
+    """The asset with a colour texture in each material."""
+    names = [one.name for one in asset.materials]
+    return replace(
+        asset,
+        materials=tuple(Material(name, (MapUse("colour", row),)) for row, name in enumerate(names)),
+        images=tuple(Image(f"{name.replace(' ', '_')}.png", "image/png", write_png(paint(name))) for name in names),
+    )
 
 
 # The flawed ones
@@ -526,21 +628,37 @@ def without_uvs(asset: Asset) -> Asset:
 
 
 def write(folder: str, asset: Asset, suffix: str, stem: str = "") -> None:
-    """One prop in one format."""
+    """One prop in one format, its textures beside it or, in a GLB, inside."""
     stem = stem or asset.name
-    if suffix == ".obj":
-        for file in write_obj(asset, stem):
-            save(f"{folder}/{file.name}", file.content)
-    elif suffix == ".ply":
-        save(f"{folder}/{stem}.ply", write_ply(asset))
-    else:
+    if suffix == ".glb":
         save(f"{folder}/{stem}.glb", write_gltf(asset, None, stem, True)[0].content)
+        return
+    for image in asset.images:
+        save(f"{folder}/{image.name}", image.content)
+    if suffix == ".ply":
+        content = write_ply(asset).tobytes()
+        for image in asset.images:
+            content = content.replace(b"comment tangentry", f"comment TextureFile {image.name}".encode())
+        save(f"{folder}/{stem}.ply", content)
+        return
+    mesh, *_ = write_obj(asset, stem)
+    save(f"{folder}/{mesh.name}", mesh.content)
+    save(f"{folder}/{stem}.mtl", material_library(asset).encode())
 
 
-def save(path: str, content: np.ndarray) -> None:
+def material_library(asset: Asset) -> str:
+    """The text of an MTL file."""
+    lines = []
+    for material in asset.materials:
+        lines += [f"newmtl {material.name}", "Kd 1 1 1"]
+        lines += [f"map_Kd {asset.images[use.image].name}" for use in material.maps]
+    return "\n".join(lines) + "\n"
+
+
+def save(path: str, content: np.ndarray | bytes) -> None:
     """Bytes into a file below this folder."""
     (HERE / path).parent.mkdir(exist_ok=True)
-    (HERE / path).write_bytes(content.tobytes())
+    (HERE / path).write_bytes(bytes(content))
 
 
 def main() -> None:
@@ -560,7 +678,7 @@ def main() -> None:
         (mooring_post, ".ply"),
         (gangway, ".glb"),
     ):
-        write("props", make(), suffix)
+        write("props", painted(make()), suffix)
     save("props/quay_slab_height.png", write_png(cobbles()))
     save("props/crate_height.png", write_png(wood_grain()))
     write("detail", cleat(6), ".obj", "cleat_detailed")
