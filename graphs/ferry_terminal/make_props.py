@@ -5,6 +5,7 @@ python graphs/ferry_terminal/make_props.py
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 
@@ -550,13 +551,16 @@ def with_map(asset: Asset) -> Asset:
     )
 
 
-def stored(asset: Asset, change: object = None) -> Asset:
+def stored(asset: Asset, change: Callable[[Part, Frames], Frames]) -> Asset:
     """The asset with frames as if its file had brought them, each set of frames changed by a function."""
     solved = frames(with_map(asset), where="all")
-    alter = change if callable(change) else (lambda part, made: made)
     return replace(
         solved,
-        parts=tuple(replace(part, frames=replace(alter(part, part.frames), method="stored")) for part in solved.parts),
+        parts=tuple(
+            replace(part, frames=replace(change(part, part.frames), method="stored"))
+            for part in solved.parts
+            if part.frames
+        ),
     )
 
 
