@@ -2,14 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Mapping
 from dataclasses import replace
 from typing import Literal
 
-import numpy as np
 from tangentry.nodes.model import Asset
 from tangentry.pipeline.errors import InputError, nearest
-from tangentry.pipeline.flow import Array, Finding, Findings
+from tangentry.pipeline.flow import Finding, Findings
 
 IDS = (
     "uv-missing",
@@ -18,10 +17,19 @@ IDS = (
     "uv-skewed",
     "uv-stretched",
     "uv-out-of-tile",
+    "uv-density",
+    "uv-overlapping",
+    "uv-overlapping-itself",
+    "uv-gutter",
     "value-not-finite",
     "face-zero-area",
+    "face-duplicate",
     "edge-non-manifold",
+    "edge-t-junction",
+    "edge-hard-in-chart",
+    "edge-soft-on-border",
     "winding-inconsistent",
+    "vertex-needless",
     "normal-non-unit",
     "normal-far",
     "normal-inverted",
@@ -47,7 +55,12 @@ def check(
     *,
     skew: float | None = None,
     degenerate: float = 0.05,
-    stretch: float = 8.0,
+    stretch: float = 4.0,
+    density: float = 4.0,
+    overlap: float = 0.01,
+    map_size: int = 0,
+    mip: int = 2,
+    hard: float = 60.0,
     normal: float = 90.0,
     lean: float = 5.0,
     explained: float = 30.0,
@@ -58,7 +71,13 @@ def check(
 
     skew        degrees that tangent and bitangent may be away from square; beyond a limit that is set it is a fault
     degenerate  share of a part's surface that may have no UV area before it is a fault
-    stretch     how many times as long as wide a texel may be on the surface
+    stretch     how many times as long as the mean of its chart a texel may be on the surface (L-infinity stretch,
+                Sander et al. 2001)
+    density     factor by which a chart's texel density may differ from that of the middle of the surface
+    overlap     share of a face that may lie over other faces in UV space, 0 to 1
+    map_size    texels along the side of the map that charts must stay apart on; 0: the size of the material's map
+    mip         level of that map, from 0, down to which charts must not blend
+    hard        degrees between faces beyond which the border of a chart should be a hard edge
     normal      degrees that a normal may be from its face
     lean        degrees that a tangent may be off the plane of its normal
     explained   degrees that a tangent from the file may be from what the UVs give
@@ -67,28 +86,38 @@ def check(
 
     Only a fault holds an asset back. Raises InputError for an id that no finding has.
     """
+    from tangentry.nodes.checks.edges import edge_findings
+    from tangentry.nodes.checks.facts import facts_of
     from tangentry.nodes.checks.frames import frame_findings
+    from tangentry.nodes.checks.gutter import gutter_findings
+    from tangentry.nodes.checks.overlap import overlap_findings
     from tangentry.nodes.checks.shape import shape_findings
+    from tangentry.nodes.checks.stored import mixed_findings
+    from tangentry.nodes.checks.stretch import spread_findings
     from tangentry.nodes.checks.uvs import uv_findings
-    from tangentry.nodes.checks.view import View
-    from tangentry.nodes.maps.conventions import Green
+    from tangentry.nodes.checks.vertices import vertex_findings
+    from tangentry.nodes.checks.view import views_of
 
     _known(asset.name, "severity", severity)
     _known(asset.name, "accept", accept)
+    views = views_of(asset)
     found: list[Finding] = []
-    greens: dict[int, Green] = {}
-    for view in (View(asset, part, greens) for part in asset.parts):
+    for view in views:
         found += [
-            *uv_findings(view, skew, degenerate, stretch),
+            *uv_findings(view, skew, degenerate),
+            *spread_findings(view, stretch, density),
+            *gutter_findings(view, map_size, mip),
             *shape_findings(view, normal),
+            *edge_findings(view, hard),
+            *vertex_findings(view),
             *frame_findings(view, lean, explained),
         ]
-    found += _mixed(asset, found)
+    found += [*overlap_findings(views, overlap), *mixed_findings(asset, found)]
     judged = (_judged(one, severity, accept) for one in found if severity.get(one.id) != "off")
-    return Findings(asset.name, tuple(judged), _facts(asset))
+    return Findings(asset.name, tuple(judged), facts_of(views))
 
 
-def _known(name: str, setting: str, given: dict[str, str]) -> None:
+def _known(name: str, setting: str, given: Mapping[str, str]) -> None:
     for id in given:
         if id not in IDS:
             raise InputError(
@@ -103,43 +132,3 @@ def _judged(
     finding: Finding, severity: dict[str, Literal["fault", "warning", "note", "off"]], accept: dict[str, str]
 ) -> Finding:
     return replace(finding, severity=severity.get(finding.id, finding.severity), accepted=accept.get(finding.id, ""))
-
-
-def _mixed(asset: Asset, found: list[Finding]) -> Iterator[Finding]:
-    """Parts whose sides follow the rule beside parts whose sides are its opposite."""
-    flipped = {one.part for one in found if one.id == "side-flipped"}
-    stored = {
-        part.name for part in asset.parts if part.frames is not None and part.frames.method == "stored" and part.uvs
-    }
-    if flipped and stored - flipped:
-        empty: Array = np.zeros(0, np.int32)
-        yield Finding(
-            "convention-mixed",
-            "warning",
-            len(flipped),
-            f"sides are opposite to the rule on {len(flipped)} parts and follow it on {len(stored - flipped)}",
-            "export all parts alike",
-            "",
-            "",
-            "",
-            empty,
-            np.zeros(0, np.float32),
-            None,
-        )
-
-
-def _facts(asset: Asset) -> dict[str, float | str]:
-    from tangentry.nodes.formats.vertices import vertices_of
-
-    frames = [part.frames for part in asset.parts if part.frames is not None]
-    vertices = [vertices_of(part) for part in asset.parts]
-    return {
-        "parts": len(asset.parts),
-        "materials": len(asset.materials),
-        "faces": sum(part.face_count for part in asset.parts),
-        "triangles": sum(len(one.triangles) for one in vertices),
-        "points": sum(len(part.points.values) for part in asset.parts),
-        "vertices": sum(len(one.points) for one in vertices),
-        "frames": sum(len(one.tangents) for one in frames),
-        "parts without frames": len(asset.parts) - len(frames),
-    }

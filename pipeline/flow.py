@@ -174,6 +174,7 @@ class Finding:
     measured: Array  # (len(elements),) float32, the figure beside `limit`; may be empty
     limit: float | None  # the limit that was passed
     accepted: str = ""  # why the graph file accepts it; then it counts as a note
+    charts: Array | None = None  # (len(elements),) int32: the chart each lies in, -1: none; None where there are no UVs
 
 
 @flow_value

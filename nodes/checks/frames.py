@@ -1,31 +1,29 @@
-"""Findings on tangent frames: their own soundness, what they share, and whether the UVs explain those that a file brought."""
+"""Findings on tangent frames: their own soundness, and what they share."""
 
 from __future__ import annotations
 
 from collections.abc import Iterator
 
 import numpy as np
+from tangentry.nodes.checks.stored import stored_findings
 from tangentry.nodes.checks.view import View
 from tangentry.nodes.geometry.vectors import angle_between, dot, unit
-from tangentry.pipeline.flow import Array, Finding
+from tangentry.pipeline.flow import Finding
 
 UNIT = 0.005  # how far from 1 a length may be: a tangent stored in 8 bits keeps within it
-FLIPPED = 0.9  # share of corners above which opposite sides are a convention, not a mistake
-JUNK = 0.25  # share of corners above which unexplained tangents make the part's shading wrong as a whole
 
 
 def frame_findings(view: View, lean: float, explained: float) -> Iterator[Finding]:
     """All findings on one part's frames."""
     if view.part.frames is None:
-        if view.needs_frames:
-            every = np.arange(view.part.face_count)
+        if view.needs_frames and view.uv is not None:
             yield view.finding(
                 "frame-missing",
                 "fault",
                 "the material samples a tangent-space map, but there are no frames",
                 "solve them: frames",
                 "face",
-                every,
+                np.arange(view.part.face_count),
             )
         return
     yield from _soundness(view, lean)
@@ -42,7 +40,7 @@ def frame_findings(view: View, lean: float, explained: float) -> Iterator[Findin
             corners,
         )
     if view.part.frames.method == "stored":
-        yield from _explained(view, explained)
+        yield from stored_findings(view, explained)
 
 
 def _soundness(view: View, lean: float) -> Iterator[Finding]:
@@ -102,8 +100,7 @@ def _sides(view: View) -> Iterator[Finding]:
             "corner",
             np.flatnonzero(side == 0),
         )
-    each = side[view.triangles]
-    mixed = (each != each[:, :1]).any(axis=1) & (each != 0).all(axis=1)
+    mixed = view.side_mixed
     if mixed.any():
         yield view.finding(
             "side-mixed",
@@ -117,12 +114,10 @@ def _sides(view: View) -> Iterator[Finding]:
 
 def _shared(view: View) -> Iterator[Finding]:
     """Frames that faces seen from both sides in UV space share: right for one side at most."""
-    frames, found = view.part.frames, view.directions
-    if frames is None or found is None:
+    frames = view.part.frames
+    if frames is None or view.uv is None:
         return
-    turned = np.zeros(view.part.face_count)
-    np.add.at(turned, view.face, found.side * found.uv_area)  # a polygon is seen from the side of most of its UV area
-    side = np.where(turned > 0, 1, np.where(turned < 0, 2, 0)).astype(np.int8)
+    side = np.where(view.side > 0, 1, np.where(view.side < 0, 2, 0)).astype(np.int8)
     seen = np.zeros(len(frames.tangents), np.int8)
     np.bitwise_or.at(seen, frames.index, np.repeat(side, np.diff(view.part.starts)))
     both = seen == 3
@@ -135,98 +130,3 @@ def _shared(view: View) -> Iterator[Finding]:
             "corner",
             np.flatnonzero(both[frames.index]),
         )
-
-
-def _explained(view: View, limit: float) -> Iterator[Finding]:
-    """Do the UVs explain the tangents that a file brought, and their sides?"""
-    frames, solved = view.part.frames, view.solved
-    assert frames is not None
-    if solved is None:
-        if view.uv is None:
-            yield view.finding(
-                "tangent-without-uv",
-                "warning",
-                "the file brings tangents, but no UVs they could follow",
-                "leave the tangents out, or add the UVs",
-                "corner",
-                np.arange(view.part.corner_count),
-            )
-        return
-    has_length = dot(frames.tangents.astype(np.float64), frames.tangents.astype(np.float64)) > 1e-12
-    defined = ~solved.fallback[solved.index] & has_length[frames.index]
-    angle = angle_between(
-        unit(np.nan_to_num(frames.tangents).astype(np.float64))[frames.index], solved.tangents[solved.index]
-    )
-    off = defined & (angle > limit)
-    if off.any():
-        share = float(off.sum() / max(defined.sum(), 1))
-        yield view.finding(
-            "tangent-unexplained",
-            "fault" if share > JUNK else "warning",
-            f"tangents more than {limit:g} degrees from what the UVs give, {share:.1%} of the corners (median {np.median(angle[defined]):.1f} degrees)",
-            "solve the frames again: stored: replace, unless the maps were made in these",
-            "corner",
-            np.flatnonzero(off),
-            angle[off],
-            limit,
-        )
-    opposite = frames.sides[frames.index] != solved.sides[solved.index]
-    yield from _flipped(view, defined, opposite)
-    yield from _green(view, defined, opposite)
-
-
-def _flipped(view: View, defined: Array, opposite: Array) -> Iterator[Finding]:
-    wrong = defined & opposite
-    if not wrong.any():
-        return
-    if wrong.sum() <= FLIPPED * defined.sum():
-        yield view.finding(
-            "side-wrong",
-            "warning",
-            "sides opposite to what the UVs give",
-            "split mirrored charts and solve again",
-            "corner",
-            np.flatnonzero(wrong),
-        )
-        return
-    green = view.green.verdict if view.green is not None else "undecided"
-    severity, told, advice = {
-        "down": (
-            "note",
-            "the map's green points down, which makes that right",
-            "keep sides and map together; before solving again, turn green over",
-        ),
-        "up": (
-            "fault",
-            "the map's green points up, so light comes out inverted",
-            "solve the frames again: stored: replace",
-        ),
-        "undecided": (
-            "warning",
-            "a map whose green points down would make that right",
-            "look which way green points; keep sides and map together",
-        ),
-    }[green]
-    yield view.finding(
-        "side-flipped",
-        severity,
-        f"sides opposite to the rule on {wrong.sum() / defined.sum():.1%} of the corners; {told}",
-        advice,
-        "corner",
-        np.flatnonzero(wrong),
-    )
-
-
-def _green(view: View, defined: Array, opposite: Array) -> Iterator[Finding]:
-    """Sides that follow the rule beside a map whose green points down."""
-    if view.green is None or view.green.verdict != "down" or (defined & opposite).sum() > FLIPPED * defined.sum():
-        return
-    yield view.finding(
-        "map-green-down",
-        "warning",
-        f"sides follow the rule, but the map's green seems to point down (correlation {view.green.correlation:.2f})",
-        "turn green over: texture, encode with green: up",
-        "",
-        np.zeros(0, np.int32),
-        np.array([view.green.correlation]),
-    )

@@ -1,4 +1,4 @@
-"""Findings on the shape itself: values, faces, edges, normals."""
+"""Findings on the shape itself: values, faces, normals."""
 
 from __future__ import annotations
 
@@ -14,7 +14,7 @@ def shape_findings(view: View, normal: float) -> Iterator[Finding]:
     """All findings on one part's shape."""
     yield from _non_finite(view)
     yield from _zero_area(view)
-    yield from _edges(view)
+    yield from _copies(view)
     yield from _normals(view, normal)
 
 
@@ -45,59 +45,23 @@ def _non_finite(view: View) -> Iterator[Finding]:
 
 
 def _zero_area(view: View) -> Iterator[Finding]:
-    total = np.zeros(view.part.face_count)
-    np.add.at(total, view.face, view.area)
+    total = view.face_area
     empty = np.flatnonzero(total <= 1e-12 * max(float(total.max(initial=0)), 1e-300))
     if len(empty):
         yield view.finding("face-zero-area", "warning", "faces without area", "remove them", "face", empty)
 
 
-def _edges(view: View) -> Iterator[Finding]:
-    """Edges with more than two faces, and pairs of faces wound against each other."""
-    starts, point = view.part.starts, view.point.astype(np.int64)
-    solid = np.zeros(view.part.face_count, bool)
-    solid[view.face[view.area > 0]] = True
-    following = np.arange(1, len(point) + 1)
-    following[starts[1:][np.diff(starts) > 0] - 1] = starts[:-1][np.diff(starts) > 0]
-    a, b = point, point[following]
-    real = (a != b) & np.repeat(solid, np.diff(starts))
-    corner, a, b = np.flatnonzero(real), a[real], b[real]
-    low, high = np.minimum(a, b), np.maximum(a, b)
-    key = low * (int(point.max(initial=0)) + 1) + high
-    order = np.argsort(key, kind="stable")
-    _, first, count = np.unique(key[order], return_index=True, return_counts=True)
-    many = count > 2
-    if many.any():
-        members = order[np.repeat(first[many], count[many]) + _within(count[many])]
+def _copies(view: View) -> Iterator[Finding]:
+    copies = np.flatnonzero(view.copies)
+    if len(copies):
         yield view.finding(
-            "edge-non-manifold",
+            "face-duplicate",
             "warning",
-            f"edges with more than two faces: {int(many.sum())}, {int(count.max())} faces at most",
-            "separate the faces that should not share the edge",
-            "corner",
-            corner[members],
-            np.repeat(count[many], count[many]),
-            2.0,
+            "faces that lie exactly on an earlier one and look the same way: they flicker",
+            "remove them",
+            "face",
+            copies,
         )
-    pairs = count == 2
-    one, two = order[first[pairs]], order[first[pairs] + 1]
-    against = a[one] == a[two]
-    if against.any():
-        yield view.finding(
-            "winding-inconsistent",
-            "warning",
-            "edges whose two faces are wound against each other",
-            "make the winding consistent",
-            "corner",
-            corner[one[against]],
-        )
-
-
-def _within(counts: Array) -> Array:
-    """0, 1, ... within each run of the lengths given."""
-    ends = np.cumsum(counts)
-    runs: Array = np.arange(ends[-1]) - np.repeat(ends - counts, counts)
-    return runs
 
 
 def _normals(view: View, limit: float) -> Iterator[Finding]:
