@@ -17,11 +17,12 @@ SEVERITIES = ("fault", "warning", "note")
 def tally(findings: dict[str, Findings], *, file: OutputFile | str) -> Files:
     """A table with a row for each asset: its verdict, how many findings of each severity, its facts, what was found.
 
-    file  where to; its suffix says the form: .csv, .json or .md
+    file  where to; its suffix says the form: .csv, .json, .md, or .txt for columns that line up
 
-    The verdict is faulty, warned or sound. Raises InputError for other suffixes.
+    The verdict is faulty, warned or sound; what was accepted counts as a note. Findings are listed worst first, each
+    with how many elements it has. Raises InputError for other suffixes.
     """
-    forms = {".csv": _csv, ".json": _json, ".md": _markdown}
+    forms = {".csv": _csv, ".json": _json, ".md": _markdown, ".txt": _lined_up}
     suffix = PurePosixPath(file).suffix.lower()
     if suffix not in forms:
         raise InputError(file, "", f'suffix "{suffix}" names no table', f"write one of {', '.join(forms)}")
@@ -32,17 +33,21 @@ def tally(findings: dict[str, Findings], *, file: OutputFile | str) -> Files:
 def _row(name: str, findings: Findings) -> dict[str, str | float]:
     counts = {severity: sum(1 for item in findings.items if _severity(item) == severity) for severity in SEVERITIES}
     verdict = "faulty" if counts["fault"] else "warned" if counts["warning"] else "sound"
-    told: dict[str, int] = {}
-    for item in findings.items:
-        told[item.id] = told.get(item.id, 0) + item.count
-    found = "; ".join(f"{id} {count}" for id, count in told.items())
     return {
         "asset": name,
         "verdict": verdict,
         **{f"{one}s": count for one, count in counts.items()},
         **findings.facts,
-        "findings": found,
+        "findings": _worst_first(findings),
     }
+
+
+def _worst_first(findings: Findings) -> str:
+    """Each id once, with its count over all parts."""
+    told: dict[str, int] = {}
+    for item in sorted(findings.items, key=lambda item: SEVERITIES.index(_severity(item))):
+        told[item.id] = told.get(item.id, 0) + item.count
+    return "; ".join(f"{id} {count}" for id, count in told.items())
 
 
 def _severity(item: Finding) -> str:
@@ -50,10 +55,10 @@ def _severity(item: Finding) -> str:
 
 
 def _columns(rows: list[dict[str, str | float]]) -> list[str]:
-    names: dict[str, None] = {}
+    names = dict.fromkeys(["asset", "verdict", *(f"{one}s" for one in SEVERITIES)])
     for row in rows:
         names |= dict.fromkeys(row)
-    return [*(name for name in names if name != "findings"), *(["findings"] if "findings" in names else [])]
+    return [*(name for name in names if name != "findings"), "findings"]
 
 
 def _csv(rows: list[dict[str, str | float]]) -> str:
@@ -73,6 +78,26 @@ def _markdown(rows: list[dict[str, str | float]]) -> str:
     lines = [
         columns,
         ["---"] * len(columns),
-        *([str(row.get(name, "")).replace("|", "\\|") for name in columns] for row in rows),
+        *([_plain(row.get(name, "")).replace("|", "\\|") for name in columns] for row in rows),
     ]
     return "".join("| " + " | ".join(line) + " |\n" for line in lines)
+
+
+def _lined_up(rows: list[dict[str, str | float]]) -> str:
+    columns = _columns(rows)
+    table = [columns, *([_plain(row.get(name, "")) for name in columns] for row in rows)]
+    widths = [max(len(cell) for cell in column) for column in zip(*table, strict=True)]
+    numbers = [all(isinstance(row.get(name, 0), (int, float)) for row in rows) for name in columns]
+    return "".join(
+        "  ".join(
+            cell.rjust(width) if number else cell.ljust(width)
+            for cell, width, number in zip(line, widths, numbers, strict=True)
+        ).rstrip()
+        + "\n"
+        for line in table
+    )
+
+
+def _plain(value: str | float) -> str:
+    """On one line, whatever a file's name holds."""
+    return " ".join(str(value).split())
