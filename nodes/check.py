@@ -2,52 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
 from dataclasses import replace
 from typing import Literal
 
+from tangentry.nodes.checks.ids import refuse_unknown
 from tangentry.nodes.model import Asset
-from tangentry.pipeline.errors import InputError, nearest
 from tangentry.pipeline.flow import Finding, Findings
-
-IDS = (
-    "uv-missing",
-    "uv-degenerate",
-    "uv-mirrored",
-    "uv-skewed",
-    "uv-stretched",
-    "uv-out-of-tile",
-    "uv-density",
-    "uv-overlapping",
-    "uv-overlapping-itself",
-    "uv-gutter",
-    "value-not-finite",
-    "face-zero-area",
-    "face-duplicate",
-    "edge-non-manifold",
-    "edge-t-junction",
-    "edge-hard-in-chart",
-    "edge-soft-on-border",
-    "winding-inconsistent",
-    "vertex-needless",
-    "normal-non-unit",
-    "normal-far",
-    "normal-inverted",
-    "frame-missing",
-    "frame-shared",
-    "frame-fallback",
-    "tangent-zero",
-    "tangent-non-unit",
-    "tangent-leaning",
-    "tangent-unexplained",
-    "tangent-without-uv",
-    "side-invalid",
-    "side-mixed",
-    "side-flipped",
-    "side-wrong",
-    "map-green-down",
-    "convention-mixed",
-)
 
 
 def check(
@@ -98,8 +58,8 @@ def check(
     from tangentry.nodes.checks.vertices import vertex_findings
     from tangentry.nodes.checks.view import views_of
 
-    _known(asset.name, "severity", severity)
-    _known(asset.name, "accept", accept)
+    refuse_unknown(asset.name, "severity", severity)
+    refuse_unknown(asset.name, "accept", accept)
     views = views_of(asset)
     found: list[Finding] = []
     for view in views:
@@ -115,17 +75,6 @@ def check(
     found += [*overlap_findings(views, overlap), *mixed_findings(asset, found)]
     judged = (_judged(one, severity, accept) for one in found if severity.get(one.id) != "off")
     return Findings(asset.name, tuple(judged), facts_of(views))
-
-
-def _known(name: str, setting: str, given: Mapping[str, str]) -> None:
-    for id in given:
-        if id not in IDS:
-            raise InputError(
-                name,
-                f"setting {setting}",
-                f'no finding is called "{id}"',
-                f"the ids are {', '.join(IDS)}.{nearest(id, IDS)}",
-            )
 
 
 def _judged(

@@ -45,7 +45,7 @@ def _stretched(view: View, limit: float) -> Iterator[Finding]:
         yield view.finding(
             "uv-stretched",
             "warning",
-            f"texels up to {worst.max():.3g} times as long as their chart's mean (L-infinity stretch; limit {limit:g};"
+            f"texels up to {worst.max():.4g} times as long as their chart's mean (L-infinity stretch; limit {limit:g};"
             f" L2 stretch of these charts up to {mean[guilty].max():.3g})",
             "unwrap with less stretch",
             "face",

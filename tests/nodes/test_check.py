@@ -8,7 +8,8 @@ from dataclasses import replace
 import numpy as np
 import pytest
 from shapes import asset, box_part, cylinder_part, grid_part, quads, sphere_part, torus_part, triangulated
-from tangentry.nodes.check import IDS, check
+from tangentry.nodes.check import check
+from tangentry.nodes.checks.ids import IDS
 from tangentry.nodes.formats.images import write_png
 from tangentry.nodes.frames import frames
 from tangentry.nodes.model import Asset, Image, MapUse, Material, Part, Stream
