@@ -21,6 +21,7 @@ BORDER = (92, 101, 118)
 SEVERITY = {"fault": (200, 46, 38), "warning": (232, 146, 20), "note": (74, 132, 196)}
 RANK = {"note": 1, "warning": 2, "fault": 3}
 SEEN = 40  # pixels that a marked face must have to be seen without a ring
+REPEATS, LAYERS = 16.0, 100.0  # tiles that a triangle may span to be drawn, and that all may span together
 MOST_MARKS = 20000  # lines or dots drawn for a finding; of more, evenly chosen ones
 
 
@@ -146,7 +147,7 @@ def _tile(sheet: Sheet, tile: int, unit: int) -> Image.Image:
     face = np.concatenate(_counted([view.face for view in sheet.views], [v.part.face_count for v in sheet.views]))
     rank = np.concatenate(guilty)[face]
     chart = np.concatenate(_counted([v.chart[v.face] for v in sheet.views], [v.chart_count for v in sheet.views]))
-    order = np.argsort(-rank, kind="stable")  # whoever comes first owns the texel
+    order = _not_too_many(np.argsort(-rank, kind="stable"), places)  # whoever comes first owns the texel
     owner = texel_owners(places[order], fine, fine).triangle
     owner = np.where(owner >= 0, order[owner], -1)
     canvas = Image.fromarray(_painted(owner, face, chart, rank))
@@ -159,6 +160,14 @@ def _tile(sheet: Sheet, tile: int, unit: int) -> Image.Image:
     smaller = canvas.reduce(FINE)
     ImageDraw.Draw(smaller).rectangle((0, 0, tile - 1, tile - 1), outline=BORDER)
     return smaller
+
+
+def _not_too_many(order: Array, places: Array) -> Array:
+    """The triangles to draw: not those that repeat all over the tile, nor those far below many others."""
+    extent = np.prod(places.max(axis=1) - places.min(axis=1), axis=1)[order]
+    few = order[extent <= REPEATS]
+    layers = np.cumsum(extent[extent <= REPEATS])
+    return few[layers <= LAYERS]
 
 
 def _counted(each: list[Array], counts: list[int]) -> list[Array]:

@@ -13,7 +13,8 @@ from tangentry.nodes.geometry.unions import number, union
 from tangentry.pipeline.flow import Array, Finding
 
 REACH = 1.5  # texels of a level that bilinear filtering reads beyond a border: one to the last centre, half to its rim
-LEAST, MOST = 64, 8192  # texels along a side: a smaller map stands in for one, a larger is not looked at
+LEAST = 64  # texels along a side: a smaller map only stands in for one
+MOST, WIDEST = 8192, 32  # pixels along a side of the grid that borders are drawn on, and pixels looked at around each
 
 
 def gutter_findings(view: View, map_size: int, mip: int) -> Iterator[Finding]:
@@ -21,9 +22,11 @@ def gutter_findings(view: View, map_size: int, mip: int) -> Iterator[Finding]:
 
     map_size   texels along a side; 0: as large as the material's map, if there is one
     mip        the level down to which charts must not blend; 0 is the map itself
+
+    Gaps are exact, whatever the grid.
     """
     size = (map_size, map_size) if map_size else view.map_size
-    if view.uv is None or size is None or view.chart_count < 2 or min(size) < LEAST or max(size) > MOST:
+    if view.uv is None or size is None or view.chart_count < 2 or min(size) < LEAST:
         return
     corner = _borders(view)
     chart = view.chart[view.owner[corner]]
@@ -33,8 +36,10 @@ def gutter_findings(view: View, map_size: int, mip: int) -> Iterator[Finding]:
     inside = _in_tile(view)[chart]
     corner, chart, start, end = corner[inside], chart[inside], start[inside], end[inside]
     limit = REACH * 2**mip
-    gap, other = gutters_of(start, end, _stacks(view)[chart], size, limit)
-    narrow = other >= 0
+    coarser = min(1.0, MOST / max(size), WIDEST / limit)
+    grid = (max(1, round(size[0] * coarser)), max(1, round(size[1] * coarser)))
+    gap, other = gutters_of(start * coarser, end * coarser, _stacks(view)[chart], grid, limit * coarser)
+    gap, narrow = gap / coarser, other >= 0
     if narrow.any():
         worst = int(np.argmin(gap))
         between = f"charts {chart[worst]} and {chart[other[worst]]}"

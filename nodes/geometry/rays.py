@@ -32,6 +32,7 @@ class RayScene:
 
         sound = np.isfinite(positions).all(axis=(1, 2))
         self._rows = np.nonzero(sound)[0].astype(np.int32)
+        self._whole = bool(sound.all())
         kept = positions[sound].astype(np.float64)
         self._middle = (kept.min(axis=(0, 1)) + kept.max(axis=(0, 1))) / 2 if len(kept) else np.zeros(3)
         self.size = float(np.linalg.norm(kept.max(axis=(0, 1)) - kept.min(axis=(0, 1)))) if len(kept) else 0.0
@@ -54,7 +55,7 @@ class RayScene:
             return Hits(np.full(count, -1, np.int32), np.zeros((count, 2), np.float32), reach.copy(), nothing)
         directions = np.ascontiguousarray(directions, np.float32)
         met = self._scene.run(self._near(origins), directions, output=1, dists=np.ascontiguousarray(reach, np.float32))
-        triangle = np.where(met["primID"] >= 0, self._rows[met["primID"]], -1).astype(np.int32)
+        triangle = self._row_of(met["primID"])
         behind = (np.einsum("ij,ij->i", met["Ng"], directions) > 0) & (triangle >= 0)
         return Hits(triangle, np.stack([met["u"], met["v"]], axis=1), met["tfar"], behind)
 
@@ -69,6 +70,13 @@ class RayScene:
             dists=np.ascontiguousarray(reach, np.float32),
         )
         return np.asarray(found) >= 0
+
+    def _row_of(self, met: Array) -> Array:
+        """Rows of the triangles given, from those of the triangles that could be used."""
+        if self._whole:
+            return met
+        rows: Array = np.where(met >= 0, self._rows[met], -1).astype(np.int32)
+        return rows
 
     def _near(self, origins: Array) -> Array:
         return np.ascontiguousarray(origins - self._middle, np.float32)

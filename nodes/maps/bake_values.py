@@ -44,7 +44,7 @@ def into_frames(chosen: Array, triangle: Array, weights: Array, frames: Array, w
             continue
         at = chosen[i]
         normals[i, 0], normals[i, 1], normals[i, 2] = unshade(
-            frames[triangle[at]], weights[at, 0], weights[at, 1], way, x, y, z
+            frames, triangle[at], weights[at, 0], weights[at, 1], way, x, y, z
         )
 
 

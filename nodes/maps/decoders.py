@@ -39,24 +39,59 @@ def scaled(x: float, y: float, z: float) -> float:
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
+def _corner_mean(
+    frames: Array, t: int, w1: float, w2: float
+) -> tuple[float, float, float, float, float, float, float, float, float, float]:
+    """What the corners of a triangle have, interpolated: normal, tangent, bitangent, side.
+
+    This alone takes an array and has no branches: then no reference to the array is counted for each texel.
+    """
+    w0 = 1.0 - w1 - w2
+    return (
+        w0 * frames[t, 0, 0] + w1 * frames[t, 1, 0] + w2 * frames[t, 2, 0],
+        w0 * frames[t, 0, 1] + w1 * frames[t, 1, 1] + w2 * frames[t, 2, 1],
+        w0 * frames[t, 0, 2] + w1 * frames[t, 1, 2] + w2 * frames[t, 2, 2],
+        w0 * frames[t, 0, 3] + w1 * frames[t, 1, 3] + w2 * frames[t, 2, 3],
+        w0 * frames[t, 0, 4] + w1 * frames[t, 1, 4] + w2 * frames[t, 2, 4],
+        w0 * frames[t, 0, 5] + w1 * frames[t, 1, 5] + w2 * frames[t, 2, 5],
+        w0 * frames[t, 0, 6] + w1 * frames[t, 1, 6] + w2 * frames[t, 2, 6],
+        w0 * frames[t, 0, 7] + w1 * frames[t, 1, 7] + w2 * frames[t, 2, 7],
+        w0 * frames[t, 0, 8] + w1 * frames[t, 1, 8] + w2 * frames[t, 2, 8],
+        w0 * frames[t, 0, 9] + w1 * frames[t, 1, 9] + w2 * frames[t, 2, 9],
+    )
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
 def frame_at(
-    corners: Array, w1: float, w2: float, way: int
+    frames: Array, t: int, w1: float, w2: float, way: int
 ) -> tuple[float, float, float, float, float, float, float, float, float]:
     """The frame t, b, n that a decoder has at a place in a triangle, in float64.
 
-    corners   (3, 10) float32: see Surface.frames
+    frames    (triangles, 3, 10) float32: see Surface.frames
+    t         the triangle
     w1, w2    weights of its corners 1 and 2
     way       one of WAYS
     """
+    return _built(way, *_corner_mean(frames, t, w1, w2))
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _built(
+    way: int,
+    nx: float,
+    ny: float,
+    nz: float,
+    tx: float,
+    ty: float,
+    tz: float,
+    bx: float,
+    by: float,
+    bz: float,
+    side: float,
+) -> tuple[float, float, float, float, float, float, float, float, float]:
+    """A decoder's frame t, b, n of what was interpolated."""
     if way & OBJECT:
         return 1.0, 0.0, 0.0, 0.0, 1.0, 0.0, 0.0, 0.0, 1.0
-    w0 = 1.0 - w1 - w2
-    nx = w0 * corners[0, 0] + w1 * corners[1, 0] + w2 * corners[2, 0]
-    ny = w0 * corners[0, 1] + w1 * corners[1, 1] + w2 * corners[2, 1]
-    nz = w0 * corners[0, 2] + w1 * corners[1, 2] + w2 * corners[2, 2]
-    tx = w0 * corners[0, 3] + w1 * corners[1, 3] + w2 * corners[2, 3]
-    ty = w0 * corners[0, 4] + w1 * corners[1, 4] + w2 * corners[2, 4]
-    tz = w0 * corners[0, 5] + w1 * corners[1, 5] + w2 * corners[2, 5]
     if way & UNIT:
         s = scaled(nx, ny, nz)
         nx, ny, nz = nx * s, ny * s, nz * s
@@ -66,12 +101,17 @@ def frame_at(
         s = scaled(tx, ty, tz)
         tx, ty, tz = tx * s, ty * s, tz * s
     if not way & PER_VERTEX:
-        side = w0 * corners[0, 9] + w1 * corners[1, 9] + w2 * corners[2, 9]
-        bx, by, bz = (ny * tz - nz * ty) * side, (nz * tx - nx * tz) * side, (nx * ty - ny * tx) * side
-        return tx, ty, tz, bx, by, bz, nx, ny, nz
-    bx = w0 * corners[0, 6] + w1 * corners[1, 6] + w2 * corners[2, 6]
-    by = w0 * corners[0, 7] + w1 * corners[1, 7] + w2 * corners[2, 7]
-    bz = w0 * corners[0, 8] + w1 * corners[1, 8] + w2 * corners[2, 8]
+        return (
+            tx,
+            ty,
+            tz,
+            (ny * tz - nz * ty) * side,
+            (nz * tx - nx * tz) * side,
+            (nx * ty - ny * tx) * side,
+            nx,
+            ny,
+            nz,
+        )
     if way & SQUARE:
         d, e = bx * nx + by * ny + bz * nz, bx * tx + by * ty + bz * tz
         bx, by, bz = bx - d * nx - e * tx, by - d * ny - e * ty, bz - d * nz - e * tz
@@ -82,22 +122,26 @@ def frame_at(
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def shade(corners: Array, w1: float, w2: float, way: int, x: float, y: float, z: float) -> tuple[float, float, float]:
+def shade(
+    frames: Array, t: int, w1: float, w2: float, way: int, x: float, y: float, z: float
+) -> tuple[float, float, float]:
     """The unit normal that a decoder shades with, in the mesh's own space; (0, 0, 0) where its frame has none."""
-    tx, ty, tz, bx, by, bz, nx, ny, nz = frame_at(corners, w1, w2, way)
+    tx, ty, tz, bx, by, bz, nx, ny, nz = frame_at(frames, t, w1, w2, way)
     a, b, c = x * tx + y * bx + z * nx, x * ty + y * by + z * ny, x * tz + y * bz + z * nz
     s = scaled(a, b, c)
     return a * s, b * s, c * s
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def unshade(corners: Array, w1: float, w2: float, way: int, x: float, y: float, z: float) -> tuple[float, float, float]:
+def unshade(
+    frames: Array, t: int, w1: float, w2: float, way: int, x: float, y: float, z: float
+) -> tuple[float, float, float]:
     """The unit texel that a decoder turns into a normal of the mesh's own space: the inverse of `shade`.
 
     By the inverse of the matrix (t b n), whose rows are cross products over its determinant. A frame without volume
     gives (0, 0, 1).
     """
-    tx, ty, tz, bx, by, bz, nx, ny, nz = frame_at(corners, w1, w2, way)
+    tx, ty, tz, bx, by, bz, nx, ny, nz = frame_at(frames, t, w1, w2, way)
     # b x n, n x t, t x b
     ux, uy, uz = by * nz - bz * ny, bz * nx - bx * nz, bx * ny - by * nx
     vx, vy, vz = ny * tz - nz * ty, nz * tx - nx * tz, nx * ty - ny * tx

@@ -134,15 +134,14 @@ def _shine(
             light[i] = GROUND
             continue
         w1, w2 = np.float64(weights[i, 0]), np.float64(weights[i, 1])
-        corners = frames[t]
         x, y, z = 0.0, 0.0, 0.0
         if sheet[t] >= 0:
-            x, y, z = shade(corners, w1, w2, ways[t], texels[i, 0], texels[i, 1], texels[i, 2])
+            x, y, z = shade(frames, t, w1, w2, ways[t], texels[i, 0], texels[i, 1], texels[i, 2])
         if x == 0 and y == 0 and z == 0:  # nothing mapped, or a frame that defines nothing
             w0 = 1 - w1 - w2
-            x = w0 * corners[0, 0] + w1 * corners[1, 0] + w2 * corners[2, 0]
-            y = w0 * corners[0, 1] + w1 * corners[1, 1] + w2 * corners[2, 1]
-            z = w0 * corners[0, 2] + w1 * corners[1, 2] + w2 * corners[2, 2]
+            x = w0 * frames[t, 0, 0] + w1 * frames[t, 1, 0] + w2 * frames[t, 2, 0]
+            y = w0 * frames[t, 0, 1] + w1 * frames[t, 1, 1] + w2 * frames[t, 2, 1]
+            z = w0 * frames[t, 0, 2] + w1 * frames[t, 1, 2] + w2 * frames[t, 2, 2]
             s = scaled(x, y, z)
             x, y, z = x * s, y * s, z * s
         facing = max(0.0, x * towards[0] + y * towards[1] + z * towards[2])

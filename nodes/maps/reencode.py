@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 from dataclasses import replace
+from typing import NamedTuple
 
 import numpy as np
 from numba import njit
+from numpy.typing import DTypeLike
 from tangentry.nodes.geometry.cores import share_out, shared_zeros
 from tangentry.nodes.geometry.texels import Owners, texel_owners
-from tangentry.nodes.maps.decoders import OBJECT, WAYS, shade, unshade
+from tangentry.nodes.maps.decoders import OBJECT, WAYS, scaled, shade, unshade
 from tangentry.nodes.maps.encodings import decode_texels, encode_normals
 from tangentry.nodes.maps.gutter import nearest_owned
 from tangentry.nodes.maps.surface import Surface
@@ -16,6 +18,18 @@ from tangentry.nodes.model import Sheet
 from tangentry.pipeline.flow import Array
 
 BAND = 256  # rows worked on at a time
+
+
+class Codes(NamedTuple):
+    """How three channels hold a direction: component = code * scale + offset, y turned over where green points down."""
+
+    scale: float
+    offset: float
+    turn: float  # +1, or -1 where green points down
+    top: float  # the largest code; 0 where components are held as they are
+
+
+PLAIN = Codes(1.0, 0.0, 1.0, 0.0)
 
 
 def reencode_sheet(
@@ -26,66 +40,86 @@ def reencode_sheet(
         wanted.texel = unshade(wanted frame, shade(old frame, old texel))
 
     made_for, wanted_for   names of decoders, see maps/decoders.py
-    gutter                 texels outside all charts take the frames of the nearest texel inside that is no further than this
+    gutter                 texels outside all charts take the frames of the nearest inside that is no further than this
 
     Texels that neither surface covers stay as they are. Encoding and depth stay; two channels that would have to hold a
     negative z become three.
     """
     encoding = "unorm" if sheet.encoding == "xy" and wanted_for == "object" else sheet.encoding
     green = "" if wanted_for == "object" else sheet.green or "up"
-    channels = _channels(sheet, encoding)
-    out = shared_zeros((*sheet.texels.shape[:2], channels), sheet.texels.dtype)
-    made_way, wanted_way = WAYS[made_for], WAYS[wanted_for]
-    height = len(out)
+    height, width, channels = sheet.texels.shape
+    out = shared_zeros(
+        (height, width, max(channels, 3) if encoding != sheet.encoding else channels), sheet.texels.dtype
+    )
+    same = encoding == sheet.encoding and green == sheet.green
+    ways = WAYS[made_for], WAYS[wanted_for]
+    reach = 0 if ways == (OBJECT, OBJECT) else gutter
 
     def work(band: int) -> None:
         rows = band * BAND, min(height, (band + 1) * BAND)
-        old = sheet.texels[rows[0] : rows[1]]
-        reach = 0 if made_way == wanted_way == OBJECT else gutter
-        here = _owners(made_in, sheet, rows, reach)
-        there = here if _same_layout(made_in, wanted_in) else _owners(wanted_in, sheet, rows, reach)
-        new = np.empty((*old.shape[:2], 3), np.float32)
-        normals = decode_texels(old, sheet.encoding, sheet.green)
-        _reencode(normals, *here, made_in.frames, made_way, *there, wanted_in.frames, wanted_way, new)
-        covered = (here.triangle >= 0) & (there.triangle >= 0)
-        codes = encode_normals(new, encoding, 8 * sheet.texels.dtype.itemsize, green)
-        out[rows[0] : rows[1], :, : codes.shape[2]] = codes
-        if channels > codes.shape[2]:
-            out[rows[0] : rows[1], :, codes.shape[2] :] = old[..., codes.shape[2] - channels :]
-        if encoding == sheet.encoding and green == sheet.green:
-            out[rows[0] : rows[1]][~covered] = old[~covered]
+        here = _owners(made_in, width, height, rows, reach)
+        there = here if _same_layout(made_in, wanted_in) else _owners(wanted_in, width, height, rows, reach)
+        old, new = sheet.texels[rows[0] : rows[1]], out[rows[0] : rows[1]]
+        source, read = _readable(old, sheet.encoding, sheet.green)
+        written = _codes(encoding, green, out.dtype)
+        target = new if written is not None else np.empty((*old.shape[:2], 3), np.float32)
+        new[..., 2:] = old[..., 2 : new.shape[2]] if same else 0
+        sides = *here, made_in.frames, ways[0], *there, wanted_in.frames, ways[1]
+        _move(source, *read, *sides, target, *(written or PLAIN), same and target is new and source is old)
+        if target is not new:
+            codes = encode_normals(target, encoding, 8 * out.itemsize, green)
+            kept = ((here.triangle < 0) | (there.triangle < 0)) & same
+            new[..., : codes.shape[2]] = np.where(kept[..., None], old[..., : codes.shape[2]], codes)
 
     share_out(work, -(-height // BAND))
     space = "object" if wanted_for == "object" else "tangent"
     return replace(sheet, texels=out, space=space, green=green, encoding=encoding)
 
 
-def _channels(sheet: Sheet, encoding: str) -> int:
-    own = sheet.texels.shape[2]
-    return max(own, 3) if encoding != sheet.encoding else own
+def _codes(encoding: str, green: str, kind: DTypeLike) -> Codes | None:
+    """How an encoding with three plain channels holds a direction; None for the others."""
+    turn = -1.0 if green == "down" else 1.0
+    if np.dtype(kind).kind == "f":
+        return Codes(1.0, 0.0, turn, 0.0)
+    top = float(np.iinfo(kind).max)
+    half = top // 2
+    return {"unorm": Codes(2 / top, -1.0, turn, top), "snorm": Codes(1 / half, -(half + 1) / half, turn, top)}.get(
+        encoding
+    )
+
+
+def _readable(texels: Array, encoding: str, green: str) -> tuple[Array, Codes]:
+    """Texels that the kernel can read as they are, or their decoded normals."""
+    codes = _codes(encoding, green, texels.dtype)
+    if codes is None or texels.shape[2] < 3:
+        return decode_texels(texels, encoding, green), PLAIN
+    return texels, codes
 
 
 def _same_layout(a: Surface, b: Surface) -> bool:
     return a.places is b.places or np.array_equal(a.places, b.places)
 
 
-def _owners(surface: Surface, sheet: Sheet, rows: tuple[int, int], reach: int) -> Owners:
+def _owners(surface: Surface, width: int, height: int, rows: tuple[int, int], reach: int) -> Owners:
     """Owners of a band of rows, those of the gutter included."""
-    height, width = sheet.texels.shape[:2]
     first, last = max(0, rows[0] - reach), min(height, rows[1] + reach)
     found = texel_owners(surface.places, width, height, rows=(first, last), conservative=True)
-    if reach:
-        source = nearest_owned(found.triangle >= 0, reach)
-        known = source >= 0
-        found.triangle[known] = found.triangle.ravel()[source[known]]
-        found.weights[known] = found.weights.reshape(-1, 2)[source[known]]
     cut = slice(rows[0] - first, rows[1] - first)
-    return Owners(np.ascontiguousarray(found.triangle[cut]), np.ascontiguousarray(found.weights[cut]))
+    if reach and (found.triangle < 0).any():
+        source = nearest_owned(found.triangle >= 0, reach)[cut]
+        known = source >= 0
+        found.triangle[cut][known] = found.triangle.ravel()[source[known]]
+        found.weights[cut][known] = found.weights.reshape(-1, 2)[source[known]]
+    return Owners(found.triangle[cut], found.weights[cut])
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def _reencode(
-    normals: Array,
+def _move(
+    source: Array,
+    scale: float,
+    offset: float,
+    turn: float,
+    _top: float,
     made_by: Array,
     made_at: Array,
     made_frames: Array,
@@ -94,13 +128,33 @@ def _reencode(
     wanted_at: Array,
     wanted_frames: Array,
     wanted_way: int,
-    out: Array,
+    target: Array,
+    out_scale: float,
+    out_offset: float,
+    out_turn: float,
+    out_top: float,
+    keep: bool,
 ) -> None:
-    for r in range(normals.shape[0]):
-        for c in range(normals.shape[1]):
+    """Move a band of texels; `keep`: those without owners keep their codes."""
+    over = 1 / out_scale
+    for r in range(source.shape[0]):
+        for c in range(source.shape[1]):
             a, b = made_by[r, c], wanted_by[r, c]
-            x, y, z = np.float64(normals[r, c, 0]), np.float64(normals[r, c, 1]), np.float64(normals[r, c, 2])
+            if (a < 0 or b < 0) and keep:
+                target[r, c, 0], target[r, c, 1], target[r, c, 2] = source[r, c, 0], source[r, c, 1], source[r, c, 2]
+                continue
+            x = source[r, c, 0] * scale + offset
+            y = (source[r, c, 1] * scale + offset) * turn
+            z = source[r, c, 2] * scale + offset
             if a >= 0 and b >= 0:
-                x, y, z = shade(made_frames[a], made_at[r, c, 0], made_at[r, c, 1], made_way, x, y, z)
-                x, y, z = unshade(wanted_frames[b], wanted_at[r, c, 0], wanted_at[r, c, 1], wanted_way, x, y, z)
-            out[r, c, 0], out[r, c, 1], out[r, c, 2] = x, y, z
+                x, y, z = shade(made_frames, a, made_at[r, c, 0], made_at[r, c, 1], made_way, x, y, z)
+                x, y, z = unshade(wanted_frames, b, wanted_at[r, c, 0], wanted_at[r, c, 1], wanted_way, x, y, z)
+            else:
+                s = scaled(x, y, z)
+                x, y, z = x * s, y * s, z * s
+            x, y, z = (x - out_offset) * over, (y * out_turn - out_offset) * over, (z - out_offset) * over
+            if out_top > 0:
+                x = min(max(np.rint(x), 0.0), out_top)
+                y = min(max(np.rint(y), 0.0), out_top)
+                z = min(max(np.rint(z), 0.0), out_top)
+            target[r, c, 0], target[r, c, 1], target[r, c, 2] = x, y, z

@@ -139,11 +139,10 @@ def _between(
             if s < 0 or t < 0:
                 degrees[r, c] = np.nan
                 continue
-            n, m = normals[r, c], other_normals[r, c]
-            x, y, z = shade(frames[s], weights[r, c, 0], weights[r, c, 1], way, n[0], n[1], n[2])
-            p, q, w = shade(
-                other_frames[t], other_weights[r, c, 0], other_weights[r, c, 1], other_way, m[0], m[1], m[2]
-            )
+            u, v, n = normals[r, c, 0], normals[r, c, 1], normals[r, c, 2]
+            e, f, m = other_normals[r, c, 0], other_normals[r, c, 1], other_normals[r, c, 2]
+            x, y, z = shade(frames, s, weights[r, c, 0], weights[r, c, 1], way, u, v, n)
+            p, q, w = shade(other_frames, t, other_weights[r, c, 0], other_weights[r, c, 1], other_way, e, f, m)
             apart = np.sqrt((x - p) ** 2 + (y - q) ** 2 + (z - w) ** 2)
             total = np.sqrt((x + p) ** 2 + (y + q) ** 2 + (z + w) ** 2)
             degrees[r, c] = np.degrees(2 * np.arctan2(apart, total))  # Kahan's formula: exact near 0 and 180

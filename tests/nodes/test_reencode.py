@@ -47,7 +47,7 @@ def shaded(map, mesh, decoder):
     normals = decoded(map.sheets[0])
     return np.array(
         [
-            shade(surface.frames[owners.triangle[r, c]], *owners.weights[r, c], WAYS[decoder], *normals[r, c])
+            shade(surface.frames, owners.triangle[r, c], *owners.weights[r, c], WAYS[decoder], *normals[r, c])
             for r, c in zip(*np.nonzero(owners.triangle >= 0), strict=True)
         ]
     )

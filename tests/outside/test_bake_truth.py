@@ -137,7 +137,7 @@ def test_decoded_normals_of_a_bumpy_torus_are_those_of_its_formula(baked, bits, 
     texels = decoded(encode(map, bits=bits).sheets[0])[own]
     shown = np.array(
         [
-            shade(surface.frames[t], *w, WAYS["pixel"], *texel)
+            shade(surface.frames, t, *w, WAYS["pixel"], *texel)
             for t, w, texel in zip(owners.triangle[own], owners.weights[own], texels, strict=True)
         ]
     )

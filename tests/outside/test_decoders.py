@@ -20,7 +20,7 @@ LEANING = (0.5, 0.5, np.sqrt(0.5))
 
 def corners(tangent, bitangent):
     """A triangle with one frame at all corners, its normal along z."""
-    return np.tile(np.concatenate([[0, 0, 1], tangent, bitangent, [1]]).astype(np.float32), (3, 1))
+    return np.tile(np.concatenate([[0, 0, 1], tangent, bitangent, [1]]).astype(np.float32), (1, 3, 1))
 
 
 def apart(one, other):
@@ -41,15 +41,15 @@ def test_squaring_a_skewed_frame_errs_as_the_table_says(s, unit, raw, cotangent)
     (2001) and Schueler (2006): the squared frame against unit T and B, against T and B as they are, and against the
     inverse transpose (1, s, 0), (0, 1, 0) that an exact height field has."""
     tangent, bitangent = np.array([1, 0, 0]), np.array([-s, 1, 0])
-    squared = shade(corners(tangent, bitangent), 0.2, 0.3, WAYS["vertex-square"], *LEANING)
-    assert_allclose(squared, shade(corners(tangent, bitangent), 0.2, 0.3, WAYS["pixel"], *LEANING), atol=1e-7)
+    squared = shade(corners(tangent, bitangent), 0, 0.2, 0.3, WAYS["vertex-square"], *LEANING)
+    assert_allclose(squared, shade(corners(tangent, bitangent), 0, 0.2, 0.3, WAYS["pixel"], *LEANING), atol=1e-7)
 
     for frame, way, figure in (
         ((tangent, bitangent), "vertex-unit", unit),
         ((tangent, bitangent), "vertex", raw),
         (((1, s, 0), (0, 1, 0)), "vertex", cotangent),
     ):
-        other = shade(corners(*frame), 0.2, 0.3, WAYS[way], *LEANING)
+        other = shade(corners(*frame), 0, 0.2, 0.3, WAYS[way], *LEANING)
         assert_allclose(apart(squared, other), figure, atol=1e-3)
 
 
@@ -76,7 +76,7 @@ def mean_difference(mesh, texel, size=128):
     ways = [
         np.array(
             [
-                shade(surface.frames[t], *w, WAYS[way], *texel)
+                shade(surface.frames, t, *w, WAYS[way], *texel)
                 for t, w in zip(owners.triangle[own], owners.weights[own], strict=True)
             ]
         )
