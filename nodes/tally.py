@@ -9,9 +9,9 @@ from pathlib import PurePosixPath
 
 import numpy as np
 from tangentry.pipeline.errors import InputError
-from tangentry.pipeline.flow import Files, Finding, Findings, OutFile, OutputFile
+from tangentry.pipeline.flow import SEVERITIES, Files, Findings, OutFile, OutputFile
 
-SEVERITIES = ("fault", "warning", "note")
+RANK = {severity: rank for rank, severity in enumerate(SEVERITIES)}
 
 
 def tally(findings: dict[str, Findings], *, file: OutputFile | str) -> Files:
@@ -31,11 +31,10 @@ def tally(findings: dict[str, Findings], *, file: OutputFile | str) -> Files:
 
 
 def _row(name: str, findings: Findings) -> dict[str, str | float]:
-    counts = {severity: sum(1 for item in findings.items if _severity(item) == severity) for severity in SEVERITIES}
-    verdict = "faulty" if counts["fault"] else "warned" if counts["warning"] else "sound"
+    counts = {severity: sum(1 for item in findings.items if item.standing == severity) for severity in SEVERITIES}
     return {
         "asset": name,
-        "verdict": verdict,
+        "verdict": findings.verdict,
         **{f"{one}s": count for one, count in counts.items()},
         **findings.facts,
         "findings": _worst_first(findings),
@@ -45,13 +44,9 @@ def _row(name: str, findings: Findings) -> dict[str, str | float]:
 def _worst_first(findings: Findings) -> str:
     """Each id once, with its count over all parts."""
     told: dict[str, int] = {}
-    for item in sorted(findings.items, key=lambda item: SEVERITIES.index(_severity(item))):
+    for item in sorted(findings.items, key=lambda item: RANK[item.standing]):
         told[item.id] = told.get(item.id, 0) + item.count
     return "; ".join(f"{id} {count}" for id, count in told.items())
-
-
-def _severity(item: Finding) -> str:
-    return "note" if item.accepted else item.severity
 
 
 def _columns(rows: list[dict[str, str | float]]) -> list[str]:

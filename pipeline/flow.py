@@ -156,6 +156,8 @@ class Files:
 
 
 Severity = Literal["fault", "warning", "note"]
+SEVERITIES: tuple[Severity, ...] = ("fault", "warning", "note")  # the worst first
+VERDICTS = ("faulty", "warned", "sound")  # likewise
 
 
 @flow_value
@@ -176,6 +178,11 @@ class Finding:
     accepted: str = ""  # why the graph file accepts it; then it counts as a note
     charts: Array | None = None  # (len(elements),) int32: the chart each lies in, -1: none; None where there are no UVs
 
+    @property
+    def standing(self) -> str:
+        """The severity it counts with: what is accepted counts as a note."""
+        return "note" if self.accepted else self.severity
+
 
 @flow_value
 class Findings:
@@ -188,4 +195,10 @@ class Findings:
     @property
     def faulty(self) -> bool:
         """Is there a fault that nobody accepted?"""
-        return any(item.severity == "fault" and not item.accepted for item in self.items)
+        return self.verdict == "faulty"
+
+    @property
+    def verdict(self) -> str:
+        """One of VERDICTS."""
+        standings = {item.standing for item in self.items}
+        return "faulty" if "fault" in standings else "warned" if "warning" in standings else "sound"

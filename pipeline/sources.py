@@ -1,11 +1,13 @@
 """The digest of the source that a node kind depends on: its file, and what that imports inside its package.
 
-Imports are read from the text, at any depth of a function, and followed; nothing is run.
+Imports are read from the text, at any depth of a function, and followed; nothing is run. Files beside a module that
+share its stem (the frame and the look of a page) are part of its source.
 """
 
 from __future__ import annotations
 
 import ast
+import glob
 import os
 from functools import lru_cache
 from pathlib import Path
@@ -27,7 +29,7 @@ def reached(folder: Path, file: Path, package: str = "") -> set[Path]:
         path = waiting.pop()
         if path in found:
             continue
-        found.add(path)
+        found |= {path, *_beside(path)}
         here = path.parent.relative_to(folder).parts
         for level, module, names in _imports(*_version(path)):
             inside = _inside(level, module, package, here)
@@ -48,12 +50,19 @@ def _inside(level: int, module: str, package: str, here: tuple[str, ...]) -> tup
 
 
 def _files(folder: Path, inside: tuple[str, ...], names: tuple[str, ...]) -> list[Path]:
-    """The files that `from inside import names` runs: the packages on the way, the module, and modules among the names."""
+    """The files that `from inside import names` runs: packages on the way, the module, and modules among the names."""
     steps = [folder.joinpath(*inside[:count], "__init__.py") for count in range(1, len(inside) + 1)]
     module = folder.joinpath(*inside)
     steps += [module.with_suffix(".py")] if inside else []
     steps += [module / f"{name}.py" for name in names] + [module / name / "__init__.py" for name in names]
     return [path for path in steps if path.is_file()]
+
+
+def _beside(path: Path) -> list[Path]:
+    """The data files of a module, which it finds by its own place: those of its stem that aren't Python's own."""
+    if "__file__" not in _text(*_version(path)):
+        return []
+    return [one for one in path.parent.glob(f"{glob.escape(path.stem)}.*") if one.suffix not in (".py", ".pyc", ".pyi")]
 
 
 def _version(path: Path) -> tuple[str, int, int]:

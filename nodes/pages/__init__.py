@@ -1,0 +1,1 @@
+"""Pages that people read."""
