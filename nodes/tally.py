@@ -11,7 +11,7 @@ import numpy as np
 from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import SEVERITIES, Files, Findings, OutFile, OutputFile
 
-RANK = {severity: rank for rank, severity in enumerate(SEVERITIES)}
+RANK: dict[str, int] = {severity: rank for rank, severity in enumerate(SEVERITIES)}
 
 
 def tally(findings: dict[str, Findings], *, file: OutputFile | str) -> Files:

@@ -14,7 +14,7 @@ from typing import Any, NamedTuple
 
 from tangentry.pipeline.flow import SEVERITIES, VERDICTS, Array, Finding, Findings
 
-RANK = {severity: rank for rank, severity in enumerate(SEVERITIES)}
+RANK: dict[str, int] = {severity: rank for rank, severity in enumerate(SEVERITIES)}
 
 
 class Entry(NamedTuple):

@@ -119,8 +119,9 @@ def test_the_viewer_gets_the_mesh_as_it_is():
 
 def test_a_finding_is_shown_on_the_triangles_of_its_faces():
     mesh = asset(replace(box_part(), name="box"))
+    found = Findings("b", (finding("fault", elements=(1, 4)), finding("note", elements=())), {})
 
-    drawn = scene(text({"b": Findings("b", (finding("fault", elements=(1, 4)), finding("note", elements=())), {})}, assets={"b": mesh}))  # fmt: skip
+    drawn = scene(text({"b": found}, assets={"b": mesh}))
 
     assert {key: unpacked(code, "<u4").tolist() for key, code in drawn["marks"].items()} == {"0": [2, 3, 8, 9]}
 

@@ -54,7 +54,7 @@ def test_a_rerun_that_gives_the_same_value_stops_there(project):
 
 def test_data_beside_a_module_is_part_of_its_source(project):
     project.write("kinds/helper.txt", "quiet")
-    project.edit("kinds/helper.py", "\ndef ", "\nPLACE = __file__\n\n\ndef ")
+    project.edit("kinds/helper.py", "def ", "PLACE = __file__\n\n\ndef ")
     project.build()
     project.write("kinds/helper.txt", "louder")
 
