@@ -36,7 +36,7 @@ def test_only_props_with_a_height_map_get_a_normal_map(demo):
         if any(use.role == "normal" for material in load(str(file)).materials for use in material.maps)
     }
 
-    assert mapped == {"crate", "quay_slab"} == {file.stem.removesuffix("_normal") for file in demo.out.glob("*.png")}
+    assert mapped == {"crate", "quay_slab"} == {file.stem.removesuffix("_normal") for file in demo.out.glob("*_normal.png")}
 
 
 def test_building_again_runs_nothing_and_one_saved_prop_only_its_branch(graphs, build, tmp_path):

@@ -21,7 +21,8 @@ REFUSALS = {
 def test_the_build_says_that_something_is_wrong_and_delivers_nothing(sent_back):
     assert sent_back.exit == 1
     assert set(sent_back.assets) == {*FLAWS, *REFUSALS}
-    assert [file.name for file in sent_back.out.iterdir()] == ["tally.md"]
+    drawn = {f"{prop.partition('.')[0]}_layout.png" for prop in FLAWS}
+    assert {file.name for file in sent_back.out.iterdir()} == {"tally.md", "index.html", *drawn}
 
 
 @pytest.mark.parametrize("prop", FLAWS)
