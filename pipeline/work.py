@@ -6,18 +6,22 @@ Values stay in memory until the asset is done; a value that the store has lost i
 from __future__ import annotations
 
 import dataclasses
+import math
 import os
 import time
 import traceback
-from collections.abc import Callable, Iterable, Iterator
+from collections.abc import Callable, Generator, Iterable, Iterator
 from pathlib import Path
 from typing import Any
 
+import numpy as np
 from tangentry.pipeline.errors import InputError, NodeError
-from tangentry.pipeline.flow import Files, Findings, InputFile
+from tangentry.pipeline.flow import Files, Finding, Findings, InputFile
 from tangentry.pipeline.plan import KEY_FORMAT, Decision, Outcome, Parts, Reason, Step, StepId, decide, outcome_of
 from tangentry.pipeline.store import Damaged, Result, Store, StoreError
 from tangentry.pipeline.values import canonical, digest_text
+
+MOST_LISTED = 100  # elements of a finding that the record names
 
 
 @dataclasses.dataclass(frozen=True)
@@ -58,7 +62,7 @@ class Bench:
     ) -> None:
         self.folder, self.store, self.digest_of, self.step_of = folder, store, digest_of, step_of
         self.known: dict[StepId, Outcome] = {}
-        self._warm: dict[str, Any] = {}
+        self._warm: dict[str | None, Any] = {}
 
     def carry(
         self, steps: Iterable[Step], last: dict[StepId, Parts], refuse: dict[StepId, str] | None = None
@@ -69,19 +73,26 @@ class Bench:
                 done = Done(step.id, "failed", error=refuse[step.id])
             else:
                 decision = decide(step, self.known, self.store, self.digest_of, last.get(step.id))
-                if decision.state == "run":
-                    yield Started(step.id)
-                    done = self.run(step, decision)
-                else:
-                    done = self._settled(step, decision)
+                done = self._settled(step, decision) or (yield from self._in_turn(step, decision, last.get(step.id)))
             self.known[step.id] = done.outcome
             yield done
+
+    def _in_turn(self, step: Step, decision: Decision, last: Parts | None) -> Generator[Event, None, Done]:
+        """Run a step, unless another build on this store is just running it: then wait for what that one makes."""
+        with self.store.turns.of(decision.key):
+            if self.store.results(decision.key):
+                done = self._settled(step, decide(step, self.known, self.store, self.digest_of, last))
+                if done is not None:
+                    return done
+            yield Started(step.id)
+            return self.run(step, decision)
 
     def forget(self) -> None:
         """Let go of the values in hand."""
         self._warm.clear()
 
-    def _settled(self, step: Step, decision: Decision) -> Done:
+    def _settled(self, step: Step, decision: Decision) -> Done | None:
+        """How a step is settled by a decision alone; None where it must run."""
         if decision.state == "reuse" and decision.result is not None:
             self.store.touch(decision.key)
             parts = {**decision.parts, "reads": decision.result.reads}
@@ -96,7 +107,9 @@ class Bench:
             return Done(
                 step.id, "skipped", result=Result(outcome_of(step, decision) or {}, {}), because=decision.because
             )
-        return Done(step.id, "blocked", because=decision.because)
+        if decision.state == "blocked":
+            return Done(step.id, "blocked", because=decision.because)
+        return None
 
     def run(self, step: Step, decision: Decision) -> Done:
         """Run a step's function and keep what it makes."""
@@ -104,28 +117,26 @@ class Bench:
         files = {name: InputFile(path, self.folder) for name, path in step.reads.items()}
         error = detail = ""
         values: dict[str, Any] = {}
-        lasting = True  # a fault of the input is as repeatable as a value; a fault of the node may not be
+        result = Result({}, {})
         try:
             inputs = {name: self._input(step, name) for name in step.inputs}
             makes = {name: os.path.basename(path) for name, path in step.makes.items()}
-            values = _outputs(step, step.kind.function(**inputs, **step.settings, **files, **makes))
-            kept = {name: None if value is None else self.store.keep(value) for name, value in values.items()}
+            made = _outputs(step, step.kind.function(**inputs, **step.settings, **files, **makes))
+            kept = {name: None if value is None else self.store.keep(value) for name, value in made.items()}
+            result, values = Result(kept, {}, None, findings_in(made), self._files_in(made)), made
         except StoreError:
             raise
         except InputError as fault:
-            error, kept = str(fault), {}
-        except Exception as fault:  # the one place where a node's own fault is caught, whatever it is
-            lasting, kept = False, {}
+            error = str(fault)
+        except (Exception, SystemExit) as fault:  # the one place where a node's own fault is caught, whatever it is
             error = f'node "{step.node}" ({step.kind.name}) failed: {type(fault).__name__}: {fault}'
             detail = "".join(traceback.format_exception(fault))
         reads = self._side_reads(step, files)
-        result = Result(kept, reads, error or None, findings_in(values), self._files_in(values))
+        result = dataclasses.replace(result, reads=reads, error=error or None)
         parts = {**self._as_read(decision.parts, files), "reads": reads}
-        if lasting:
+        if not detail:  # a fault of the input is as repeatable as a value; a fault of the node may not be
             self.store.keep_result(_key(parts), result)
-        for name, value in values.items():
-            if value is not None:
-                self._warm[kept[name]] = value  # type: ignore[index]
+        self._warm.update({result.outputs[name]: value for name, value in values.items() if value is not None})
         return Done(
             step.id,
             "failed" if error else "ran",
@@ -169,7 +180,7 @@ class Bench:
         if done.error:
             raise NodeError(done.error)
         self.known[id] = done.outcome
-        return self._warm.get((done.outcome or {}).get(output) or "")
+        return self._warm.get((done.outcome or {}).get(output))
 
     def _side_reads(self, step: Step, files: dict[str, InputFile]) -> dict[str, str | None]:
         """Digests of the files that were read or looked for beside those given, relative to the first one's folder."""
@@ -193,12 +204,12 @@ class Bench:
         return {**parts, "files": read}
 
     def _files_in(self, values: dict[str, Any]) -> list[tuple[str, str]]:
-        return [
-            (one.name, self.store.digest(one.content))
-            for value in values.values()
-            if isinstance(value, Files)
-            for one in value.files
-        ]
+        """Name and digest of every file to be put in place. Raises NodeError where one is not what it should be."""
+        files = [one for value in values.values() if isinstance(value, Files) for one in value.files]
+        for one in files:
+            if not isinstance(one.name, str) or one.content.dtype != np.uint8:
+                raise NodeError(f"returned the file {one.name!r} as {one.content.dtype}; a name and uint8 are wanted")
+        return [(one.name, self.store.digest(one.content)) for one in files]
 
 
 def _key(parts: Parts) -> str:
@@ -228,24 +239,28 @@ def _outputs(step: Step, returned: Any) -> dict[str, Any]:
 
 
 def findings_in(values: dict[str, Any]) -> list[dict[str, Any]]:
-    """The findings among values as plain data, one a kind of finding: id, severity, count, what, worst, limit."""
+    """The findings among values as plain data, one for each id and severity, with what was found in each part."""
     found: dict[tuple[str, str], dict[str, Any]] = {}
     for value in values.values():
         for item in value.items if isinstance(value, Findings) else ():
-            severity = "note" if item.accepted else item.severity
-            one = found.setdefault(
-                (item.id, severity),
-                {
-                    "id": item.id,
-                    "severity": severity,
-                    "count": 0,
-                    "what": item.what,
-                    "advice": item.advice,
-                    "parts": [],
-                },
-            )
+            plain = {"id": item.id, "severity": item.standing, "count": 0, "what": item.what, "advice": item.advice}
+            one = found.setdefault((item.id, item.standing), plain | {"where": []})
             one["count"] += int(item.count)
-            one["parts"].append(item.part)
+            one["where"].append(_where(item))
             if item.accepted:
                 one["accepted"] = item.accepted
     return list(found.values())
+
+
+def _where(item: Finding) -> dict[str, Any]:
+    return {
+        "part": item.part,
+        "material": item.material,
+        "what": item.what,
+        "count": int(item.count),
+        "element": item.element,
+        "elements": item.elements[:MOST_LISTED].tolist(),
+        "charts": [] if item.charts is None else item.charts[:MOST_LISTED].tolist(),
+        "measured": [float(f"{one:.6g}") if math.isfinite(one) else None for one in item.measured[:MOST_LISTED]],
+        "limit": item.limit,
+    }

@@ -53,13 +53,25 @@ def test_the_record_is_the_contracts(project):
         ("props/b.txt", "faulty"),
         ("props/c.txt", "failed"),
     ]
-    assert record["assets"][1]["findings"][0] | {} == {
+    assert record["assets"][1]["findings"][0] == {
         "id": "rude",
         "severity": "fault",
         "count": 1,
         "what": "a rude word",
         "advice": "be polite",
-        "parts": [""],
+        "where": [
+            {
+                "part": "",
+                "material": "",
+                "what": "a rude word",
+                "count": 1,
+                "element": "",
+                "elements": [],
+                "charts": [],
+                "measured": [],
+                "limit": None,
+            }
+        ],
     }
     assert record["assets"][0]["outputs"] == ["made/a.out"] and record["assets"][0]["error"] is None
     assert record["assets"][2]["error"].startswith("props/c.txt: word 1")
