@@ -102,7 +102,7 @@ def _orientation(asset: Asset) -> Facts:
     return {
         "triangles as wound in UV space": int((side > 0).sum()),
         "triangles mirrored in UV space": int((side < 0).sum()),
-        "triangles without UV area": int((side == 0).sum()),
+        "triangles that define no tangent": int((side == 0).sum()),
     }
 
 
@@ -112,8 +112,9 @@ def _agreement(asset: Asset) -> Facts:
     if not found:
         return {}
     angle, same = np.concatenate([one for one, _ in found]), np.concatenate([one for _, one in found])
+    middle, high = np.percentile(angle, [50, 95])
     return {
-        "stored tangents, degrees from MikkTSpace": f"median {np.median(angle):.3g}, 5 % above {np.percentile(angle, 95):.3g}",
+        "stored tangents, degrees from MikkTSpace": f"median {middle:.3g}, 5 % above {high:.3g}",
         "stored tangents within 1 degree": f"{(angle <= 1).mean():.2%}",
         "stored sides as the rule has them": f"{same.mean():.2%}",
     }
