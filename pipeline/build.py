@@ -38,9 +38,10 @@ from tangentry.pipeline.plan import (
 from tangentry.pipeline.record import AssetRecord, Record
 from tangentry.pipeline.remote import open_store
 from tangentry.pipeline.seal import store_place
-from tangentry.pipeline.store import Damaged, Store, write_whole
+from tangentry.pipeline.store import Damaged, Store
 from tangentry.pipeline.values import digest_text
 from tangentry.pipeline.work import Bench, Done, Event
+from tangentry.pipeline.writing import write_whole
 
 Listener = Callable[[AssetRecord, int], None]  # an asset is through; how many there are
 
@@ -135,7 +136,8 @@ def run_build(
     """
     site = Site.open(graph, store)
     try:
-        return _Build(site, only, overwrite).run(workers, cluster, stop_at_first, tidy, listener)
+        with site.store.running.one_more():
+            return _Build(site, only, overwrite).run(workers, cluster, stop_at_first, tidy, listener)
     finally:
         site.ledger.close()
 

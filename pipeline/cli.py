@@ -137,7 +137,7 @@ def _build(chosen: argparse.Namespace) -> int:
 
 def _build_once(chosen: argparse.Namespace) -> tuple[Record, int]:
     from tangentry.pipeline.build import run_build
-    from tangentry.pipeline.store import write_whole
+    from tangentry.pipeline.writing import write_whole
     from tangentry.pipeline.terminal import Progress, closing_lines
 
     graph = _read(chosen)
@@ -205,7 +205,7 @@ def _draw_words(parser: argparse.ArgumentParser) -> None:
 def _draw(chosen: argparse.Namespace) -> int:
     from tangentry.pipeline.build import read_last_record
     from tangentry.pipeline.draw import draw
-    from tangentry.pipeline.store import write_whole
+    from tangentry.pipeline.writing import write_whole
 
     graph = _read(chosen)
     picture = draw(graph, read_last_record(graph, chosen.store))

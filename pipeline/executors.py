@@ -26,6 +26,8 @@ from tangentry.pipeline.remote import open_store
 from tangentry.pipeline.store import Store
 from tangentry.pipeline.work import Bench, Event, Started
 
+DEATHS_IN_A_ROW = 3  # of workers that had not begun a step: then something is wrong with all of them
+
 
 @dataclasses.dataclass(frozen=True)
 class Task:
@@ -88,17 +90,17 @@ class Workers:
         self._count, self._orders = count, orders
         self._context = multiprocessing.get_context("spawn")
         self._workers: list[_Worker] = []
+        self._died = 0  # in a row, without a sign of life
 
     def run(self, tasks: Sequence[Task]) -> Iterator[Event | Finished]:
         """Carry out tasks side by side; the events of one asset come in order."""
         waiting = deque(tasks)
-        self._workers = [self._start() for _ in range(min(self._count, len(tasks)))]
-        for worker in self._workers:
-            self._give(worker, waiting)
-        while any(worker.task for worker in self._workers):
-            for pipe in wait([worker.pipe for worker in self._workers if worker.task]):
-                worker = next(one for one in self._workers if one.pipe is pipe)
-                yield from self._hear(worker, waiting)
+        for _ in range(min(self._count, len(tasks))):
+            self._workers.append(self._start())
+            self._give(self._workers[-1], waiting.popleft())
+        while busy := {worker.pipe: worker for worker in self._workers if worker.task}:
+            for pipe in wait(list(busy)):
+                yield from self._hear(busy[pipe], waiting)  # type: ignore[index]
 
     def close(self) -> None:
         """End the processes."""
@@ -106,8 +108,8 @@ class Workers:
             worker.pipe.close()
             worker.process.terminate()
         for worker in self._workers:
-            worker.process.join(1)
-            if worker.process.is_alive():
+            worker.process.join(0.5)
+            if worker.process.is_alive():  # deep in a computation, so not half through writing a file
                 worker.process.kill()
 
     def _start(self) -> _Worker:
@@ -117,44 +119,46 @@ class Workers:
         theirs.close()
         return _Worker(process, ours)
 
-    def _give(self, worker: _Worker, waiting: deque[Task]) -> None:
-        worker.task, worker.running = (waiting.popleft() if waiting else None), None
-        if worker.task is not None:
-            with contextlib.suppress(BrokenPipeError):  # it died idle; hearing from it will show that
-                worker.pipe.send(worker.task)
+    def _give(self, worker: _Worker, task: Task | None) -> None:
+        worker.task, worker.running = task, None
+        if task is not None:
+            with contextlib.suppress(OSError):  # it died idle; hearing from it will show that
+                worker.pipe.send(task)
 
     def _hear(self, worker: _Worker, waiting: deque[Task]) -> Iterator[Event | Finished]:
         try:
-            message = worker.pipe.recv()
-        except (EOFError, ConnectionError):
+            events: list[Event | Finished] = worker.pipe.recv()
+        except (EOFError, OSError):  # half a message is an OSError
             self._replace(worker)
             return
-        if isinstance(message, Started):
-            worker.running = message.id
-        elif isinstance(message, Finished):
-            self._give(worker, waiting)
-        else:
-            worker.running = None
-        yield message
+        self._died = 0
+        for event in events:
+            if isinstance(event, Finished):
+                self._give(worker, waiting.popleft() if waiting else None)
+            else:
+                worker.running = event.id if isinstance(event, Started) else None
+            yield event
 
     def _replace(self, worker: _Worker) -> None:
-        """A worker died: its task goes to a new one, which leaves out the step that was running."""
+        """A worker died: its task goes to a new one, which leaves out the step that was running, if one was."""
+        assert worker.task is not None
         worker.process.join(1)
         code = worker.process.exitcode
         how = f"by signal {-code}" if code is not None and code < 0 else f"with exit code {code}"
-        assert worker.task is not None
-        fresh = self._start()
-        worker.process, worker.pipe = fresh.process, fresh.pipe
-        if worker.running is None:
+        self._died += 1
+        if worker.running is None and self._died >= DEATHS_IN_A_ROW:
             raise TangentryError(
-                f"a worker process ended {how} before it began {worker.task.member.name}; build again, with fewer workers if memory is short"
+                f"worker processes end {how} before they begin {worker.task.member.name}; build again, with fewer "
+                "workers if memory is short"
             )
-        refuse = {
-            worker.running: f'node "{worker.running[1]}": its worker process ended {how} while it ran (killed, or out of memory)'
-        }
-        worker.task = dataclasses.replace(worker.task, refuse={**worker.task.refuse, **refuse})
-        worker.running = None
-        worker.pipe.send(worker.task)
+        task = worker.task
+        if worker.running is not None:
+            why = f'node "{worker.running[1]}": its worker process ended {how} while it ran (killed, or out of memory)'
+            task = dataclasses.replace(task, refuse={**task.refuse, worker.running: why})
+        fresh = self._start()
+        worker.pipe.close()
+        worker.process, worker.pipe = fresh.process, fresh.pipe
+        self._give(worker, task)
 
 
 def work(pipe: Connection, orders: Orders) -> None:
@@ -162,22 +166,27 @@ def work(pipe: Connection, orders: Orders) -> None:
     import signal
 
     signal.signal(signal.SIGINT, signal.SIG_IGN)  # the main process ends its workers
-    tools = _Tools.of(orders)
-    while True:
-        try:
-            task: Task = pipe.recv()
-        except EOFError:
-            return
-        try:
-            for event in tools.carry(task):
-                pipe.send(event)
-        except BrokenPipeError:
-            return
+    signal.signal(signal.SIGTERM, signal.default_int_handler)  # and lets them tidy up what they were just writing
+    with contextlib.suppress(EOFError, ConnectionError, KeyboardInterrupt):
+        while True:
+            unsent: list[Event | Finished] = []
+            for event in _carry(orders, pipe.recv()):
+                unsent.append(event)
+                if isinstance(event, (Started, Finished)):  # what else there is to say can wait for one of these
+                    pipe.send(unsent)
+                    unsent = []
 
 
 def carry_task(orders: Orders, task: Task) -> list[Event | Finished]:
     """Carry out one task wherever this runs; gives its events."""
-    return list(_Tools.of(orders).carry(task))
+    return list(_carry(orders, task))
+
+
+def _carry(orders: Orders, task: Task) -> Iterator[Event | Finished]:
+    try:
+        yield from _Tools.of(orders).carry(task)
+    except TangentryError as error:
+        yield Finished(task.member.name, trouble=str(error))
 
 
 @dataclasses.dataclass(frozen=True)
@@ -208,11 +217,8 @@ class _Tools:
         bench = Bench(
             self.graph.folder, self.store, relative_digest(self.graph.folder, self.ledger.digest_of), by_id.__getitem__
         )
-        try:
-            yield from bench.carry(steps, task.last, task.refuse)
-            yield Finished(task.member.name, self.ledger.learnt())
-        except TangentryError as error:
-            yield Finished(task.member.name, trouble=str(error))
+        yield from bench.carry(steps, task.last, task.refuse)
+        yield Finished(task.member.name, self.ledger.learnt())
 
 
 _LAST: list[tuple[Orders, _Tools]] = []

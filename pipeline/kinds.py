@@ -227,7 +227,7 @@ def _load_project_module(folder: Path, path: Path) -> types.ModuleType:
 def _read_kind(name: str, home: _Home, path: Path) -> Kind:
     try:
         function = getattr(home.load(path), name)
-    except Exception as error:  # whatever a stranger's module does on import, the graph can't use it
+    except (Exception, SystemExit) as error:  # whatever a stranger's module does on import, the graph can't use it
         raise GraphError(f"{path}: can't be imported: {type(error).__name__}: {error}") from error
     files = tuple(sorted(reached(home.folder, path, home.package)))
     return kind_of(function, source_digest(home.folder, path, home.package), path, files)

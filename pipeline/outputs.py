@@ -16,7 +16,8 @@ from tangentry.pipeline.errors import TangentryError
 from tangentry.pipeline.flow import Array
 from tangentry.pipeline.ledger import Ledger, Output, stat_of
 from tangentry.pipeline.plan import Step, StepId
-from tangentry.pipeline.store import Result, write_whole
+from tangentry.pipeline.store import Result
+from tangentry.pipeline.writing import WriteError, write_whole
 
 
 class OutputError(TangentryError):
@@ -76,8 +77,10 @@ class Outputs:
                 )
             try:
                 write_whole(target, lambda file: file.write(content_of(digest).data))
-            except OSError as error:
-                raise OutputError(f"{path}: can't be written: {error.strerror or error}") from error
+            except WriteError as error:
+                if error.hopeless:
+                    raise
+                raise OutputError(f"{path}: can't be written: {error.reason}") from error
             self.written.append(Path(path).as_posix())
             stat = stat_of(target)
             if stat is not None:

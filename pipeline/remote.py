@@ -12,7 +12,8 @@ from pathlib import Path
 from typing import Any
 
 from tangentry.pipeline.errors import TangentryError
-from tangentry.pipeline.store import Store, StoreError, write_whole
+from tangentry.pipeline.store import Store, StoreError
+from tangentry.pipeline.writing import write_whole
 
 
 class RemoteStore(Store):

@@ -66,7 +66,7 @@ def seal(folder: Path, asked: list[str], paths: Iterable[Path | str], word: Word
         return False
     text = os.fsencode("\n".join(names))
     head = {"version": VERSION, "asked": asked, "text": word.text, "code": word.code, "names": len(text)}
-    from tangentry.pipeline.store import write_whole
+    from tangentry.pipeline.writing import write_whole
 
     write_whole(
         _place(folder, asked), lambda file: file.write(json.dumps(head).encode() + b"\n" + text + stats.tobytes())

@@ -7,7 +7,7 @@ from importlib.resources.abc import Traversable
 from pathlib import Path
 
 from tangentry.pipeline.errors import GraphError
-from tangentry.pipeline.store import write_whole
+from tangentry.pipeline.writing import write_whole
 
 STARTER = "tangentry.graphs.start"
 

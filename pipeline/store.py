@@ -4,6 +4,7 @@
     values/a0/a07e....json    a value's manifest, named by its content
     results/3c/3c99....json   what a node made, named by its key: one result per set of side files it read
     aside/                    objects that turned out damaged
+    turns, running/           locks of builds under way (see sharing.py)
     ledger.sqlite             what this machine remembers (see ledger.py)
 
 Everything is written under a unique temporary name and then renamed: two builds may share a store at any time.
@@ -18,13 +19,15 @@ import json
 import os
 import secrets
 import time
-from collections.abc import Callable, Iterator
+from collections import deque
+from collections.abc import Callable, Iterable, Iterator
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 from tangentry.pipeline.errors import TangentryError
 from tangentry.pipeline.flow import Array
+from tangentry.pipeline.sharing import Running, Turns
 from tangentry.pipeline.values import (
     ArrayDigests,
     arrays_of,
@@ -33,6 +36,7 @@ from tangentry.pipeline.values import (
     from_manifest,
     to_manifest,
 )
+from tangentry.pipeline.writing import WriteError, sweep, write_whole
 
 USED_WITHIN = 3600.0  # seconds: trim leaves alone what a build may be using
 
@@ -68,6 +72,8 @@ class Store:
         self.folder = Path(folder)
         self.digest = ArrayDigests()
         self.written = 0  # arrays really written
+        self.turns = Turns(self.folder)
+        self.running = Running(self.folder)
         self._checked: set[str] = set()
 
     # Values
@@ -161,45 +167,52 @@ class Store:
     def trim(self, keep_days: float | None = None, max_size: int | None = None) -> tuple[int, int]:
         """Remove results not used for `keep_days`, and the oldest until `max_size` bytes are left; then what no result needs.
 
-        Gives how many objects went, and their bytes. What was used within the last hour stays.
+        Gives how many objects went, and their bytes. What was used within the last hour, or since the oldest build that is
+        still under way began, stays.
         """
         now = time.time()
-        results = sorted((path.stat().st_mtime, path) for path in self._objects("results"))
+        spared_from = min(now - USED_WITHIN, self.running.since())
+        sweep(self.folder)
         total = sum(size for _, size in self.size().values())
-        if keep_days is not None:
-            old = [path for used, path in results if now - used > max(keep_days * 86400.0, USED_WITHIN)]
-        else:
-            old = []
-        gone = _remove(old)
-        count, freed = len(old), gone
-        remaining = [path for used, path in results if path not in set(old) and now - used > USED_WITHIN]
-        count, freed = self._drop_unneeded(count, freed, now)
-        while max_size is not None and total - freed > max_size and remaining:
-            batch, remaining = remaining[: max(1, len(remaining) // 8)], remaining[max(1, len(remaining) // 8) :]
-            freed += _remove(batch)
-            count, freed = self._drop_unneeded(count + len(batch), freed, now)
-        return count, freed
+        results = [path for used, path in sorted((_used(path), path) for path in self._objects("results"))]
+        old_from = spared_from if keep_days is None else min(spared_from, now - keep_days * 86400.0)
+        old = [path for path in results if _used(path) < old_from] if keep_days is not None else []
+        left = deque(path for path in results[len(old) :] if _used(path) < spared_from)
+        count, freed = _remove(old, old_from)
+        while True:
+            more, less = self._drop_unneeded(spared_from)
+            count, freed = count + more, freed + less
+            if max_size is None or total - freed <= max_size or not left:
+                return count, freed
+            more, less = _remove([left.popleft() for _ in range(max(1, len(left) // 8))], spared_from)
+            count, freed = count + more, freed + less
 
-    def _drop_unneeded(self, count: int, freed: int, now: float) -> tuple[int, int]:
-        needed_values: set[str] = set()
-        for path in self._objects("results"):
-            for result in self.results(path.stem):
-                needed_values.update(digest for digest in result.outputs.values() if digest)
-        needed_arrays: set[str] = set()
+    def _drop_unneeded(self, spared_from: float) -> tuple[int, int]:
+        """Remove values that no result names, and arrays that none of the others names."""
+        results = [result for path in self._objects("results") for result in self.results(path.stem)]
+        values = {digest for result in results for digest in result.outputs.values() if digest}
+        arrays: set[str] = set()
         for path in self._objects("values"):
-            if path.stem in needed_values:
+            if path.stem in values or _used(path) >= spared_from:
                 with contextlib.suppress(OSError, ValueError):
-                    needed_arrays.update(arrays_of(path.read_text("utf-8")))
-        for room, needed in (("values", needed_values), ("arrays", needed_arrays)):
-            spare = [p for p in self._objects(room) if p.stem not in needed and now - p.stat().st_mtime > USED_WITHIN]
-            freed += _remove(spare)
-            count += len(spare)
-        return count, freed
+                    arrays.update(arrays_of(path.read_text("utf-8")))
+        spare = [path for path in self._objects("values") if path.stem not in values]
+        spare += [path for path in self._objects("arrays") if path.stem not in arrays]
+        return _remove(spare, spared_from)
 
     def touch(self, key: str) -> None:
         """Note that a result was used now, so that trimming keeps it."""
-        with contextlib.suppress(OSError):
-            os.utime(self._place("results", key))
+        self._touch(self._place("results", key))
+
+    def _touch(self, path: Path) -> bool:
+        """Note that an object was used now; False where it is not there."""
+        try:
+            os.utime(path)
+        except FileNotFoundError:
+            return False
+        except OSError:  # a store that can be read only
+            return path.exists()
+        return True
 
     # Places
 
@@ -218,14 +231,15 @@ class Store:
             os.replace(path, aside / f"{path.name}.{secrets.token_hex(4)}")
 
     def _write(self, path: Path, fill: Callable[[Any], object], replace: bool = False) -> bool:
-        """Write a file whole or not at all; True if it had to be written."""
-        if not replace and path.exists():
+        """Write a file whole or not at all; True if it had to be written. One that is there counts as used now."""
+        if not replace and self._touch(path):
             return False
         try:
             write_whole(path, fill)
-        except OSError as error:
+        except WriteError as error:
             raise StoreError(
-                f"{self.folder}: the store can't be written ({error.strerror or error}); free some space or correct its permissions, or name another with --store"
+                f"{self.folder}: the store can't be written ({error.reason}); free some space or correct its "
+                "permissions, or name another with --store"
             ) from error
         self._send(path)
         return True
@@ -235,19 +249,6 @@ class Store:
 
     def _send(self, path: Path) -> None:
         """After an object was written: a store that others share hands it on."""
-
-
-def write_whole(path: Path, fill: Callable[[Any], object]) -> None:
-    """Write a file under a unique temporary name and rename it, so that nobody ever sees half of it."""
-    path.parent.mkdir(parents=True, exist_ok=True)
-    unfinished = path.with_name(f".{path.name[:80]}.{os.getpid()}.{secrets.token_hex(4)}.unfinished")
-    try:
-        with open(unfinished, "wb") as file:
-            fill(file)
-        os.replace(unfinished, path)
-    except BaseException:
-        unfinished.unlink(missing_ok=True)
-        raise
 
 
 def _map(path: Path) -> Array:
@@ -275,11 +276,21 @@ def _holds(sound: Callable[[Path], bool], path: Path) -> bool:
         return False
 
 
-def _remove(paths: list[Path]) -> int:
-    freed = 0
+def _used(path: Path) -> float:
+    """When an object was last used; 0 where it is gone."""
+    try:
+        return path.stat().st_mtime
+    except OSError:
+        return 0.0
+
+
+def _remove(paths: Iterable[Path], used_from: float) -> tuple[int, int]:
+    """Remove objects, less those that came into use meanwhile; gives how many went, and their bytes."""
+    count = freed = 0
     for path in paths:
         with contextlib.suppress(OSError):
-            size = path.stat().st_size
-            path.unlink()
-            freed += size
-    return freed
+            stat = path.stat()
+            if stat.st_mtime < used_from:
+                path.unlink()
+                count, freed = count + 1, freed + stat.st_size
+    return count, freed

@@ -4,11 +4,13 @@ from __future__ import annotations
 
 import os
 import time
+from pathlib import Path
 
 import numpy as np
 import pytest
 from tangentry.pipeline.flow import Array, flow_value
 from tangentry.pipeline.store import Damaged, Result, Store, StoreError
+from tangentry.pipeline.writing import WriteError
 
 
 @flow_value
@@ -142,8 +144,8 @@ def test_a_build_makes_again_what_the_store_lost(project):
 
 
 def test_a_store_that_cannot_be_written_ends_in_one_message(project, monkeypatch):
-    def full(*_: object) -> None:
-        raise OSError(28, "No space left on device")
+    def full(path: Path, *_: object) -> None:
+        raise WriteError(path, OSError(28, "No space left on device"))
 
     monkeypatch.setattr("tangentry.pipeline.store.write_whole", full)
 
