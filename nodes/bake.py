@@ -37,9 +37,9 @@ def bake(
     size         of each sheet: texels along both sides, or width and height
     distance     how far from the target's surface rays start and end, in its unit; by default 2 % of the target's size
     distance_by  vertex colour: the distance is scaled at each vertex by the red of its first colour set
-    gives        normal: the detail's normals in the target's frames; object normal: in the mesh's own space; height: along
-                 the ray, in the asset's unit; occlusion: share of the sky that is seen; hits: a picture of what became of
-                 each texel: green hit, red missed, blue hit from behind, black outside all charts
+    gives        normal: the detail's normals in the target's frames; object normal: in the mesh's own space; height:
+                 along the ray, in the asset's unit; occlusion: share of the sky that is seen; hits: a picture of what
+                 became of each texel: green hit, red missed, blue hit from behind, black outside all charts
     hit          outermost: the first surface met from outside; nearest: the one nearest to the target, either way
     aim          smoothed: rays follow normals averaged over hard edges, so nothing is left out; straight: on flat faces
                  they turn to the face's normal away from the edges; own: they follow the target's own normals

@@ -31,8 +31,8 @@ def compare(
     limit          degrees by which a texel may differ; beyond it is a fault
     size           texels along both sides, where there is no map: each is then taken to lean 45 degrees
 
-    What is left out is the same on both sides: two assets under one map, one asset under two maps or two decoders. Raises
-    InputError where nothing differs, or maps are of different sizes or materials. `difference` draws it.
+    What is left out is the same on both sides: two assets under one map, one asset under two maps or two decoders.
+    Raises InputError where nothing differs, or maps are of different sizes or materials. `difference` draws it.
     """
     from tangentry.nodes.maps.shading import compared
 

@@ -23,15 +23,15 @@ def preview(
     rise: float = 20.0,
     decoder: Literal["pixel", "pixel-unit", "pixel-square", "vertex", "vertex-unit", "vertex-square"] = "pixel",
 ) -> Map:
-    """A picture of the asset under one light: its normal map on at the left, off at the right; without a map just the mesh.
+    """A picture of the asset under one light: its normal map on at the left, off at the right; or just the mesh.
 
     size     pixels along each side of one view
     turn     degrees that the camera goes round to the right of the mesh's front, which looks along +z
     rise     degrees that it is above the horizon
     decoder  how the frame is built, as in `reencode`
 
-    y is up; there is no perspective. Parts without UVs or frames are drawn without the map. Raises InputError where it is
-    not known which way a map's green points, or the size is none.
+    y is up; there is no perspective. Parts without UVs or frames are drawn without the map. Raises InputError where it
+    is not known which way a map's green points, or the size is none.
     """
     from tangentry.nodes.maps.picture import camera, draw
 

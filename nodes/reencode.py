@@ -21,11 +21,12 @@ def reencode(
     ] = "pixel",
     gutter: int = 16,
 ) -> Map:
-    """The normal maps as the wanted frames need them, so that every texel shades as it did in the frames it was made in.
+    """The normal maps as the wanted frames need them: every texel shades as it did in the frames it was made in.
 
-    made_for    how the decoder that the map was made for builds its frame: pixel: normal and tangent interpolated as they
-                are, bitangent = cross(normal, tangent) * side at each pixel; vertex: the bitangent comes from the vertices;
-                -unit: each normalised first; -square: made perpendicular too; object: texels are the mesh's own normals
+    made_for    how the decoder that the map was made for builds its frame: pixel: normal and tangent interpolated as
+                they are, bitangent = cross(normal, tangent) * side at each pixel; vertex: the bitangent comes from the
+                vertices; -unit: each normalised first; -square: made perpendicular too; object: texels are the mesh's
+                own normals
     wanted_for  the same of the decoder that the map is wanted for
     gutter      how many texels around the charts are moved along, with the frames of the nearest texel inside
 

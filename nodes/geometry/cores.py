@@ -1,8 +1,8 @@
 """Work shared out over the cores of this machine.
 
 The work is a function of a number; what it finds it writes into shared arrays. On Linux each core gets a process forked
-from this one, which sees all its memory as it is, ray structures included, so nothing is sent or built twice. Elsewhere,
-and inside a process that is itself one of several workers, the same calls run one after another.
+from this one, which sees all its memory as it is, ray structures included, so nothing is sent or built twice.
+Elsewhere, and inside a process that is itself one of several workers, the same calls run one after another.
 """
 
 from __future__ import annotations

@@ -53,7 +53,7 @@ def texel_owners(
 
 
 def image_places(uvs: Array, v_down: bool) -> Array:
-    """(..., 2) float64: UVs as places in the image, from its top left corner. v_down: v is counted from the top already."""
+    """(..., 2) float64: UVs as places in the image, from its top left corner; v_down: v grows down already."""
     places: Array = np.array(uvs, np.float64)
     if not v_down:
         places[..., 1] = 1 - places[..., 1]
@@ -105,7 +105,7 @@ def _fill(
         if not (abs(left) < FARTHEST * width and abs(top) < FARTHEST * height):
             continue
         area = (x1 - x0) * (y2 - y0) - (x2 - x0) * (y1 - y0)
-        if not (area != 0):
+        if area == 0:
             continue
         if area < 0:  # seen from behind: corners 1 and 2 change places
             x1, y1, x2, y2 = x2, y2, x1, y1

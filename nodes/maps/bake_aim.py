@@ -3,8 +3,8 @@
 Every corner of the target is moved out along an aim, a unit vector, by its reach: the moved triangles are the offset
 surface. A texel's ray starts on the offset surface and goes through the texel's own place on the target.
 
-    smoothed   the aim of a point is the mean of its faces' normals by angle (Thuermer & Wuethrich 1998), whatever edges are
-               hard, so the offset surface has no gaps
+    smoothed   the aim of a point is the mean of its faces' normals by angle (Thuermer & Wuethrich 1998), whatever edges
+               are hard, so the offset surface has no gaps
     straight   as smoothed, but on flat faces the ray turns to the face's normal away from bent edges, so that what is
                projected is not skewed there
     own        the target's own normals: gaps open at hard edges

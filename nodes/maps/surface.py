@@ -1,4 +1,4 @@
-"""The surface that a sheet of texels lies on: what an asset has at the corners of the triangles that the sheet covers."""
+"""The surface that a sheet of texels lies on: what an asset has at the corners of the triangles under it."""
 
 from __future__ import annotations
 
@@ -22,7 +22,7 @@ class Surface(NamedTuple):
 
 
 def parts_by_material(asset: Asset) -> dict[str, list[int]]:
-    """Rows of Asset.parts by the name of their material ("" where they have none), in the asset's order of materials."""
+    """Rows of Asset.parts by the name of their material ("" where they have none), in the order of materials."""
     rows: dict[str, list[int]] = {material.name: [] for material in asset.materials}
     for row, part in enumerate(asset.parts):
         rows.setdefault(_material(asset, part), []).append(row)
@@ -30,7 +30,7 @@ def parts_by_material(asset: Asset) -> dict[str, list[int]]:
 
 
 def parts_under(asset: Asset, material: str) -> list[int]:
-    """Rows of the parts that a sheet of that material lies on; for "", which serves all, of every part that can have it.
+    """Rows of the parts that a sheet of that material lies on; for "", which serves all, every part that can have it.
 
     Raises InputError where there are none.
     """

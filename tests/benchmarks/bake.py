@@ -1,7 +1,7 @@
 """A bake's throughput beside Embree's bindings alone on the same rays: 2048 x 2048 texels, 500,000 detailed triangles.
 
-Run by hand: python tests/benchmarks/bake.py. Building the ray structure is left out on both sides. The bindings run once
-in one process, and once shared out over the cores as the bake is.
+Run by hand: python tests/benchmarks/bake.py. Building the ray structure is left out on both sides. The bindings run
+once in one process, and once shared out over the cores as the bake is.
 """
 
 from __future__ import annotations
@@ -54,7 +54,8 @@ def main() -> None:
     whole = best(lambda: bake_sheet(surface, aim, sees, [detail], SIZE, SIZE, recipe), 3)
     print(f"{rays:,} rays, {len(detail.normals):,} triangles, {core_count()} cores; millions of rays a second:")
     print(
-        f"bindings, one process {rays / one / 1e6:.2f}; shared out {rays / shared / 1e6:.2f}; bake {rays / whole / 1e6:.2f}"
+        f"bindings, one process {rays / one / 1e6:.2f}; shared out {rays / shared / 1e6:.2f};"
+        f" bake {rays / whole / 1e6:.2f}"
     )
     print(f"bake / bindings in one process {one / whole:.2f}; bake / bindings shared out {shared / whole:.2f}")
 

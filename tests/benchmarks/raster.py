@@ -1,6 +1,6 @@
 """Owners of texels beside a plain loop in C: 2048 x 2048 texels, 1,000,000 triangles.
 
-Run by hand: python tests/benchmarks/raster.py. Needs a C compiler; prints the ratio of the best of several runs of each.
+Run by hand: python tests/benchmarks/raster.py. Needs a C compiler; prints the ratio of the best of several runs.
 """
 
 from __future__ import annotations
@@ -22,7 +22,8 @@ SOURCE = r"""
 void owners(const double *places, long count, int width, int height, int32_t *triangle, float *weights) {
   for (long t = 0; t < count; t++) {
     const double *p = places + 6 * t;
-    double x0 = p[0] * width, y0 = p[1] * height, x1 = p[2] * width, y1 = p[3] * height, x2 = p[4] * width, y2 = p[5] * height;
+    double x0 = p[0] * width, y0 = p[1] * height, x1 = p[2] * width, y1 = p[3] * height;
+    double x2 = p[4] * width, y2 = p[5] * height;
     double area = (x1 - x0) * (y2 - y0) - (x2 - x0) * (y1 - y0);
     if (area == 0) continue;
     double over = 1 / area;
@@ -95,7 +96,8 @@ def main() -> None:
     in_c = best(lambda: loop.owners(pointers[0], ctypes.c_long(len(places)), SIZE, SIZE, *pointers[1:]))
     here = best(lambda: texel_owners(places, SIZE, SIZE))
     print(
-        f"{len(places):,} triangles, {SIZE} x {SIZE}: C {in_c * 1e3:.1f} ms, here {here * 1e3:.1f} ms, ratio {here / in_c:.2f}"
+        f"{len(places):,} triangles, {SIZE} x {SIZE}: C {in_c * 1e3:.1f} ms, here {here * 1e3:.1f} ms,"
+        f" ratio {here / in_c:.2f}"
     )
 
 

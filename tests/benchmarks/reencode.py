@@ -1,6 +1,6 @@
 """Re-encoding beside a plain loop in C, frames computed at every texel: 4096 x 4096 texels of 16 bits.
 
-Run by hand: python tests/benchmarks/reencode.py. Both do the same for each texel: decode, interpolate two frames, through
+Run by hand: python tests/benchmarks/reencode.py. Both do the same for each texel: decode, take two frames, through
 one and back through the inverse of the other, encode. Owners of texels are known to the C loop beforehand; the node's
 whole time, rasterising and the gutter included, is given beside that of its texel loop.
 """
@@ -38,14 +38,16 @@ static void frame(const float *k, float w1, float w2, float *m) {
   }
   float s = w0 * k[9] + w1 * k[19] + w2 * k[29];
   m[0] = t[0]; m[1] = t[1]; m[2] = t[2];
-  m[3] = (n[1] * t[2] - n[2] * t[1]) * s; m[4] = (n[2] * t[0] - n[0] * t[2]) * s; m[5] = (n[0] * t[1] - n[1] * t[0]) * s;
+  m[3] = (n[1] * t[2] - n[2] * t[1]) * s; m[4] = (n[2] * t[0] - n[0] * t[2]) * s;
+  m[5] = (n[0] * t[1] - n[1] * t[0]) * s;
   m[6] = n[0]; m[7] = n[1]; m[8] = n[2];
 }
 static uint16_t code(float v) {
   float c = rintf((v + 1) * 32767.5f);
   return c < 0 ? 0 : c > 65535 ? 65535 : (uint16_t)c;
 }
-void move(const uint16_t *in, const int32_t *triangle, const float *w, const float *a, const float *b, long count, uint16_t *out) {
+void move(const uint16_t *in, const int32_t *triangle, const float *w, const float *a, const float *b, long count,
+          uint16_t *out) {
   for (long i = 0; i < count; i++) {
     long t = triangle[i];
     if (t < 0) { out[3 * i] = in[3 * i]; out[3 * i + 1] = in[3 * i + 1]; out[3 * i + 2] = in[3 * i + 2]; continue; }

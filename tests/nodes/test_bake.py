@@ -145,9 +145,9 @@ def test_finer_samples_average_what_a_finer_map_holds(samples):
 
 
 def test_openness_beside_a_wall_is_what_the_form_factor_says():
-    """Beside an endless wall of height H, at distance d, the floor sees (1 + d / sqrt(d^2 + H^2)) / 2 of the sky by cosine.
+    """Beside an endless wall of height H, at distance d, the floor sees (1 + d / sqrt(d^2 + H^2)) / 2 of the sky.
 
-    The factor of a small patch to a strip that runs on for ever, half the difference of the sines of the angles from its
+    The factor of a small patch to an endless strip, half the difference of the sines of the angles from its
     normal: Siegel & Howell, Thermal Radiation Heat Transfer (from memory).
     """
     wall = grid_part(1, 1)

@@ -51,7 +51,7 @@ def test_the_triangles_that_end_in_a_pole_are_counted(saved):
 
 @pytest.mark.parametrize(("green", "verdict"), [(1, "up"), (-1, "down")])
 def test_an_images_green_is_measured(tmp_path, green, verdict):
-    """Slopes of a height field in closed form: the integrability of METHODS' test."""
+    """Slopes of a height field in closed form: d(slope x)/dy equals d(slope y)/dx (Frankot & Chellappa 1988)."""
     x, y = np.meshgrid(np.arange(128), np.arange(128)[::-1])
     p, q = np.cos(x / 7) * np.sin(y / 5), np.sin(x / 7) * np.cos(y / 5) * 7 / 5
     normal = np.stack([-p, -q * green, np.ones_like(p)], axis=2)

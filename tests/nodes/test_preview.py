@@ -28,7 +28,7 @@ def views(picture):
 
 
 def code(normal):
-    """The grey of a surface with that normal seen from +z: Lambert and a highlight about the halfway vector, as sRGB."""
+    """The grey of a surface with that normal seen from +z: Lambert and a highlight about the half vector, as sRGB."""
     light = LIGHT / np.linalg.norm(LIGHT)
     half = (light + (0, 0, 1)) / np.linalg.norm(light + (0, 0, 1))
     linear = AMBIENT + DIFFUSE * max(0, normal @ light) + GLOSS * max(0, normal @ half) ** SHARPNESS
@@ -58,7 +58,7 @@ def ribbed(part):
 
 @pytest.mark.parametrize("turn", [45, 225])
 def test_mirrored_charts_are_lit_as_the_others(turn):
-    """Both halves of a sphere share one chart, mirrored: one map of ribs, baked through the first, must show on both."""
+    """Both halves of a sphere share one chart, mirrored: a map of ribs baked through the first must show on both."""
     target = frames(split(asset(half_mirrored(sphere_part(24, 12), 24, 12))))
     detail = ribbed(sphere_part(192, 192))
     map = bake(target, detail, size=256, distance=0.1, samples=4)

@@ -176,7 +176,7 @@ def cut_out(mesh, chosen, by):
 
 
 def test_the_map_of_the_normal_tangent_test_is_baked_again_from_its_own_geometry(samples):
-    """Khronos's NormalTangentTest (Analytical Graphics, 2017): each left cell is true geometry, the cell 0.32 to its right
+    """NormalTangentTest (Analytical Graphics, 2017): each left cell is true geometry, the cell 0.32 to its right
     a square whose part of the map was baked from it. Its texels are 8-bit, flat ones 0.25 degrees off."""
     mesh = load(file=str(samples / "gltf_tangent/NormalTangentTest/NormalTangentTest.glb"))
     part = mesh.parts[0]

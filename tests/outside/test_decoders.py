@@ -37,9 +37,9 @@ def apart(one, other):
     ],
 )
 def test_squaring_a_skewed_frame_errs_as_the_table_says(s, unit, raw, cotangent):
-    """A right triangle with UVs (0,0), (1,0), (s,1): T = (1,0,0), B = (-s,1,0). Table of METHODS.md, worked out from Lengyel
-    (2001) and Schueler (2006): the squared frame against unit T and B, against T and B as they are, and against the
-    inverse transpose (1, s, 0), (0, 1, 0) that an exact height field has."""
+    """A right triangle with UVs (0,0), (1,0), (s,1): T = (1,0,0), B = (-s,1,0). Figures worked out by an independent
+    program in float64 from Lengyel (2001) and Schueler (2006): the squared frame against unit T and B, against T and B
+    as they are, and against the inverse transpose (1, s, 0), (0, 1, 0) that an exact height field has."""
     tangent, bitangent = np.array([1, 0, 0]), np.array([-s, 1, 0])
     squared = shade(corners(tangent, bitangent), 0, 0.2, 0.3, WAYS["vertex-square"], *LEANING)
     assert_allclose(squared, shade(corners(tangent, bitangent), 0, 0.2, 0.3, WAYS["pixel"], *LEANING), atol=1e-7)
@@ -86,8 +86,8 @@ def mean_difference(mesh, texel, size=128):
 
 
 def test_normalising_first_matters_with_the_square_of_the_edges_length():
-    """An interpolated unit vector is short by the square of the angle between its ends, so edges a quarter as long leave a
-    sixteenth (own derivation). METHODS.md gives 0.143 degrees at 10 k triangles of a torus whose waves it does not state."""
+    """An interpolated unit vector is short by the square of the angle between its ends, so edges a quarter as long leave
+    a sixteenth (own derivation)."""
     coarse, fine = (mean_difference(displaced_torus(nu, nv), LEANING) for nu, nv in ((100, 50), (400, 200)))
 
     assert_allclose(coarse / fine, 16, rtol=0.03)

@@ -17,7 +17,7 @@ def scattered(count: int = 300):
 
 
 def first_by_definition(corners, origin, direction):
-    """The nearest triangle and its distance, by solving o + t d = p0 + u e1 + v e2 for each (Moeller & Trumbore 1997, equation 4)."""
+    """The nearest triangle and distance: o + t d = p0 + u e1 + v e2 solved (Moeller & Trumbore 1997, equation 4)."""
     p, e1, e2 = (corners[:, 0].astype(float), corners[:, 1] - corners[:, 0], corners[:, 2] - corners[:, 0])
     matrix = np.stack([np.broadcast_to(-direction, e1.shape), e1, e2], axis=2).astype(float)
     t, u, v = np.linalg.solve(matrix, (origin - p)[..., None])[..., 0].T

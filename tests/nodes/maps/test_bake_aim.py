@@ -25,7 +25,7 @@ def test_smoothed_aims_move_a_point_one_way_whatever_its_faces(way, points):
 
 
 def test_a_cubes_aims_run_along_its_diagonals():
-    """By angle each corner's three faces count alike, however they are cut into triangles (Thuermer & Wuethrich 1998)."""
+    """By angle each corner's three faces count alike, however they are cut (Thuermer & Wuethrich 1998)."""
     positions, aim = box_aim("smoothed")
 
     assert_allclose(aim.outward, (positions * 2 - 1) / np.sqrt(3), atol=1e-6)
