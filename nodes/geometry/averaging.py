@@ -16,6 +16,8 @@ from tangentry.nodes.geometry.directions import Directions
 from tangentry.nodes.geometry.vectors import dot, unit
 from tangentry.pipeline.flow import Array
 
+CANCELLED = 1e-5  # share of its terms' lengths below which a sum is rounding
+
 
 class Averaged(NamedTuple):
     """Frames by vertex."""
@@ -26,7 +28,7 @@ class Averaged(NamedTuple):
 
 
 def average(triangles: Array, vertex: Array, normal: Array, found: Directions, weights: str) -> Averaged:
-    """Sums of the unit tangents and bitangents around each vertex.
+    """Sums of the unit tangents and bitangents around each vertex; sums that cancel out define nothing.
 
     triangles  (n, 3) int32 corner numbers
     vertex     (corners,) int32: what is summed together
@@ -39,8 +41,10 @@ def average(triangles: Array, vertex: Array, normal: Array, found: Directions, w
         "angle": found.angle,
     }[weights]
     count = len(normal)
-    tangent, bitangent = np.zeros((count, 3)), np.zeros((count, 3))
-    _add_up(triangles, vertex, found.tangent, found.bitangent, np.ascontiguousarray(weight), tangent, bitangent)
+    tangent, bitangent, total = np.zeros((count, 3)), np.zeros((count, 3)), np.zeros(count)
+    _add_up(triangles, vertex, found.tangent, found.bitangent, np.ascontiguousarray(weight), tangent, bitangent, total)
+    for sums in (tangent, bitangent):
+        sums[dot(sums, sums) <= (CANCELLED * total) ** 2] = 0
     tangent, bitangent = unit(tangent), unit(bitangent)
     side = np.sign(dot(np.cross(normal, tangent), bitangent)).astype(np.int8)
     return Averaged(tangent.astype(np.float32), bitangent.astype(np.float32), side)
@@ -48,11 +52,19 @@ def average(triangles: Array, vertex: Array, normal: Array, found: Directions, w
 
 @njit(cache=True, nogil=True)
 def _add_up(
-    triangles: Array, vertex: Array, tangent: Array, bitangent: Array, weight: Array, t_sum: Array, b_sum: Array
+    triangles: Array,
+    vertex: Array,
+    tangent: Array,
+    bitangent: Array,
+    weight: Array,
+    t_sum: Array,
+    b_sum: Array,
+    total: Array,
 ) -> None:
     for t in range(len(triangles)):
         for k in range(3):
             v, w = vertex[triangles[t, k]], np.float64(weight[t, k])
+            total[v] += w
             for axis in range(3):
                 t_sum[v, axis] += w * tangent[t, axis]
                 b_sum[v, axis] += w * bitangent[t, axis]

@@ -15,8 +15,8 @@ def distinct_rows(*columns: Array) -> tuple[Array, Array]:
 
     columns   (rows,) int32 each
 
-    Rows i and j are equal in every column just where label[i] == label[j]; labels count up in order of first appearance;
-    first[label[i]] is the first row equal to row i, so columns[k] == columns[k][first][label].
+    Rows i and j are equal in every column just where label[i] == label[j]. Labels count up in order of first
+    appearance; first[label[i]] is the first row equal to row i, so columns[k] == columns[k][first][label].
 
     >>> distinct_rows(np.array([7, 5, 7], np.int32), np.array([0, 0, 0], np.int32))
     (array([0, 1, 0], dtype=int32), array([0, 1], dtype=int32))

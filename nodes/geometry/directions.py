@@ -28,7 +28,7 @@ class Directions(NamedTuple):
 
 
 def triangle_directions(part: Part, triangles: Array, uv: Stream, v_down: bool) -> Directions:
-    """The directions of triangles given as (n, 3) corner numbers, v counted upward whatever `v_down` says of the file."""
+    """The directions of triangles given as (n, 3) corner numbers, v counted upward whatever the file does."""
     count = len(triangles)
     out = Directions(
         np.zeros((count, 3), np.float32),

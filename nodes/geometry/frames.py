@@ -11,6 +11,7 @@ from tangentry.nodes.geometry.vectors import axis_across, dot, reject, unit
 from tangentry.nodes.model import Frames, Part, Stream
 from tangentry.pipeline.flow import Array
 
+UP = np.array([0.0, 0.0, 1.0])
 FLATTEST = 1e-6  # a tangent of which less than this is left across its normal points along it, and is no tangent
 
 
@@ -35,14 +36,15 @@ def solve_frames(part: Part, uv: Stream, uv_set: int, v_down: bool, method: str)
         index, tangent, bitangent, side = solved.index, solved.tangent, None, solved.side
     else:
         index, first = distinct_rows(_summed_together(part, uv, method))
-        averaged = _averaged(part, triangles, face, index, normal[first], found, method)
+        weights = "area" if method == "face" else method
+        averaged = averaging.average(triangles, index, _row_normals(normal, index, len(first)), found, weights)
         tangent, bitangent, side = averaged.tangent, averaged.bitangent, averaged.side
     frames = Frames(tangent, bitangent, side, np.zeros(len(tangent), bool), index, uv_set, method)
-    return _defined(part, frames, normal, face, found)
+    return _defined(part, frames, _row_normals(normal, index, len(tangent)), face, found)
 
 
 def identity(part: Part, *streams: Stream | None) -> Array:
-    """(corners,) int32: equal where a corner's position and the values of every stream are, whatever the indices say."""
+    """(corners,) int32: equal where positions and the values of every stream are, whatever the indices say."""
     labels = [
         distinct_values(stream.values)[0][stream.index] for stream in (part.points, *streams) if stream is not None
     ]
@@ -60,58 +62,56 @@ def _summed_together(part: Part, uv: Stream, method: str) -> Array:
     return part.vertices if part.vertices is not None else identity(part, part.normals, uv)
 
 
-def _averaged(
-    part: Part, triangles: Array, face: Array, index: Array, normal: Array, found: Directions, method: str
-) -> averaging.Averaged:
-    return averaging.average(triangles, index, normal, found, "area" if method == "face" else method)
-
-
-def _face_tangents(part: Part, face: Array, found: Directions) -> Array:
-    """(faces, 4) float64: the sum of each face's unit tangents by area, and of its sides."""
-    total = np.zeros((part.face_count, 4))
-    np.add.at(total[:, :3], face, found.tangent * found.area[:, None])
-    np.add.at(total[:, 3], face, found.side)
-    return total
+def _row_normals(normal: Array, index: Array, count: int) -> Array:
+    """(rows, 3) float32: the mean normal, unit, of the corners that have each row."""
+    total = np.stack([np.bincount(index, normal[:, axis], count) for axis in range(3)], axis=1)
+    total[~total.any(axis=1)] = UP
+    return unit(total).astype(np.float32)
 
 
 def _defined(part: Part, frames: Frames, normal: Array, face: Array, found: Directions) -> Frames:
-    """Frames with every row defined; a row that nothing defined is made for the first corner that has it."""
-    index = frames.index
-    corner = np.zeros(len(frames.tangents), np.int32)
-    corner[index[::-1]] = np.arange(len(index) - 1, -1, -1, dtype=np.int32)
-    across = reject(frames.tangents, normal[corner])
+    """Frames with every row defined; `normal` is that of each row."""
+    across = reject(frames.tangents, normal)
     lost = (frames.sides == 0) | ~(dot(across, across) > FLATTEST**2)
     if not lost.any():
         return frames
-    tangent, side = frames.tangents.copy(), frames.sides.copy()
-    rows, own = corner[lost], normal[corner[lost]]
-    owner = np.repeat(np.arange(part.face_count), np.diff(part.starts))[rows]
-    face_tangents = _face_tangents(part, face, found)
-    lender = _lenders(part, index, lost)[rows]
-    filled, filled_side = axis_across(own), np.ones(len(rows), np.int8)
-    for offer, offered_side in (
-        (np.where((lender >= 0)[:, None], tangent[lender], 0), side[lender]),
-        (unit(face_tangents[owner, :3]), np.sign(face_tangents[owner, 3])),
-    ):
-        laid = reject(offer, own)
-        usable = (dot(laid, laid) > FLATTEST**2) & (offered_side != 0)
+    tangent, side, own = frames.tangents.copy(), frames.sides.copy(), normal[lost]
+    filled, filled_side = axis_across(own), np.ones(len(own), np.int8)
+    for offer, offered_side in (_lent(part, frames, lost), _face_tangents(part, frames, face, found)):
+        laid = reject(offer[lost], own)
+        usable = (dot(laid, laid) > FLATTEST**2) & (offered_side[lost] != 0)
         filled = np.where(usable[:, None], unit(laid), filled)
-        filled_side = np.where(usable, offered_side, filled_side)
+        filled_side = np.where(usable, offered_side[lost], filled_side)
     tangent[lost], side[lost] = filled, filled_side
     bitangent = frames.bitangents
     if bitangent is not None:
         bitangent = bitangent.copy()
         bitangent[lost] = np.cross(own, tangent[lost]) * side[lost][:, None]
-    return Frames(tangent, bitangent, side, lost, index, frames.uv, frames.method)
+    return Frames(tangent, bitangent, side, lost, frames.index, frames.uv, frames.method)
 
 
-def _lenders(part: Part, index: Array, lost: Array) -> Array:
-    """(corners,) int32: a frame that another corner of the same point has, -1 where there is none."""
+def _face_tangents(part: Part, frames: Frames, face: Array, found: Directions) -> tuple[Array, Array]:
+    """What the faces of each row say: (rows, 3) float64 unit tangents, by area, and (rows,) int8 sides."""
+    columns = [*(found.tangent * found.area[:, None]).T, found.side]
+    owner = np.repeat(np.arange(part.face_count), np.diff(part.starts))
+    by_face = [np.bincount(face, column, part.face_count)[owner] for column in columns]
+    total = np.stack([np.bincount(frames.index, column, len(frames.tangents)) for column in by_face], axis=1)
+    return unit(total[:, :3]), np.sign(total[:, 3]).astype(np.int8)
+
+
+def _lent(part: Part, frames: Frames, lost: Array) -> tuple[Array, Array]:
+    """A frame that other corners of a row's point have, of several the greatest: (rows, 3) tangents, (rows,) sides."""
     point = distinct_values(part.points.values)[0][part.points.index]
-    sound = ~lost[index]
-    lender = np.full(int(point.max(initial=-1)) + 1, -1, np.int32)
-    lender[point[sound][::-1]] = index[sound][::-1]
-    return lender[point]
+    sound = np.flatnonzero(~lost)
+    rank = np.full(len(lost), -1)
+    rank[sound[np.lexsort(frames.tangents[sound].T)]] = np.arange(len(sound))
+    greatest = np.full(int(point.max(initial=-1)) + 1, -1)
+    np.maximum.at(greatest, point, rank[frames.index])
+    lent = np.full(len(lost), -1)
+    np.maximum.at(lent, frames.index, greatest[point])
+    row = np.argsort(rank)[len(lost) - len(sound) :][lent] if len(sound) else np.zeros(len(lost), int)
+    has = lent >= 0
+    return np.where(has[:, None], frames.tangents[row], 0), np.where(has, frames.sides[row], 0)
 
 
 def morph_tangents(part: Part, moved: Part, frames: Frames, uv: Stream, v_down: bool) -> Array:

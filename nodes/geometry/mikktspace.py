@@ -66,7 +66,8 @@ def sides_of_faces(
 ) -> tuple[Array, Array, tuple[Array, Array, Array]]:
     """The side each face is seen from, whether it has area, and its edges: (side, solid, edge table).
 
-    side (faces,) int8: +1 as wound, -1 mirrored; a face without UV area takes the side of its neighbours, 0 where they have none.
+    side (faces,) int8: +1 as wound, -1 mirrored; a face without UV area takes the side of its neighbours, 0 where they
+    have none.
     """
     side = np.zeros(len(starts) - 1, np.int8)
     solid = np.zeros(len(starts) - 1, np.bool_)
@@ -90,7 +91,7 @@ def _face_sides(face: Array, tri_side: Array, uv_area: Array, area: Array, side:
 
 @njit(cache=True, nogil=True)
 def _edge_table(starts: Array, vertex: Array, solid: Array) -> tuple[Array, Array, Array]:
-    """Directed edges by hash of their ends: (slots, next, owner) with chains of corners; owner is the face of a corner."""
+    """Directed edges by hash of their ends: (slots, next, owner), chains of corners, and the face of each corner."""
     corners = len(vertex)
     size = 16
     while size < 2 * corners:
@@ -245,7 +246,7 @@ def _normalise(total: Array, tangent: Array) -> None:
 
 @njit(cache=True, nogil=True)
 def _borrow(starts: Array, vertex: Array, solid: Array, index: Array, tangent: Array, side: Array) -> None:
-    """Corners of faces without area move to a group at their vertex; of several the one with the greatest tangent is taken."""
+    """Corners of faces without area move to a group at their vertex, of several to that of the greatest tangent."""
     lender = np.full(vertex.max() + 1 if len(vertex) else 0, -1, np.int32)
     for f in range(len(starts) - 1):
         if solid[f]:

@@ -1,7 +1,7 @@
 """Vertex normals as sums over the faces around a point.
 
 face        each face its own
-area        all faces of a point, by area (Max 1999)
+area        all faces of a point, by the area of the whole face (Max 1999)
 angle       all faces of a point, by the angle at the corner (Thuermer & Wuethrich 1998)
 crease      by angle, but never across an edge whose faces stand at more than a given angle
 smoothing   by angle, but only between faces of one smoothing group (group 0: none)
@@ -27,22 +27,26 @@ def build_normals(part: Part, method: str, crease: float = 30.0) -> Stream:
     edge1, edge2 = (_points_of(part, triangles[:, k]) - _points_of(part, triangles[:, 0]) for k in (1, 2))
     across = np.cross(edge1, edge2)
     if method == "face":
-        total = np.zeros((part.face_count, 3))
-        np.add.at(total, face, across)
         index = np.repeat(np.arange(part.face_count, dtype=np.int32), np.diff(part.starts))
-        return Stream(_finish(total), index)
+        return Stream(_finish(_sums(across, face, part.face_count)), index)
     point = distinct_values(part.points.values)[0][part.points.index]
-    if method in ("area", "angle"):
+    if method == "area":
+        index = distinct_rows(point)[0]
+        owner = np.repeat(np.arange(part.face_count), np.diff(part.starts))
+        return Stream(_finish(_sums(_sums(across, face, part.face_count)[owner], index)), index)
+    if method == "angle":
         index = distinct_rows(point)[0]
     else:
-        index = _joined(part, point, unit(_face_vectors(part, face, across)), method, crease)
-    length = np.sqrt(dot(across, across))
-    weights = np.broadcast_to(np.where(length > 0, length, 0)[:, None], (len(face), 3))
-    if method != "area":
-        weights = _angles(edge1, edge2)
+        index = _joined(part, point, unit(_sums(across, face, part.face_count)), method, crease)
     total = np.zeros((int(index.max(initial=-1)) + 1, 3))
-    _add_up(triangles, index, unit(across), np.ascontiguousarray(weights), total)
+    _add_up(triangles, index, unit(across), _angles(edge1, edge2), total)
     return Stream(_finish(total), index)
+
+
+def _sums(rows: Array, index: Array, count: int = 0) -> Array:
+    """(n, 3) the sums of rows that have one index."""
+    total: Array = np.stack([np.bincount(index, rows[:, axis], count) for axis in range(3)], axis=1)
+    return total
 
 
 def _points_of(part: Part, corners: Array) -> Array:
@@ -53,12 +57,6 @@ def _finish(total: Array) -> Array:
     normals = unit(total).astype(np.float32)
     normals[~normals.any(axis=1)] = UP
     return normals
-
-
-def _face_vectors(part: Part, face: Array, across: Array) -> Array:
-    total = np.zeros((part.face_count, 3))
-    np.add.at(total, face, across)
-    return total
 
 
 def _angles(edge1: Array, edge2: Array) -> Array:

@@ -1,16 +1,20 @@
 """Polygons cut into triangles, the same way at solve, check and export.
 
 Triangles pass through. A quad is cut along its shorter diagonal in UV space, or in space where the UVs do not decide
-(Mikkelsen 2008 leaves this to the file; the shorter UV diagonal is what the scheme's description does). Larger polygons
-lose one ear after another, always the one with the shortest cut. Nothing depends on which corner comes first.
+(Mikkelsen 2008 leaves this to the file; the shorter UV diagonal is what the scheme's description does), or through its
+corner of the least UV where space does not decide either. Larger polygons lose one ear after another, always the one
+with the shortest cut. Nothing depends on which corner comes first.
 """
 
 from __future__ import annotations
 
 import numpy as np
 from numba import njit
+from tangentry.nodes.geometry.ears import clip_ears
 from tangentry.nodes.model import Part
 from tangentry.pipeline.flow import Array
+
+EVEN = 1e-3  # of squared diagonals in space: share by which they must differ to tell, more than a motion's rounding
 
 
 def triangulate(part: Part) -> tuple[Array, Array]:
@@ -35,18 +39,35 @@ def triangulate(part: Part) -> tuple[Array, Array]:
         uv_values,
         uv_index,
         int(sizes.max(initial=3)),
+        _ranks(part, sizes, uv_values, uv_index),
         triangles,
         face,
     )
     return triangles, face
 
 
+def _ranks(part: Part, sizes: Array, uvs: Array, uv_at: Array) -> Array:
+    """(corners,) int32: the place of each corner of a large polygon in the order of u, v, then x, y, z."""
+    rank = np.zeros(len(uv_at), np.int32)
+    corners = np.flatnonzero(np.repeat(sizes > 4, sizes))
+    values = np.concatenate([uvs[uv_at[corners]], part.points.values[part.points.index[corners]]], axis=1)
+    rank[corners[np.lexsort(values.T[::-1])]] = np.arange(len(corners), dtype=np.int32)
+    return rank
+
+
 @njit(cache=True, nogil=True)
 def _cut_all(
-    starts: Array, points: Array, at: Array, uvs: Array, uv_at: Array, most: int, triangles: Array, face: Array
+    starts: Array,
+    points: Array,
+    at: Array,
+    uvs: Array,
+    uv_at: Array,
+    most: int,
+    rank: Array,
+    triangles: Array,
+    face: Array,
 ) -> None:
     done = 0
-    ring = np.empty(most, np.int32)
     flat = np.empty((most, 2))
     for f in range(len(starts) - 1):
         start, size = starts[f], starts[f + 1] - starts[f]
@@ -58,7 +79,7 @@ def _cut_all(
             _cut_quad(start, points, at, uvs, uv_at, triangles, done)
         else:
             _flatten(start, size, points, at, flat)
-            _clip_ears(start, size, flat, ring, triangles, done)
+            clip_ears(start, size, flat, rank, triangles, done)
         for k in range(size - 2):
             face[done + k] = f
         done += size - 2
@@ -80,10 +101,34 @@ def _cut_quad(start: int, points: Array, at: Array, uvs: Array, uv_at: Array, tr
     if across02 == across13:
         across02 = _square(points, at[start], at[start + 2])
         across13 = _square(points, at[start + 1], at[start + 3])
+        if abs(across02 - across13) <= EVEN * max(across02, across13):
+            across02, across13 = 0.0, 1.0 - 2.0 * (_least(start, points, at, uvs, uv_at) % 2)
     s = start if across02 <= across13 else start + 1
     a, b, c, d = s, start + (s - start + 1) % 4, start + (s - start + 2) % 4, start + (s - start + 3) % 4
     triangles[done, 0], triangles[done, 1], triangles[done, 2] = a, b, c
     triangles[done + 1, 0], triangles[done + 1, 1], triangles[done + 1, 2] = a, c, d
+
+
+@njit(cache=True, nogil=True)
+def _key(corner: int, points: Array, at: Array, uvs: Array, uv_at: Array, key: Array) -> None:
+    """What orders corners by their values alone: u, v, then x, y, z."""
+    key[:2] = uvs[uv_at[corner]]
+    key[2:] = points[at[corner]]
+
+
+@njit(cache=True, nogil=True)
+def _least(start: int, points: Array, at: Array, uvs: Array, uv_at: Array) -> int:
+    """Which of a quad's corners has the least key."""
+    best, least, key = 0, np.empty(5), np.empty(5)
+    _key(start, points, at, uvs, uv_at, least)
+    for k in range(1, 4):
+        _key(start + k, points, at, uvs, uv_at, key)
+        for place in range(5):
+            if key[place] != least[place]:
+                if key[place] < least[place]:
+                    best, least, key = k, key, least
+                break
+    return best
 
 
 @njit(cache=True, nogil=True)
@@ -112,48 +157,3 @@ def _flatten(start: int, size: int, points: Array, at: Array, flat: Array) -> No
         x, y, z = np.float64(points[p, 0]), np.float64(points[p, 1]), np.float64(points[p, 2])
         flat[k, 0] = ux * x + uy * y + uz * z
         flat[k, 1] = vx * x + vy * y + vz * z
-
-
-@njit(cache=True, nogil=True)
-def _turn(flat: Array, a: int, b: int, c: int) -> float:
-    return (flat[b, 0] - flat[a, 0]) * (flat[c, 1] - flat[a, 1]) - (flat[b, 1] - flat[a, 1]) * (flat[c, 0] - flat[a, 0])
-
-
-@njit(cache=True, nogil=True)
-def _is_ear(flat: Array, ring: Array, size: int, k: int) -> bool:
-    a, b, c = ring[(k - 1) % size], ring[k], ring[(k + 1) % size]
-    if _turn(flat, a, b, c) <= 0:
-        return False
-    for j in range(size):
-        p = ring[j]
-        if p == a or p == b or p == c:
-            continue
-        if _turn(flat, a, b, p) >= 0 and _turn(flat, b, c, p) >= 0 and _turn(flat, c, a, p) >= 0:
-            same = (flat[p, 0] == flat[a, 0] and flat[p, 1] == flat[a, 1]) or (
-                flat[p, 0] == flat[c, 0] and flat[p, 1] == flat[c, 1]
-            )
-            if not same:
-                return False
-    return True
-
-
-@njit(cache=True, nogil=True)
-def _clip_ears(start: int, size: int, flat: Array, ring: Array, triangles: Array, done: int) -> None:
-    """Cut off the ear with the shortest cut until a triangle is left; where rounding leaves no ear, the shortest cut of all."""
-    for k in range(size):
-        ring[k] = k
-    while size > 3:
-        best, shortest, sure = 0, np.inf, False
-        for k in range(size):
-            a, c = ring[(k - 1) % size], ring[(k + 1) % size]
-            length = (flat[a, 0] - flat[c, 0]) ** 2 + (flat[a, 1] - flat[c, 1]) ** 2
-            ear = _is_ear(flat, ring, size, k)
-            if (ear and not sure) or (ear == sure and length < shortest):
-                best, shortest, sure = k, length, ear
-        a, b, c = ring[(best - 1) % size], ring[best], ring[(best + 1) % size]
-        triangles[done, 0], triangles[done, 1], triangles[done, 2] = start + a, start + b, start + c
-        done += 1
-        for k in range(best, size - 1):
-            ring[k] = ring[k + 1]
-        size -= 1
-    triangles[done, 0], triangles[done, 1], triangles[done, 2] = start + ring[0], start + ring[1], start + ring[2]

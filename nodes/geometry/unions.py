@@ -27,7 +27,7 @@ def union(parent: Array, a: int, b: int) -> None:
 
 @njit(cache=True, nogil=True)
 def number(parent: Array, index: Array) -> int:
-    """Write each member's set number, in order of first appearance, into index (n,) int32; gives how many sets there are."""
+    """Write each member's set number, in order of first appearance, into index (n,) int32; returns the count."""
     count = 0
     for c in range(len(parent)):
         one = root(parent, c)

@@ -26,7 +26,7 @@ def reject(rows: Array, normals: Array) -> Array:
 
 
 def axis_across(normals: Array) -> Array:
-    """(n, 3) a unit vector perpendicular to each unit normal, continuous but at n_z = 0 (Duff et al. 2017, listing 3)."""
+    """(n, 3) a unit vector across each unit normal, continuous but at n_z = 0 (Duff et al. 2017, listing 3)."""
     x, y, z = normals.T
     sign = np.copysign(np.float32(1), z)
     a = -1 / (sign + z)
