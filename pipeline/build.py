@@ -253,6 +253,7 @@ class _Build:
 
     def _conclude(self, tidy: bool) -> Record:
         self.record.assets = list(self.assets.values())
+        self.record.restored.sort()
         if not self.record.stopped:
             left = self.outputs.left_over(None if self.only is None else self.assets)
             self.record.left_over = [

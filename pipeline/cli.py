@@ -17,6 +17,7 @@ if TYPE_CHECKING:
     from tangentry.pipeline.record import Record
 
 CAUTION = "Building a graph runs the code of its node kinds, those of its own `kinds:` folder included: build graphs you trust."
+MOST_PROBLEMS = 30  # that are printed
 
 
 def main(words: list[str] | None = None) -> int:
@@ -27,17 +28,25 @@ def main(words: list[str] | None = None) -> int:
     try:
         return int(chosen.run(chosen))
     except GraphError as error:
-        print("\n".join(error.problems), file=sys.stderr)
+        _print_problems(error.problems)
         return 2
     except TangentryError as error:
         print(error, file=sys.stderr)
         return 1
     except KeyboardInterrupt:
-        print("\ninterrupted: what was made is kept, and the next build goes on from there", file=sys.stderr)
-        return 130
+        from tangentry.pipeline.interrupts import EXIT_CODE, TOLD
+
+        print(TOLD, file=sys.stderr)
+        return EXIT_CODE
     except BrokenPipeError:  # whoever read our output has enough
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return 1
+
+
+def _print_problems(problems: tuple[str, ...]) -> None:
+    print("\n".join(problems[:MOST_PROBLEMS]), file=sys.stderr)
+    if len(problems) > MOST_PROBLEMS:
+        print(f"and {len(problems) - MOST_PROBLEMS} more", file=sys.stderr)
 
 
 def _parser() -> argparse.ArgumentParser:
@@ -137,11 +146,12 @@ def _build(chosen: argparse.Namespace) -> int:
 
 def _build_once(chosen: argparse.Namespace) -> tuple[Record, int]:
     from tangentry.pipeline.build import run_build
-    from tangentry.pipeline.writing import write_whole
+    from tangentry.pipeline.interrupts import heard_at_once
     from tangentry.pipeline.terminal import Progress, closing_lines
+    from tangentry.pipeline.writing import write_whole
 
     graph = _read(chosen)
-    with Progress() as progress:
+    with Progress() as progress, heard_at_once():
         record = run_build(
             graph,
             store=chosen.store,
@@ -172,7 +182,7 @@ def _watch(chosen: argparse.Namespace, record: Record, store: Path) -> int:
         try:
             record, _ = _build_once(chosen)
         except GraphError as error:
-            print("\n".join(error.problems), file=sys.stderr)
+            _print_problems(error.problems)
 
 
 # plan

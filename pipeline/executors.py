@@ -11,6 +11,7 @@ import contextlib
 import dataclasses
 import multiprocessing
 import secrets
+import time
 from collections import deque
 from collections.abc import Callable, Iterator, Sequence
 from multiprocessing.connection import Connection, wait
@@ -26,6 +27,7 @@ from tangentry.pipeline.remote import open_store
 from tangentry.pipeline.store import Store
 from tangentry.pipeline.work import Bench, Event, Started
 
+GRACE = 0.5  # seconds for a worker to tidy up
 DEATHS_IN_A_ROW = 3  # of workers that had not begun a step: then something is wrong with all of them
 
 
@@ -107,10 +109,11 @@ class Workers:
         for worker in self._workers:
             worker.pipe.close()
             worker.process.terminate()
+        until = time.monotonic() + GRACE
         for worker in self._workers:
-            worker.process.join(0.5)
-            if worker.process.is_alive():  # deep in a computation, so not half through writing a file
-                worker.process.kill()
+            worker.process.join(max(0.0, until - time.monotonic()))
+            worker.process.kill()  # if it is alive yet it is deep in a computation, so not half through writing a file
+            worker.process.join()
 
     def _start(self) -> _Worker:
         ours, theirs = self._context.Pipe()

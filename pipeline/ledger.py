@@ -19,7 +19,6 @@ from tangentry.pipeline.store import StoreError
 from tangentry.pipeline.values import digest_array
 
 SETTLED_NS = 2_000_000_000  # a file that changed this shortly before its digest was taken may change again unseen
-BATCH = 256  # outputs noted in one transaction
 TABLES = """
 create table if not exists files (path text primary key, size integer, mtime integer, inode integer, noted integer, digest text);
 create table if not exists made (graph text, asset text, node text, parts text, primary key (graph, asset, node));
@@ -61,7 +60,6 @@ class Ledger:
         self.hashed = 0
         self._files: dict[str, tuple[Stat, int, str]] = {}
         self._new_files: dict[str, tuple[Stat, int, str]] = {}
-        self._new_outputs: list[tuple[str, ...]] = []
         self._base: sqlite3.Connection | None = None
         path = folder / "ledger.sqlite"
         try:
@@ -77,9 +75,8 @@ class Ledger:
                 f"{folder}: the store can't be written ({error}); correct its permissions, or name another with --store"
             ) from error
         if self._base is not None:
-            with contextlib.suppress(sqlite3.DatabaseError):
-                rows = self._base.execute("select path, size, mtime, inode, noted, digest from files")
-                self._files = {row[0]: ((row[1], row[2], row[3]), row[4], row[5]) for row in rows}
+            rows = self._rows("select path, size, mtime, inode, noted, digest from files", ())
+            self._files = {row[0]: ((row[1], row[2], row[3]), row[4], row[5]) for row in rows}
 
     def digest_of(self, path: str | os.PathLike[str]) -> str | None:
         """Digest of a file as it is now, from memory where its size, time and inode are unchanged; None: no such file."""
@@ -111,8 +108,11 @@ class Ledger:
 
     def parts_of(self, graph: str) -> dict[tuple[str, str], dict[str, Any]]:
         """What every node of a graph was last made of, by (asset, node)."""
-        rows = self._rows("select asset, node, parts from made where graph = ?", (graph,))
-        return {(asset, node): json.loads(parts) for asset, node, parts in rows}
+        known = {}
+        for asset, node, parts in self._rows("select asset, node, parts from made where graph = ?", (graph,)):
+            with contextlib.suppress(ValueError):  # spoilt: then the reason to run reads "never made before"
+                known[asset, node] = json.loads(parts)
+        return known
 
     def note_parts(self, graph: str, rows: Iterable[tuple[str, str, dict[str, Any]]]) -> None:
         """Remember what nodes were made of: (asset, node, parts)."""
@@ -128,10 +128,8 @@ class Ledger:
         }
 
     def note_output(self, path: str, output: Output) -> None:
-        """Remember a file that a graph wrote."""
-        self._new_outputs.append((path, *output))
-        if len(self._new_outputs) >= BATCH:
-            self._flush()
+        """Remember a file that a graph writes: at once, so that a build that is killed knows its own files again."""
+        self._write("insert or replace into outputs values (?, ?, ?, ?, ?)", [(path, *output)])
 
     def forget_output(self, path: str) -> None:
         """Forget a file that was removed."""
@@ -154,11 +152,13 @@ class Ledger:
             "insert or replace into files values (?, ?, ?, ?, ?, ?)",
             [(name, *stat, noted, digest) for name, (stat, noted, digest) in learnt.items()],
         )
-        self._write("insert or replace into outputs values (?, ?, ?, ?, ?)", self._new_outputs)
-        self._new_outputs = []
 
     def _rows(self, query: str, values: tuple[str, ...]) -> list[tuple[Any, ...]]:
-        return self._base.execute(query, values).fetchall() if self._base is not None else []
+        """What a query finds; nothing where there is no ledger, or a spoilt one that may only be read."""
+        try:
+            return self._base.execute(query, values).fetchall() if self._base is not None else []
+        except sqlite3.DatabaseError:
+            return []
 
     def _write(self, statement: str, rows: Sequence[tuple[Any, ...]]) -> None:
         assert self._base is not None and not self.read_only
@@ -167,7 +167,7 @@ class Ledger:
         try:
             self._base.executemany(statement, rows)
             self._base.commit()
-        except sqlite3.OperationalError as error:
+        except sqlite3.DatabaseError as error:
             raise StoreError(
                 f"the store's ledger can't be written ({error}); free some space, or name another store with --store"
             ) from error
@@ -177,8 +177,11 @@ def _open(path: Path) -> sqlite3.Connection:
     """The ledger, made anew where it is missing or spoilt."""
     try:
         base = sqlite3.connect(path, timeout=30)
+        base.text_factory = lambda content: content.decode("utf-8", errors="replace")
         base.execute("pragma synchronous = off")
         base.executescript(TABLES)
+        if base.execute("pragma quick_check(1)").fetchone() != ("ok",):
+            raise sqlite3.DatabaseError("spoilt")
         return base
     except sqlite3.OperationalError:
         raise

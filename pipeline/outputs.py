@@ -69,26 +69,30 @@ class Outputs:
                 f"{path}: is also made by {' '.join(self.claimed[name])}; put {{stem}} or {{below}} into its name"
             )
         known = self._known.get(name)
-        there = self.ledger.digest_of(target)
-        if there != digest:
-            if os.path.lexists(target) and not (known and known.graph == self.graph) and not self.overwrite:
-                raise OutputError(
-                    f"{path}: is there already and was not written by this graph; move it away, or build with --overwrite"
-                )
-            try:
-                write_whole(target, lambda file: file.write(content_of(digest).data))
-            except WriteError as error:
-                if error.hopeless:
-                    raise
-                raise OutputError(f"{path}: can't be written: {error.reason}") from error
-            self.written.append(Path(path).as_posix())
-            stat = stat_of(target)
-            if stat is not None:
-                self.ledger.note_file(os.path.abspath(target), stat, stat[1], digest)
+        altered = self.ledger.digest_of(target) != digest
+        if altered and os.path.lexists(target) and not (known and known.graph == self.graph) and not self.overwrite:
+            raise OutputError(
+                f"{path}: is there already and was not written by this graph; move it away, or build with --overwrite"
+            )
         record = Output(self.graph, *id, digest)
         if known != record:
             self._known[name] = record
             self.ledger.note_output(name, record)
+        if altered:
+            self._write(target, path, digest, content_of)
+
+    def _write(self, target: Path, path: str, digest: str, content_of: Callable[[str], Array]) -> None:
+        content = content_of(digest)
+        try:
+            write_whole(target, lambda file: file.write(content.data))
+        except WriteError as error:
+            if error.hopeless:
+                raise
+            raise OutputError(f"{path}: can't be written: {error.reason}") from error
+        self.written.append(Path(path).as_posix())
+        stat = stat_of(target)
+        if stat is not None:
+            self.ledger.note_file(os.path.abspath(target), stat, stat[1], digest)
 
     def left_over(self, assets: Iterable[str] | None) -> list[Path]:
         """Files this graph wrote once and makes no longer; for some assets only, where these are given."""

@@ -99,25 +99,30 @@ Outcome = dict[str, str | None] | None  # digests by output (None: left out); No
 
 
 def lay_out(graph: Graph, members: Sequence[Member]) -> nx.DiGraph[StepId]:
-    """The DAG of all steps; the attribute "step" of each holds it. Raises GraphError where two steps would make one file."""
+    """The DAG of all steps; the attribute "step" of each holds it.
+
+    Raises GraphError where two steps would make one file, or where one would be made over a file that is read.
+    """
     import networkx as nx
 
     dag: nx.DiGraph[StepId] = nx.DiGraph()
+    read = {os.path.normpath(member.name): f"{member.name}, an asset of the library" for member in members}
     made: dict[str, str] = {}
     problems: list[str] = []
     for step in all_steps(graph, members):
         dag.add_node(step.id, step=step)
         for source in sources(step):
             dag.add_edge(source, step.id)
+        where = f"{step.asset or graph.path.name}, node {step.node}"
+        read.update((os.path.normpath(path), where) for path in step.reads.values())
         for path in step.makes.values():
-            where = f"{step.asset or graph.path.name}, node {step.node}"
-            if path in made:
-                problems.append(
-                    f"{graph.path}: {path} would be made twice: by {made[path]} and by {where}; put {{stem}} or {{below}} into its name"
-                )
-            made[path] = where
+            one = os.path.normpath(path)
+            if one in made:
+                problems.append(f"{path} would be made twice: by {made[one]} and by {where}; put {{stem}} or {{below}} into its name")
+            made[one] = where
+    problems += [f"{path} would be made by {made[path]}, over what is read by {read[path]}; name another file" for path in made if path in read]
     if problems:
-        raise GraphError(*problems[:20])
+        raise GraphError(*(f"{graph.path}: {problem}" for problem in problems))
     return dag
 
 

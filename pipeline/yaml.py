@@ -122,10 +122,9 @@ def _node(event: Any, events: Any, file: str, problems: list[str], depth: int) -
     if depth > DEEPEST:
         raise GraphError(*problems, f"{mark}: nested deeper than {DEEPEST} levels")
     if isinstance(event, yaml.AliasEvent):
-        problems.append(f'{mark}: an alias ("*{event.anchor}"); write the value out, or use an option')
-        return Node(None, mark)
-    if event.anchor is not None:
-        problems.append(f'{mark}: an anchor ("&{event.anchor}"); write the value out, or use an option')
+        raise GraphError(*problems, f'{mark}: an alias ("*{event.anchor}"); write the value out, or use an option')
+    if event.anchor is not None:  # no reading on: a file that unfolds has hundreds of them
+        raise GraphError(*problems, f'{mark}: an anchor ("&{event.anchor}"); write the value out, or use an option')
     if event.tag not in (None, "!"):
         problems.append(f"{mark}: a tag ({event.tag}); write a plain value")
     if isinstance(event, yaml.ScalarEvent):
