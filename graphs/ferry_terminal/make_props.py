@@ -19,9 +19,25 @@ from tangentry.nodes.model import Asset, Frames, Image, MapUse, Material, Part, 
 from tangentry.nodes.normals import normals
 
 HERE = Path(__file__).parent
-GUTTER = 0.01  # between charts, in UV units
+TEXTURE = 256  # texels along a side
+GUTTER = 7 / TEXTURE  # between charts, in UV units: apart down to the second mip level
 
 Corner = tuple[int, int]  # a point, and a UV
+Place = tuple[float, float]  # u and v, or metres along a chart
+
+
+@dataclass
+class Panel:
+    """A flat chart that waits to be packed."""
+
+    material: str
+    flat: list[Place]  # metres, from (0, 0)
+    uvs: list[int]  # where its UVs go, and those of charts that share its place
+
+    @property
+    def size(self) -> Place:
+        """Width and height in metres."""
+        return max(x for x, _ in self.flat), max(y for _, y in self.flat)
 
 
 @dataclass
@@ -34,12 +50,19 @@ class Mesh:
     faces: list[list[Corner]] = field(default_factory=list)
     smoothing: list[int] = field(default_factory=list)
     material: list[str] = field(default_factory=list)
+    panels: list[Panel] = field(default_factory=list)
 
     def face(self, corners: list[Corner], material: str, smoothing: int = 0) -> None:
         """Add a polygon; smoothing group 0 is faceted."""
         self.faces.append(corners)
         self.smoothing.append(smoothing)
         self.material.append(material)
+
+    def placed(self, points: list[tuple[float, float, float]]) -> list[int]:
+        """Add points; gives their numbers."""
+        first = len(self.points)
+        self.points += points
+        return list(range(first, len(self.points)))
 
     def grid(
         self,
@@ -121,48 +144,52 @@ class Mesh:
         ]
         self.face([(p0 + k, t0 + k) for k in range(sides)], material)
 
-    def box(
-        self,
-        low: tuple[float, float, float],
-        high: tuple[float, float, float],
-        cell: tuple[float, float, float, float],
-        material: str,
-        stacked: bool = False,
-    ) -> None:
-        """Add a box whose six charts lie in a cell, 3 x 2.
+    def panel(self, points: list[int], flat: list[Place], material: str, over: bool = False) -> None:
+        """Add a polygon with a flat chart, to be packed; `over` lays it on the last panel's, mirrored."""
+        left, low = min(x for x, _ in flat), min(y for _, y in flat)
+        flat = [(x - left, y - low) for x, y in flat]
+        t0 = len(self.uvs)
+        self.uvs += [(0.0, 0.0)] * len(flat)
+        self.face([(one, t0 + k) for k, one in enumerate(points)], material)
+        if over:
+            assert len(flat) == 4  # corners 0 and 1 change places, as do 3 and 2
+            self.panels[-1].uvs += [t0 + 1, t0, t0 + 3, t0 + 2]
+        else:
+            self.panels.append(Panel(material, flat, list(range(t0, t0 + len(flat)))))
 
-        `stacked` lays opposite sides on one chart, one of them mirrored.
-        """
-        x = [(a, b, c) for a in (low[0], high[0]) for b in (low[1], high[1]) for c in (low[2], high[2])]
+    def box(
+        self, low: tuple[float, float, float], high: tuple[float, float, float], material: str, stacked: bool = False
+    ) -> None:
+        """Add a box of six panels; `stacked` lays opposite sides on one chart, one of them mirrored."""
         p0 = len(self.points)
-        self.points += x
+        self.points += [(a, b, c) for a in (low[0], high[0]) for b in (low[1], high[1]) for c in (low[2], high[2])]
         sides = [[1, 5, 7, 3], [4, 0, 2, 6], [5, 4, 6, 7], [0, 1, 3, 2], [3, 7, 6, 2], [0, 4, 5, 1]]
-        size = np.subtract(high, low)
-        spans = [
-            (size[0], size[1]),
-            (size[0], size[1]),
-            (size[2], size[1]),
-            (size[2], size[1]),
-            (size[0], size[2]),
-            (size[0], size[2]),
-        ]
-        u0, v0, u1, v1 = cell
-        columns, rows = (3, 1) if stacked else (3, 2)
-        wide, high_ = (u1 - u0) / columns, (v1 - v0) / rows
-        scale = min((wide - 2 * GUTTER) / max(w for w, _ in spans), (high_ - 2 * GUTTER) / max(h for _, h in spans))
-        for number, (corners, (w, h)) in enumerate(zip(sides, spans, strict=True)):
-            place = number // 2 if stacked else number
-            left, bottom = u0 + wide * (place % columns) + GUTTER, v0 + high_ * (place // columns) + GUTTER
-            chart = [(0, 0), (w, 0), (w, h), (0, h)]
-            if stacked and number % 2:
-                chart = [(w - a, b) for a, b in chart]
-            t0 = len(self.uvs)
-            self.uvs += [(left + a * scale, bottom + b * scale) for a, b in chart]
-            self.face([(p0 + c, t0 + k) for k, c in enumerate(corners)], material)
+        wide, tall, deep = np.subtract(high, low)
+        spans = [(wide, tall), (deep, tall), (wide, deep)]
+        for number, corners in enumerate(sides):
+            w, h = spans[number // 2]
+            self.panel([p0 + c for c in corners], oblong(w, h), material, stacked and number % 2 == 1)
+
+    def pack(self, material: str) -> None:
+        """Give the panels of a material their UVs, all at the largest scale at which they fit the tile."""
+        panels = [one for one in self.panels if one.material == material]
+        fitting, too_large = 0.0, 64.0  # UV units per metre
+        for _ in range(40):
+            scale = (fitting + too_large) / 2
+            if shelved(panels, scale) is None:
+                too_large = scale
+            else:
+                fitting = scale
+        for panel, (left, low) in zip(panels, shelved(panels, fitting) or [], strict=True):
+            for k, row in enumerate(panel.uvs):
+                x, y = panel.flat[k % len(panel.flat)]
+                self.uvs[row] = (left + fitting * x, low + fitting * y)
 
     def asset(self) -> Asset:
         """The prop with its normals, one part for each material."""
         names = list(dict.fromkeys(self.material))
+        for name in names:
+            self.pack(name)
         points, uvs = np.array(self.points, np.float32), np.array(self.uvs, np.float32)
         parts = []
         for row, name in enumerate(names):
@@ -185,6 +212,26 @@ class Mesh:
         return normals(asset, method="smoothing")
 
 
+def oblong(wide: float, tall: float) -> list[Place]:
+    """A rectangle's corners, counter-clockwise."""
+    return [(0.0, 0.0), (wide, 0.0), (wide, tall), (0.0, tall)]
+
+
+def shelved(panels: list[Panel], scale: float) -> list[Place] | None:
+    """Where each panel's corner lies, on shelves with the tall ones first; None where they don't fit."""
+    places: list[Place] = [(0.0, 0.0)] * len(panels)
+    left, low, shelf = GUTTER / 2, GUTTER / 2, 0.0
+    for row in sorted(range(len(panels)), key=lambda row: (-panels[row].size[1], -panels[row].size[0], row)):
+        wide, tall = (scale * side + GUTTER for side in panels[row].size)
+        if left + wide > 1 + GUTTER / 2:
+            left, low, shelf = GUTTER / 2, low + shelf, 0.0
+        if left + wide > 1 + GUTTER / 2 or low + tall > 1 + GUTTER / 2:
+            return None
+        places[row] = (left, low)
+        left, shelf = left + wide, max(shelf, tall)
+    return places
+
+
 def _used(values: np.ndarray, index: np.ndarray) -> Stream:
     rows, at = np.unique(index, return_inverse=True)
     return Stream(values[rows], at.astype(np.int32))
@@ -199,7 +246,7 @@ def bollard() -> Asset:
     mesh.lathe([(0.22, 0.0), (0.22, 0.06), (0.15, 0.10)], 16, (0.01, 0.01, 0.99, 0.15), "cast iron", 1)
     mesh.lathe([(0.15, 0.10), (0.13, 0.3), (0.13, 0.42), (0.16, 0.5)], 16, (0.01, 0.18, 0.99, 0.6), "cast iron", 2)
     mesh.lathe([(0.16, 0.5), (0.2, 0.53), (0.2, 0.57), (0.17, 0.6)], 16, (0.01, 0.63, 0.69, 0.74), "cast iron", 3)
-    mesh.cap(0.17, 0.6, 16, (0.71, 0.63, 0.99, 0.91), "cast iron")
+    mesh.cap(0.17, 0.6, 16, (0.72, 0.63, 0.99, 0.9), "cast iron")
     return mesh.asset()
 
 
@@ -244,26 +291,19 @@ def buoy() -> Asset:
 def crate() -> Asset:
     """Planks: opposite sides share a chart, one of them mirrored; a height map of wood grain goes with it."""
     mesh = Mesh("crate")
-    mesh.box((-0.4, 0.0, -0.4), (0.4, 0.6, 0.4), (0.0, 0.0, 1.0, 1.0), "planks", stacked=True)
+    mesh.box((-0.4, 0.0, -0.4), (0.4, 0.6, 0.4), "planks", stacked=True)
     return mesh.asset()
 
 
 def quay_slab() -> Asset:
     """Two metres of quay, its cobbles in a height map of 16 bits; open below, where nobody looks."""
     mesh = Mesh("quay_slab")
-    wide, deep, scale = 2.0, 0.15, 0.42  # metres, metres, UV units per metre
+    wide, deep = 2.0, 0.15
     mesh.points = [(x, y, z) for y in (-deep, 0.0) for x, z in ((-1.0, 1.0), (1.0, 1.0), (1.0, -1.0), (-1.0, -1.0))]
-    top = wide * scale
-    mesh.uvs = [(GUTTER + u * top, GUTTER + v * top) for u, v in ((0, 0), (1, 0), (1, 1), (0, 1))]
-    mesh.face([(4 + k, k) for k in range(4)], "cobbles")
+    mesh.panel([4, 5, 6, 7], oblong(wide, wide), "cobbles")
     for side in range(4):
-        low, high = (0.86, 0.93)[side % 2], (0.86, 0.93)[side % 2] + deep * scale
-        chart = [(GUTTER, low), (GUTTER + top, low), (GUTTER + top, high), (GUTTER, high)]
-        if side > 1:  # a quarter turn: these two stand right of the top's chart
-            chart = [(low + high - v, u) for u, v in chart]
-        t0, after = len(mesh.uvs), (side + 1) % 4
-        mesh.uvs += chart
-        mesh.face([(c, t0 + k) for k, c in enumerate((side, after, 4 + after, 4 + side))], "cobbles")
+        after = (side + 1) % 4
+        mesh.panel([side, after, 4 + after, 4 + side], oblong(wide, deep), "cobbles")
     return mesh.asset()
 
 
@@ -272,37 +312,32 @@ def stair() -> Asset:
     mesh = Mesh("stair")
     for step in range(5):
         y, z = 0.18 * step, -0.3 * step
-        v = 0.02 + 0.19 * step
-        for name, corners in (
-            ("risers", [(-0.6, y, z), (0.6, y, z), (0.6, y + 0.18, z), (-0.6, y + 0.18, z)]),
-            ("treads", [(-0.6, y + 0.18, z), (0.6, y + 0.18, z), (0.6, y + 0.18, z - 0.3), (-0.6, y + 0.18, z - 0.3)]),
+        for name, tall, corners in (
+            ("risers", 0.18, [(-0.6, y, z), (0.6, y, z), (0.6, y + 0.18, z), (-0.6, y + 0.18, z)]),
+            (
+                "treads",
+                0.3,
+                [(-0.6, y + 0.18, z), (0.6, y + 0.18, z), (0.6, y + 0.18, z - 0.3), (-0.6, y + 0.18, z - 0.3)],
+            ),
         ):
-            p0, t0, tall = len(mesh.points), len(mesh.uvs), 0.11 if name == "risers" else 0.18
-            mesh.points += corners
-            mesh.uvs += [(0.02, v), (0.76, v), (0.76, v + tall), (0.02, v + tall)]
-            mesh.face([(p0 + k, t0 + k) for k in range(4)], name)
+            mesh.panel(mesh.placed(corners), oblong(1.2, tall), name)
     outline = [(0.0, 0.0)]
     for step in range(5):
         outline += [(-0.3 * step, 0.18 * (step + 1)), (-0.3 * (step + 1), 0.18 * (step + 1))]
     outline.append((-1.5, 0.0))
     for x in (0.6, -0.6):
-        p0, t0 = len(mesh.points), len(mesh.uvs)
-        mesh.points += [(x, y, z) for z, y in outline]
-        mesh.uvs += [
-            ((0.02 if x > 0 else 0.51) + (1 + z / 1.5 if x < 0 else -z / 1.5) * 0.47, 0.02 + y / 1.5 * 0.47)
-            for z, y in outline
-        ]
-        ring = [(p0 + k, t0 + k) for k in range(len(outline))]
-        mesh.face(ring[::-1] if x > 0 else ring, "flanks")
+        ring = mesh.placed([(x, y, z) for z, y in outline])
+        flat = [(-z if x > 0 else z, y) for z, y in outline]
+        mesh.panel(ring[::-1] if x > 0 else ring, flat[::-1] if x > 0 else flat, "flanks")
     return mesh.asset()
 
 
 def lantern() -> Asset:
     """A post, a glass and a hood; a second UV set for baked light."""
     mesh = Mesh("lantern")
-    mesh.lathe([(0.09, 0.0), (0.09, 0.05), (0.035, 0.12), (0.03, 2.4)], 12, (0.01, 0.01, 0.49, 0.99), "green paint")
-    mesh.lathe([(0.06, 2.4), (0.11, 2.45), (0.11, 2.7), (0.07, 2.75)], 12, (0.51, 0.01, 0.99, 0.45), "glass")
-    mesh.lathe([(0.15, 2.75), (0.09, 2.85), (0.02, 2.92), (0.0, 2.95)], 12, (0.51, 0.5, 0.99, 0.99), "green paint", 2)
+    mesh.lathe([(0.09, 0.0), (0.09, 0.05), (0.035, 0.12), (0.03, 2.4)], 12, (0.01, 0.01, 0.48, 0.99), "green paint")
+    mesh.lathe([(0.06, 2.4), (0.11, 2.45), (0.11, 2.7), (0.07, 2.75)], 12, (0.52, 0.01, 0.99, 0.45), "glass")
+    mesh.lathe([(0.15, 2.75), (0.09, 2.85), (0.02, 2.92), (0.0, 2.95)], 12, (0.52, 0.5, 0.99, 0.99), "green paint", 2)
     asset = mesh.asset()
     return replace(
         asset,
@@ -314,14 +349,12 @@ def lantern() -> Asset:
 
 
 def bench() -> Asset:
-    """Three slats on two legs, each box in a cell of its own."""
+    """Three slats on two legs."""
     mesh = Mesh("bench")
-    for k in range(3):
-        mesh.box(
-            (-0.7, 0.42, -0.2 + 0.14 * k), (0.7, 0.46, -0.08 + 0.14 * k), (0.0, k * 0.2, 1.0, k * 0.2 + 0.2), "oak"
-        )
-    for k, x in enumerate((-0.55, 0.47)):
-        mesh.box((x, 0.0, -0.18), (x + 0.08, 0.42, 0.18), (k * 0.5, 0.6, k * 0.5 + 0.5, 1.0), "wrought iron")
+    for z in (-0.2, -0.06, 0.08):
+        mesh.box((-0.7, 0.42, z), (0.7, 0.46, z + 0.12), "oak")
+    for x in (-0.55, 0.47):
+        mesh.box((x, 0.0, -0.18), (x + 0.08, 0.42, 0.18), "wrought iron")
     return mesh.asset()
 
 
@@ -337,41 +370,27 @@ def oar() -> Asset:
         mirrored=True,
     )
     blade = [(0.02, 1.9), (0.06, 2.0), (0.08, 2.2), (0.07, 2.45), (0.03, 2.5)]
-    mesh.lathe(blade, 16, (0.07, 0.01, 0.17, 0.32), "ash wood", 2, mirrored=True)
+    mesh.lathe(blade, 16, (0.08, 0.01, 0.18, 0.32), "ash wood", 2, mirrored=True)
     asset = mesh.asset()
     points = asset.parts[0].points.values.copy()
     points[:, 2] *= np.where(points[:, 1] > 1.9, np.maximum(0.25, 1 - (points[:, 1] - 1.9) * 7), 1).astype(np.float32)
     part = replace(asset.parts[0], points=Stream(points, asset.parts[0].points.index))
-    return normals(replace(asset, parts=(part,)), method="crease", crease=50)
+    return normals(replace(asset, parts=(part,)), method="angle")
 
 
 def ticket_kiosk() -> Asset:
     """A house for one, its gables polygons of five corners, in three materials."""
     mesh = Mesh("ticket_kiosk")
     w, h, top, d = 0.9, 2.1, 2.7, 0.8
-    t = 0.49
+    outline = [(-w, 0.0), (w, 0.0), (w, h), (0.0, top), (-w, h)]
     for z, flip in ((d, 1), (-d, -1)):
-        p0, t0 = len(mesh.points), len(mesh.uvs)
-        outline = [(-w, 0.0), (w, 0.0), (w, h), (0.0, top), (-w, h)]
-        mesh.points += [(x * flip, y, z) for x, y in outline]
-        left = 0.01 if flip > 0 else 0.51
-        mesh.uvs += [(left + (x + w) / top * t, 0.01 + y / top * t) for x, y in outline]
-        mesh.face([(p0 + k, t0 + k) for k in range(5)], "boards")
-    for x, flip in ((w, 1), (-w, -1)):
-        p0, t0 = len(mesh.points), len(mesh.uvs)
-        mesh.points += [(x, 0.0, d * flip), (x, 0.0, -d * flip), (x, h, -d * flip), (x, h, d * flip)]
-        left = 0.01 if flip > 0 else 0.51
-        mesh.uvs += [(left + a / top * t, 0.51 + b / top * t) for a, b in ((0, 0), (2 * d, 0), (2 * d, h), (0, h))]
-        mesh.face([(p0 + k, t0 + k) for k in range(4)], "plaster")
+        mesh.panel(mesh.placed([(x * flip, y, z) for x, y in outline]), outline, "boards")
     slope = float(np.hypot(w, top - h))
     for flip in (1, -1):
-        p0, t0 = len(mesh.points), len(mesh.uvs)
-        mesh.points += [(w * flip, h, d * flip), (w * flip, h, -d * flip), (0.0, top, -d * flip), (0.0, top, d * flip)]
-        left = 0.01 if flip > 0 else 0.51
-        mesh.uvs += [
-            (left + a / top * t, 0.01 + b / top * t) for a, b in ((0, 0), (2 * d, 0), (2 * d, slope), (0, slope))
-        ]
-        mesh.face([(p0 + k, t0 + k) for k in range(4)], "shingles")
+        x, z = w * flip, d * flip
+        mesh.panel(mesh.placed([(x, 0.0, z), (x, 0.0, -z), (x, h, -z), (x, h, z)]), oblong(2 * d, h), "plaster")
+        roof = [(x, h, z), (x, h, -z), (0.0, top, -z), (0.0, top, z)]
+        mesh.panel(mesh.placed(roof), oblong(2 * d, slope), "shingles")
     return mesh.asset()
 
 
@@ -381,7 +400,7 @@ def cleat(fine: int = 1) -> Asset:
     foot = [(0.07, 0.0), (0.068, 0.02), (0.05, 0.04), (0.03, 0.07)]
     horn = [(0.0, -0.16), (0.012, -0.155), (0.02, -0.1), (0.026, 0.0), (0.02, 0.1), (0.012, 0.155), (0.0, 0.16)]
     foot, horn = (_refined(profile, fine) for profile in (foot, horn))
-    mesh.lathe(foot, 12 * fine, (0.01, 0.01, 0.99, 0.3), "galvanised steel", 1)
+    mesh.lathe(foot, 12 * fine, (0.01, 0.01, 0.99, 0.29), "galvanised steel", 1)
     first = len(mesh.points)
     mesh.lathe(horn, 12 * fine, (0.01, 0.32, 0.25, 0.99), "galvanised steel", 2)
     mesh.points[first:] = [(y, 0.085 - x, z) for x, y, z in mesh.points[first:]]
@@ -406,23 +425,18 @@ def mooring_post() -> Asset:
     """A post of hammered timber, with a cap."""
     mesh = Mesh("mooring_post")
     mesh.lathe([(0.15, 0.0), (0.16, 0.8), (0.15, 1.5)], 20, (0.01, 0.01, 0.99, 0.69), "timber", 1)
-    mesh.lathe([(0.17, 1.5), (0.16, 1.56), (0.08, 1.62), (0.0, 1.64)], 20, (0.01, 0.71, 0.99, 0.99), "timber", 2)
+    mesh.lathe([(0.17, 1.5), (0.16, 1.56), (0.08, 1.62), (0.0, 1.64)], 20, (0.01, 0.72, 0.99, 0.99), "timber", 2)
     return mesh.asset()
 
 
 def gangway() -> Asset:
     """A ramp with two rails, in two materials; it brings the tangents it was made with."""
     mesh = Mesh("gangway")
-    mesh.box((-0.6, 0.0, -2.0), (0.6, 0.08, 2.0), (0.0, 0.5, 1.0, 1.0), "decking")
-    for k, x in enumerate((-0.6, 0.55)):
-        mesh.box((x, 0.9, -2.0), (x + 0.05, 0.95, 2.0), (k * 0.5, 0.0, k * 0.5 + 0.5, 0.25), "rail")
-        for n, z in enumerate((-1.9, -0.02, 1.86)):
-            mesh.box(
-                (x, 0.08, z),
-                (x + 0.05, 0.9, z + 0.05),
-                (k * 0.5 + n * 0.16, 0.25, k * 0.5 + n * 0.16 + 0.16, 0.5),
-                "rail",
-            )
+    mesh.box((-0.6, 0.0, -2.0), (0.6, 0.08, 2.0), "decking")
+    for x in (-0.6, 0.55):
+        mesh.box((x, 0.9, -2.0), (x + 0.05, 0.95, 2.0), "rail")
+        for z in (-1.9, -0.02, 1.86):
+            mesh.box((x, 0.08, z), (x + 0.05, 0.9, z + 0.05), "rail")
     asset = frames(mesh.asset())
     return replace(
         asset,
@@ -487,7 +501,7 @@ PAINT: dict[str, tuple[str, list[tuple[float, Colour]]]] = {
 }
 
 
-def paint(name: str, size: int = 128) -> np.ndarray:
+def paint(name: str, size: int = TEXTURE) -> np.ndarray:
     """(size, size, 3) uint8: the colour texture of a material."""
     pattern, bands = PAINT[name]
     _, y = _texel_centres(size)
@@ -520,10 +534,10 @@ def shade(pattern: str, size: int) -> np.ndarray:
 def ticket_window(colour: np.ndarray) -> None:
     """Paint a window with a sill, and a door, into the charts of the kiosk's gables."""
     for (u0, v0, u1, v1), tint in (
-        ((0.08, 0.20, 0.26, 0.36), (236, 228, 206)),
-        ((0.09, 0.22, 0.25, 0.35), (38, 52, 66)),
-        ((0.60, 0.01, 0.76, 0.36), (236, 228, 206)),
-        ((0.61, 0.01, 0.75, 0.35), (122, 58, 44)),
+        ((0.145, 0.26, 0.355, 0.50), (236, 228, 206)),
+        ((0.157, 0.28, 0.343, 0.488), (38, 52, 66)),
+        ((0.658, 0.01, 0.842, 0.53), (236, 228, 206)),
+        ((0.67, 0.01, 0.83, 0.518), (122, 58, 44)),
     ):
         x, y = _texel_centres(len(colour))
         colour[((x > u0) & (x < u1) & (1 - y > v0) & (1 - y < v1))] = tint
@@ -615,11 +629,9 @@ def inside_out(asset: Asset) -> Asset:
 def with_a_fin() -> Asset:
     """A crate with a third face on one of its edges."""
     mesh = Mesh("crate_with_a_fin")
-    mesh.box((-0.4, 0.0, -0.4), (0.4, 0.6, 0.4), (0.0, 0.0, 1.0, 0.6), "planks")
+    mesh.box((-0.4, 0.0, -0.4), (0.4, 0.6, 0.4), "planks")
     mesh.points += [(0.7, 0.0, 0.7), (0.7, 0.6, 0.7)]
-    t0 = len(mesh.uvs)
-    mesh.uvs += [(0.1, 0.7), (0.3, 0.7), (0.3, 0.9), (0.1, 0.9)]
-    mesh.face([(5, t0), (8, t0 + 1), (9, t0 + 2), (7, t0 + 3)], "planks")
+    mesh.panel([5, 8, 9, 7], oblong(0.42, 0.6), "planks")
     return mesh.asset()
 
 
