@@ -9,6 +9,7 @@ from __future__ import annotations
 import argparse
 import os
 import sys
+import time
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -136,12 +137,13 @@ def _build(chosen: argparse.Namespace) -> int:
     if word is not None:
         print(word.text)
         return word.code
+    began = time.time()
     record, code = _build_once(chosen)
     if record.lasting:
         from tangentry.pipeline.terminal import told_again
 
         seal(store, asked, record.rests_on, Word("\n".join(told_again(record)), code))
-    return _watch(chosen, record, store) if chosen.watch else code
+    return _watch(chosen, record, store, began) if chosen.watch else code
 
 
 def _build_once(chosen: argparse.Namespace) -> tuple[Record, int]:
@@ -169,16 +171,18 @@ def _build_once(chosen: argparse.Namespace) -> tuple[Record, int]:
     return record, 0 if record.sound else 1
 
 
-def _watch(chosen: argparse.Namespace, record: Record, store: Path) -> int:
+def _watch(chosen: argparse.Namespace, record: Record, store: Path, began: float) -> int:
     """Build again at every save, until interrupted; a graph that is wrong for the moment is waited for."""
     from tangentry.pipeline.errors import GraphError
     from tangentry.pipeline.watch import wait_for_saves
 
+    folder = Path(chosen.graph).parent
     while True:
-        outputs = [path for one in [*record.assets, record.library] for path in one.outputs]
-        saved = wait_for_saves(record.rests_on, [store, *(Path(chosen.graph).parent / path for path in outputs)])
+        outputs = [folder / path for one in [*record.assets, record.library] for path in one.outputs]
+        saved = wait_for_saves(record.rests_on, outputs, store, began)
         named = ", ".join(os.path.relpath(path) for path in saved[:4])
         print(f"\nsaved: {named}{' ...' if len(saved) > 4 else ''}", flush=True)
+        began = time.time()
         try:
             record, _ = _build_once(chosen)
         except GraphError as error:

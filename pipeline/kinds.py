@@ -135,6 +135,14 @@ class _Home:
     package: str  # "" for a project's folder
     folder: Path
 
+    @cached_property
+    def outermost(self) -> tuple[str, Path]:
+        """The package that holds this one at the outermost, and its folder: a kind's source may lie anywhere in it."""
+        package, folder = self.package, self.folder
+        while "." in package and (folder.parent / "__init__.py").is_file():
+            package, folder = package.rpartition(".")[0], folder.parent
+        return package, folder
+
     def files(self) -> dict[str, Path]:
         """The files that hold a function of their own name."""
         found = {}
@@ -145,16 +153,20 @@ class _Home:
                 found[path.stem] = path
         return found
 
+    def source(self, path: Path) -> tuple[str, tuple[Path, ...]]:
+        """Digest of the source that a file depends on, and the files of it."""
+        package, folder = self.outermost
+        return source_digest(folder, path, package), tuple(sorted(reached(folder, path, package)))
+
     def load(self, path: Path) -> types.ModuleType:
-        """Import one file, anew where anything in its home has changed since it was last imported here."""
-        changed = source_digest(self.folder, None) != _IMPORTED.setdefault(
-            self.folder, source_digest(self.folder, None)
-        )
-        if changed:
+        """Import one file, anew where anything in its package has changed since it was last imported here."""
+        _, folder = self.outermost
+        now = source_digest(folder, None)
+        if _IMPORTED.setdefault(folder, now) != now:
             for name, module in list(sys.modules.items()):
-                if Path(getattr(module, "__file__", None) or "/").is_relative_to(self.folder):
+                if Path(getattr(module, "__file__", None) or "/").is_relative_to(folder):
                     del sys.modules[name]
-            _IMPORTED[self.folder] = source_digest(self.folder, None)
+            _IMPORTED[folder] = now
         if self.package:
             return importlib.import_module(f"{self.package}.{path.stem}")
         return _load_project_module(self.folder, path)
@@ -229,12 +241,11 @@ def _read_kind(name: str, home: _Home, path: Path) -> Kind:
         function = getattr(home.load(path), name)
     except (Exception, SystemExit) as error:  # whatever a stranger's module does on import, the graph can't use it
         raise GraphError(f"{path}: can't be imported: {type(error).__name__}: {error}") from error
-    files = tuple(sorted(reached(home.folder, path, home.package)))
-    return kind_of(function, source_digest(home.folder, path, home.package), path, files)
+    return kind_of(function, path, *home.source(path))
 
 
-def kind_of(function: Callable[..., Any], source: str = "", home: Path = Path(), files: tuple[Path, ...] = ()) -> Kind:
-    """The kind that a function is. Raises GraphError where its signature can't be a schema."""
+def kind_of(function: Callable[..., Any], home: Path = Path(), source: str = "", files: tuple[Path, ...] = ()) -> Kind:
+    """The kind that a function is, with the file it lives in and the digest of its source. Raises GraphError where its signature can't be a schema."""
     try:
         hints = typing.get_type_hints(function, include_extras=True)
     except Exception as error:  # an annotation may be any expression
