@@ -207,6 +207,9 @@ class _Build:
             raise TangentryError(event.trouble)
         if event.error:
             self.assets[event.asset].errors.append(event.error)
+            for node in self.graph.per_asset:
+                if (event.asset, node) not in self.bench.known:
+                    self.outputs.keep_claims(self.step_of((event.asset, node)))
         for name, (stat, noted, digest) in event.files.items():
             self.site.ledger.note_file(name, stat, noted, digest)
 

@@ -313,9 +313,12 @@ def _size(text: str) -> int:
 
 def _open_store(chosen: argparse.Namespace) -> Any:
     from tangentry.pipeline.errors import GraphError
+    from tangentry.pipeline.seal import store_place
     from tangentry.pipeline.store import Store
 
-    folder = Path(chosen.store) if chosen.store else Path(chosen.graph or "x").parent / ".tangentry"
+    folder, url = store_place(Path(chosen.graph or "graph"), chosen.store)
+    if url:
+        raise GraphError(f"{url}: a store behind a URL is looked after where it lies, as a folder: --store DIR")
     if not folder.is_dir():
         raise GraphError(f"{folder}: there is no store; name a graph file or --store DIR")
     return Store(folder)

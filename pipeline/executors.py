@@ -11,6 +11,7 @@ import contextlib
 import dataclasses
 import multiprocessing
 import secrets
+import threading
 import time
 from collections import deque
 from collections.abc import Callable, Iterator, Sequence
@@ -203,15 +204,12 @@ class _Tools:
     @staticmethod
     def of(orders: Orders) -> _Tools:
         """The tools for these orders, kept for the next task."""
-        if _LAST and _LAST[0][0] == orders:
+        with _ONE_AT_A_TIME:
+            if not _LAST or _LAST[0][0] != orders:
+                store = open_store(orders.store, orders.url)
+                ledger = Ledger(orders.store, read_only=True)
+                _LAST[:] = [(orders, _Tools(read_graph(orders.graph, orders.sets), store, ledger))]
             return _LAST[0][1]
-        tools = _Tools(
-            read_graph(orders.graph, orders.sets),
-            open_store(orders.store, orders.url),
-            Ledger(orders.store, read_only=True),
-        )
-        _LAST[:] = [(orders, tools)]
-        return tools
 
     def carry(self, task: Task) -> Iterator[Event | Finished]:
         """Carry out one task on a fresh bench, so that files are looked at anew."""
@@ -225,3 +223,4 @@ class _Tools:
 
 
 _LAST: list[tuple[Orders, _Tools]] = []
+_ONE_AT_A_TIME = threading.Lock()  # a cluster's worker may carry tasks out in threads

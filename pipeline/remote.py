@@ -6,6 +6,7 @@ looked up there each time.
 
 from __future__ import annotations
 
+import contextlib
 import os
 import secrets
 from pathlib import Path
@@ -58,6 +59,14 @@ class RemoteStore(Store):
             self._files.mv(unfinished, there)
         except OSError as error:
             raise StoreError(f"{self.url}: can't be written: {error}") from error
+
+    def _set_aside(self, path: Path) -> None:
+        """There, too: what is made again is sent again."""
+        super()._set_aside(path)
+        aside = f"{self._root}/aside"
+        with contextlib.suppress(OSError):
+            self._files.makedirs(aside, exist_ok=True)
+            self._files.mv(self._there(path), f"{aside}/{path.name}.{secrets.token_hex(4)}")
 
     def _there(self, path: Path) -> str:
         return f"{self._root}/{path.relative_to(self.folder).as_posix()}"
