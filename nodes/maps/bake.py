@@ -127,7 +127,7 @@ def _samples(
     if recipe.gives == "occlusion":
         return openness(detail.scene, origins, directions, hits, normals, chosen + first)[:, None], state
     if recipe.gives == "normal":
-        into_frames(chosen, triangle, weights, surface.frames, WAYS[recipe.way], normals)
+        into_frames(WAYS[recipe.way])(chosen, triangle, weights, surface.frames, normals)
     return normals, state
 
 

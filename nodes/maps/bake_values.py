@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+from functools import cache
+
 import numpy as np
 from numba import njit
 from tangentry.nodes.geometry.rays import Hits, RayScene
@@ -21,8 +24,8 @@ def normals_at(triangle: Array, weights: Array, corner_normals: Array, out: Arra
         if t < 0:
             out[i, 0], out[i, 1], out[i, 2] = 0, 0, 0
             continue
-        w1, w2 = np.float64(weights[i, 0]), np.float64(weights[i, 1])
-        w0 = 1 - w1 - w2
+        w1, w2 = weights[i, 0], weights[i, 1]
+        w0 = np.float32(1) - w1 - w2
         x = w0 * corner_normals[t, 0, 0] + w1 * corner_normals[t, 1, 0] + w2 * corner_normals[t, 2, 0]
         y = w0 * corner_normals[t, 0, 1] + w1 * corner_normals[t, 1, 1] + w2 * corner_normals[t, 2, 1]
         z = w0 * corner_normals[t, 0, 2] + w1 * corner_normals[t, 1, 2] + w2 * corner_normals[t, 2, 2]
@@ -30,22 +33,30 @@ def normals_at(triangle: Array, weights: Array, corner_normals: Array, out: Arra
         out[i, 0], out[i, 1], out[i, 2] = x * s, y * s, z * s
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
-def into_frames(chosen: Array, triangle: Array, weights: Array, frames: Array, way: int, normals: Array) -> None:
-    """Normals (n, 3) of the mesh's own space as texels of the target's frames, in place; zero stays zero.
+@cache
+def into_frames(way: int) -> Callable[[Array, Array, Array, Array, Array], None]:
+    """The kernel `into(chosen, triangle, weights, frames, normals)` for a decoder: its way is a constant to it.
+
+    It turns normals (n, 3) float32 of the mesh's own space into texels of the target's frames, in place; zero stays
+    zero.
 
     chosen              (n,) int64: flat indices of texels
     triangle, weights   of texels, flat: see Owners
     frames              (triangles, 3, 10) float32: see Surface.frames
     """
-    for i in range(len(chosen)):
-        x, y, z = np.float64(normals[i, 0]), np.float64(normals[i, 1]), np.float64(normals[i, 2])
-        if x == 0 and y == 0 and z == 0:
-            continue
-        at = chosen[i]
-        normals[i, 0], normals[i, 1], normals[i, 2] = unshade(
-            frames, triangle[at], weights[at, 0], weights[at, 1], way, x, y, z
-        )
+
+    @njit(cache=True, nogil=True, error_model="numpy")
+    def into(chosen: Array, triangle: Array, weights: Array, frames: Array, normals: Array) -> None:
+        for i in range(len(chosen)):
+            x, y, z = normals[i, 0], normals[i, 1], normals[i, 2]
+            if x == 0 and y == 0 and z == 0:
+                continue
+            at = chosen[i]
+            x, y, z = unshade(frames, triangle[at], weights[at, 0], weights[at, 1], way, x, y, z)
+            normals[i, 0], normals[i, 1], normals[i, 2] = x, y, z
+
+    kernel: Callable[[Array, Array, Array, Array, Array], None] = into
+    return kernel
 
 
 def openness(scene: RayScene, origins: Array, directions: Array, hits: Hits, normals: Array, chosen: Array) -> Array:

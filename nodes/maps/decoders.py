@@ -10,14 +10,21 @@ t, b, n come from the triangle's corners by interpolation. Decoders differ in wh
     vertex-unit    each of the three normalised
     vertex-square  n normalised; t made perpendicular to it, b to both; all normalised
     object         the texel is the normal in the mesh's own space
+
+Kernels work in the precision of the weights they are given. Where `way` is a constant to the kernel that calls them,
+its branches are gone before it runs.
 """
 
 from __future__ import annotations
+
+from typing import Any
 
 import numpy as np
 from numba import njit
 from tangentry.pipeline.flow import Array
 
+ONE: Any = np.float32(1)  # in float32, lest they widen what they are reckoned with
+NONE: Any = np.float32(0)
 PER_VERTEX, UNIT, SQUARE, OBJECT = 1, 2, 4, 8
 
 WAYS = {
@@ -35,7 +42,7 @@ WAYS = {
 def scaled(x: float, y: float, z: float) -> float:
     """One over the length of a vector; 0 for one without length."""
     square = x * x + y * y + z * z
-    return 1 / np.sqrt(square) if square > 0 else 0.0
+    return ONE / np.sqrt(square) if square > NONE else NONE
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
@@ -46,7 +53,7 @@ def _corner_mean(
 
     This alone takes an array and has no branches: then no reference to the array is counted for each texel.
     """
-    w0 = 1.0 - w1 - w2
+    w0 = np.float32(1) - w1 - w2
     return (
         w0 * frames[t, 0, 0] + w1 * frames[t, 1, 0] + w2 * frames[t, 2, 0],
         w0 * frames[t, 0, 1] + w1 * frames[t, 1, 1] + w2 * frames[t, 2, 1],
@@ -65,7 +72,7 @@ def _corner_mean(
 def frame_at(
     frames: Array, t: int, w1: float, w2: float, way: int
 ) -> tuple[float, float, float, float, float, float, float, float, float]:
-    """The frame t, b, n that a decoder has at a place in a triangle, in float64.
+    """The frame t, b, n that a decoder has at a place in a triangle.
 
     frames    (triangles, 3, 10) float32: see Surface.frames
     t         the triangle
@@ -91,7 +98,7 @@ def _built(
 ) -> tuple[float, float, float, float, float, float, float, float, float]:
     """A decoder's frame t, b, n of what was interpolated."""
     if way & OBJECT:
-        return 1.0, 0.0, 0.0, 0.0, 1.0, 0.0, 0.0, 0.0, 1.0
+        return ONE, NONE, NONE, NONE, ONE, NONE, NONE, NONE, ONE
     if way & UNIT:
         s = scaled(nx, ny, nz)
         nx, ny, nz = nx * s, ny * s, nz * s
@@ -147,12 +154,12 @@ def unshade(
     vx, vy, vz = ny * tz - nz * ty, nz * tx - nx * tz, nx * ty - ny * tx
     wx, wy, wz = ty * bz - tz * by, tz * bx - tx * bz, tx * by - ty * bx
     volume = tx * ux + ty * uy + tz * uz
-    if not abs(volume) > 1e-12:
-        return 0.0, 0.0, 1.0
+    if not abs(volume) > np.float32(1e-12):
+        return NONE, NONE, ONE
     a, b, c = x * ux + y * uy + z * uz, x * vx + y * vy + z * vz, x * wx + y * wy + z * wz
     s = scaled(a, b, c)
     if s == 0:
-        return 0.0, 0.0, 1.0
+        return NONE, NONE, ONE
     if volume < 0:
         s = -s
     return a * s, b * s, c * s

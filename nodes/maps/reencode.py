@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import replace
+from functools import cache
 from typing import NamedTuple
 
 import numpy as np
@@ -23,13 +25,18 @@ BAND = 256  # rows worked on at a time
 class Codes(NamedTuple):
     """How three channels hold a direction: component = code * scale + offset, y turned over where green points down."""
 
-    scale: float
-    offset: float
-    turn: float  # +1, or -1 where green points down
-    top: float  # the largest code; 0 where components are held as they are
+    scale: np.float32
+    offset: np.float32
+    turn: np.float32  # +1, or -1 where green points down
+    top: np.float32  # the largest code; 0 where components are held as they are
+
+    @classmethod
+    def of(cls, scale: float, offset: float, turn: float, top: float) -> Codes:
+        """In the precision that the kernel works in."""
+        return cls(np.float32(scale), np.float32(offset), np.float32(turn), np.float32(top))
 
 
-PLAIN = Codes(1.0, 0.0, 1.0, 0.0)
+PLAIN = Codes.of(1, 0, 1, 0)
 
 
 def reencode_sheet(
@@ -53,6 +60,7 @@ def reencode_sheet(
     )
     same = encoding == sheet.encoding and green == sheet.green
     ways = WAYS[made_for], WAYS[wanted_for]
+    move = _mover(*ways)
     reach = 0 if ways == (OBJECT, OBJECT) else gutter
 
     def work(band: int) -> None:
@@ -64,8 +72,8 @@ def reencode_sheet(
         written = _codes(encoding, green, out.dtype)
         target = new if written is not None else np.empty((*old.shape[:2], 3), np.float32)
         new[..., 2:] = old[..., 2 : new.shape[2]] if same else 0
-        sides = *here, made_in.frames, ways[0], *there, wanted_in.frames, ways[1]
-        _move(source, *read, *sides, target, *(written or PLAIN), same and target is new and source is old)
+        sides = *here, made_in.frames, *there, wanted_in.frames
+        move(source, *read, *sides, target, *(written or PLAIN), same and target is new and source is old)
         if target is not new:
             codes = encode_normals(target, encoding, 8 * out.itemsize, green)
             kept = ((here.triangle < 0) | (there.triangle < 0)) & same
@@ -80,10 +88,10 @@ def _codes(encoding: str, green: str, kind: DTypeLike) -> Codes | None:
     """How an encoding with three plain channels holds a direction; None for the others."""
     turn = -1.0 if green == "down" else 1.0
     if np.dtype(kind).kind == "f":
-        return Codes(1.0, 0.0, turn, 0.0)
+        return Codes.of(1, 0, turn, 0)
     top = float(np.iinfo(kind).max)
     half = top // 2
-    return {"unorm": Codes(2 / top, -1.0, turn, top), "snorm": Codes(1 / half, -(half + 1) / half, turn, top)}.get(
+    return {"unorm": Codes.of(2 / top, -1, turn, top), "snorm": Codes.of(1 / half, -(half + 1) / half, turn, top)}.get(
         encoding
     )
 
@@ -113,48 +121,54 @@ def _owners(surface: Surface, width: int, height: int, rows: tuple[int, int], re
     return Owners(found.triangle[cut], found.weights[cut])
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
-def _move(
-    source: Array,
-    scale: float,
-    offset: float,
-    turn: float,
-    _top: float,
-    made_by: Array,
-    made_at: Array,
-    made_frames: Array,
-    made_way: int,
-    wanted_by: Array,
-    wanted_at: Array,
-    wanted_frames: Array,
-    wanted_way: int,
-    target: Array,
-    out_scale: float,
-    out_offset: float,
-    out_turn: float,
-    out_top: float,
-    keep: bool,
-) -> None:
-    """Move a band of texels; `keep`: those without owners keep their codes."""
-    over = 1 / out_scale
-    for r in range(source.shape[0]):
-        for c in range(source.shape[1]):
-            a, b = made_by[r, c], wanted_by[r, c]
-            if (a < 0 or b < 0) and keep:
-                target[r, c, 0], target[r, c, 1], target[r, c, 2] = source[r, c, 0], source[r, c, 1], source[r, c, 2]
-                continue
-            x = source[r, c, 0] * scale + offset
-            y = (source[r, c, 1] * scale + offset) * turn
-            z = source[r, c, 2] * scale + offset
-            if a >= 0 and b >= 0:
-                x, y, z = shade(made_frames, a, made_at[r, c, 0], made_at[r, c, 1], made_way, x, y, z)
-                x, y, z = unshade(wanted_frames, b, wanted_at[r, c, 0], wanted_at[r, c, 1], wanted_way, x, y, z)
-            else:
-                s = scaled(x, y, z)
-                x, y, z = x * s, y * s, z * s
-            x, y, z = (x - out_offset) * over, (y * out_turn - out_offset) * over, (z - out_offset) * over
-            if out_top > 0:
-                x = min(max(np.rint(x), 0.0), out_top)
-                y = min(max(np.rint(y), 0.0), out_top)
-                z = min(max(np.rint(z), 0.0), out_top)
-            target[r, c, 0], target[r, c, 1], target[r, c, 2] = x, y, z
+@cache
+def _mover(made_way: int, wanted_way: int) -> Callable[..., None]:
+    """The kernel that moves texels from one decoder's frames to another's: their ways are constants to it."""
+
+    @njit(cache=True, nogil=True, error_model="numpy")
+    def move(
+        source: Array,
+        scale: np.float32,
+        offset: np.float32,
+        turn: np.float32,
+        _top: np.float32,
+        made_by: Array,
+        made_at: Array,
+        made_frames: Array,
+        wanted_by: Array,
+        wanted_at: Array,
+        wanted_frames: Array,
+        target: Array,
+        out_scale: np.float32,
+        out_offset: np.float32,
+        out_turn: np.float32,
+        top: np.float32,
+        keep: bool,
+    ) -> None:
+        """Move a band of texels; `keep`: those without owners keep their codes."""
+        over, shift, least = np.float32(1) / out_scale, -out_offset / out_scale, np.float32(0)
+        for r in range(source.shape[0]):
+            for c in range(source.shape[1]):
+                a, b = made_by[r, c], wanted_by[r, c]
+                if (a < 0 or b < 0) and keep:
+                    for k in range(3):
+                        target[r, c, k] = source[r, c, k]
+                    continue
+                x = np.float32(source[r, c, 0]) * scale + offset
+                y = (np.float32(source[r, c, 1]) * scale + offset) * turn
+                z = np.float32(source[r, c, 2]) * scale + offset
+                if a >= 0 and b >= 0:
+                    x, y, z = shade(made_frames, a, made_at[r, c, 0], made_at[r, c, 1], made_way, x, y, z)
+                    x, y, z = unshade(wanted_frames, b, wanted_at[r, c, 0], wanted_at[r, c, 1], wanted_way, x, y, z)
+                else:
+                    s = scaled(x, y, z)
+                    x, y, z = x * s, y * s, z * s
+                x, y, z = x * over + shift, y * out_turn * over + shift, z * over + shift
+                if top > least:
+                    x = min(max(np.rint(x), least), top)
+                    y = min(max(np.rint(y), least), top)
+                    z = min(max(np.rint(z), least), top)
+                target[r, c, 0], target[r, c, 1], target[r, c, 2] = x, y, z
+
+    kernel: Callable[..., None] = move
+    return kernel

@@ -141,8 +141,10 @@ def _between(
                 continue
             u, v, n = normals[r, c, 0], normals[r, c, 1], normals[r, c, 2]
             e, f, m = other_normals[r, c, 0], other_normals[r, c, 1], other_normals[r, c, 2]
-            x, y, z = shade(frames, s, weights[r, c, 0], weights[r, c, 1], way, u, v, n)
-            p, q, w = shade(other_frames, t, other_weights[r, c, 0], other_weights[r, c, 1], other_way, e, f, m)
+            w1, w2 = np.float64(weights[r, c, 0]), np.float64(weights[r, c, 1])
+            x, y, z = shade(frames, s, w1, w2, way, u, v, n)
+            w1, w2 = np.float64(other_weights[r, c, 0]), np.float64(other_weights[r, c, 1])
+            p, q, w = shade(other_frames, t, w1, w2, other_way, e, f, m)
             apart = np.sqrt((x - p) ** 2 + (y - q) ** 2 + (z - w) ** 2)
             total = np.sqrt((x + p) ** 2 + (y + q) ** 2 + (z + w) ** 2)
             degrees[r, c] = np.degrees(2 * np.arctan2(apart, total))  # Kahan's formula: exact near 0 and 180
