@@ -3,36 +3,27 @@
     nodes/weld.py:  def weld(asset: Asset, *, within: float = 0.0) -> Asset
                              input            setting                 output
 
-Kinds come from installed packages (entry-point group `tangentry.nodes`, this package's own among them) and from the
-folder that a graph file names in `kinds:`; all are found and treated alike. Finding a kind reads file names;
-importing one runs its code.
+Finding a kind (homes.py) reads file names; importing one runs its code.
 """
 
 from __future__ import annotations
 
 import dataclasses
-import importlib
-import importlib.machinery
-import importlib.util
 import inspect
 import json
 import re
-import sys
 import types
 import typing
 from collections.abc import Callable, Mapping, Sequence
 from functools import cached_property
-from importlib.metadata import entry_points
 from pathlib import Path
 from typing import Any
 
 from tangentry.pipeline.errors import GraphError, nearest
 from tangentry.pipeline.flow import InputFile, OutputFile
-from tangentry.pipeline.sources import reached, source_digest
-from tangentry.pipeline.values import digest_text
+from tangentry.pipeline.homes import Home, installed_homes, project_home
 
 REQUIRED: Any = inspect.Parameter.empty
-GROUP = "tangentry.nodes"
 
 
 @dataclasses.dataclass(frozen=True)
@@ -128,68 +119,13 @@ class Kind:
         return self.about.splitlines()[0] if self.about else ""
 
 
-@dataclasses.dataclass(frozen=True)
-class _Home:
-    """A place where kinds live: the files of one package or folder."""
-
-    package: str  # "" for a project's folder
-    folder: Path
-
-    @cached_property
-    def outermost(self) -> tuple[str, Path]:
-        """The package that holds this one at the outermost, and its folder: a kind's source may lie anywhere in it."""
-        package, folder = self.package, self.folder
-        while "." in package and (folder.parent / "__init__.py").is_file():
-            package, folder = package.rpartition(".")[0], folder.parent
-        return package, folder
-
-    def files(self) -> dict[str, Path]:
-        """The files that hold a function of their own name."""
-        found = {}
-        for path in sorted(self.folder.glob("*.py")):
-            if not path.stem.startswith("_") and re.search(
-                rf"^def {re.escape(path.stem)}\(", path.read_text("utf-8", errors="replace"), re.M
-            ):
-                found[path.stem] = path
-        return found
-
-    def source(self, path: Path) -> tuple[str, tuple[Path, ...]]:
-        """Digest of the source that a file depends on, and the files of it."""
-        package, folder = self.outermost
-        return source_digest(folder, path, package), tuple(sorted(reached(folder, path, package)))
-
-    def load(self, path: Path) -> types.ModuleType:
-        """Import one file, anew where anything in its package has changed since it was last imported here."""
-        _, folder = self.outermost
-        now = source_digest(folder, None)
-        if _IMPORTED.setdefault(folder, now) != now:
-            for name, module in list(sys.modules.items()):
-                if Path(getattr(module, "__file__", None) or "/").is_relative_to(folder):
-                    del sys.modules[name]
-            _IMPORTED[folder] = now
-        if self.package:
-            return importlib.import_module(f"{self.package}.{path.stem}")
-        return _load_project_module(self.folder, path)
-
-
-_IMPORTED: dict[Path, str] = {}  # home -> digest of its source when it was imported
-
-
 class Kinds:
     """Every kind at hand, by name."""
 
     def __init__(self, project: Path | None = None) -> None:
-        homes = [
-            _Home(entry.value, Path(next(iter(_package_paths(entry.value)))).resolve())
-            for entry in sorted(entry_points(group=GROUP))
-        ]
-        if project is not None:
-            if not project.is_dir():
-                raise GraphError(f"{project}: there is no such folder of node kinds")
-            homes.append(_Home("", project.resolve()))
-        self._where: dict[str, tuple[_Home, Path]] = {}
+        self._where: dict[str, tuple[Home, Path]] = {}
         self._loaded: dict[str, Kind] = {}
-        for home in homes:
+        for home in [*installed_homes(), *([] if project is None else [project_home(project)])]:
             for name, path in home.files().items():
                 if name in self._where:
                     raise GraphError(
@@ -214,31 +150,9 @@ class Kinds:
         return self._loaded[name]
 
 
-def _package_paths(package: str) -> Sequence[str]:
-    spec = importlib.util.find_spec(package)
-    if spec is None or not spec.submodule_search_locations:
-        raise GraphError(f'the entry point for "{package}" (group {GROUP}) names no package; correct or uninstall it')
-    return list(spec.submodule_search_locations)
-
-
-def _load_project_module(folder: Path, path: Path) -> types.ModuleType:
-    """A module of a project's folder, which may import its neighbours plainly (`import helper`) or as `from . import helper`."""
-    package = f"tangentry_project_{digest_text(str(folder))[:16]}"
-    if package not in sys.modules:
-        spec = importlib.machinery.ModuleSpec(package, None, is_package=True)
-        spec.submodule_search_locations = [str(folder)]
-        sys.modules[package] = importlib.util.module_from_spec(spec)
-    importlib.invalidate_caches()
-    sys.path.insert(0, str(folder))
+def _read_kind(name: str, home: Home, path: Path) -> Kind:
     try:
-        return importlib.import_module(f"{package}.{path.stem}")
-    finally:
-        sys.path.remove(str(folder))
-
-
-def _read_kind(name: str, home: _Home, path: Path) -> Kind:
-    try:
-        function = getattr(home.load(path), name)
+        function = home.load(path)
     except (Exception, SystemExit) as error:  # whatever a stranger's module does on import, the graph can't use it
         raise GraphError(f"{path}: can't be imported: {type(error).__name__}: {error}") from error
     return kind_of(function, path, *home.source(path))

@@ -12,8 +12,6 @@ from tangentry.pipeline.record import Record
 
 KINDS = {
     "text.py": '''
-import numpy as np
-
 from tangentry.pipeline.flow import Array, flow_value
 
 
@@ -25,9 +23,10 @@ class Text:
     ballast: Array  # (any,) uint8
 
 
-def note(kind: str, folder: str) -> None:
-    with open(folder, "a") as file:
-        file.write(kind + "\\n")
+def note(log: str, kind: str, *seen: object) -> None:
+    """Write down a call and all that it can tell of what it was given."""
+    with open(log, "a") as file:
+        file.write(f"{kind} {seen!r}\\n")
 ''',
     "take.py": '''
 from typing import Literal
@@ -38,29 +37,35 @@ from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import InputFile
 from text import Text, note
 
+VERSION = 1
+
 
 def take(file: InputFile | str, *, if_missing: Literal["fail", "skip"] = "fail", log: str = "calls") -> Text | None:
     """The words of a file, and those of the file beside it that its name and .side tell.
 
     if_missing  skip: leave it out
     """
-    note("take", log)
     file = InputFile.of(file)
-    if if_missing == "skip" and not file.exists:
+    words = file.bytes().tobytes().decode() if file.exists else None
+    side = file.beside(file.stem + ".side")
+    more = side.bytes().tobytes().decode() if side.exists else ""
+    note(log, "take", VERSION, str(file), words, more, if_missing)
+    if if_missing == "skip" and words is None:
         return None
     words = file.bytes().tobytes().decode()
     if words.startswith("broken"):
         raise InputError(file, "word 1", "it says broken", "write something else")
     if words.startswith("bug"):
         raise RuntimeError("a bug of the node's own")
-    side = file.beside(file.stem + ".side")
-    return Text(words + (side.bytes().tobytes().decode() if side.exists else ""), np.arange(20000, dtype=np.uint8))
+    return Text(words + more, np.arange(20000, dtype=np.uint8))
 ''',
     "loud.py": '''
 from dataclasses import replace
 
-from helper import raised
+import helper
 from text import Text, note
+
+VERSION = 1
 
 
 def loud(text: Text, other: Text | None = None, *, times: int = 1, log: str = "calls") -> Text:
@@ -68,21 +73,39 @@ def loud(text: Text, other: Text | None = None, *, times: int = 1, log: str = "c
 
     times  how often they are said, at least 1
     """
-    note("loud", log)
+    from deep import mark  # only now, as heavy things are imported
+
     more = "" if other is None else other.words
-    return replace(text, words=raised(text.words + more) * times)
+    note(log, "loud", VERSION, helper.VERSION, mark.VERSION, text.words, more, times)
+    return replace(text, words=mark.marked(helper.raised(text.words + more) * times))
 ''',
-    "helper.py": "def raised(words: str) -> str:\n    return words.upper()\n",
+    "helper.py": '''
+VERSION = 1
+
+
+def raised(words: str) -> str:
+    return words.upper()
+''',
+    "deep/__init__.py": "",
+    "deep/mark.py": '''
+VERSION = 1
+
+
+def marked(words: str) -> str:
+    return words
+''',
     "judge.py": '''
 import numpy as np
 
 from tangentry.pipeline.flow import Finding, Findings
 from text import Text, note
 
+VERSION = 1
+
 
 def judge(text: Text, *, log: str = "calls") -> Findings:
     """Rude words, if there are any."""
-    note("judge", log)
+    note(log, "judge", VERSION, text.words)
     empty = np.zeros(0, np.int32)
     rude = Finding("rude", "fault", 1, "a rude word", "be polite", "", "", "", empty, empty.astype(np.float32), None)
     return Findings("", (rude,) if "RUDE" in text.words else (), {"words": len(text.words.split())})
@@ -93,10 +116,13 @@ import numpy as np
 from tangentry.pipeline.flow import Files, Findings, OutFile, OutputFile
 from text import Text, note
 
+VERSION = 1
+
 
 def put(text: Text, unless_faulty: Findings | None = None, *, file: OutputFile | str, log: str = "calls") -> Files | None:
     """The words as a file."""
-    note("put", log)
+    judged = None if unless_faulty is None else (unless_faulty.faulty, unless_faulty.facts)
+    note(log, "put", VERSION, text.words, judged, file)
     if unless_faulty is not None and unless_faulty.faulty:
         return None
     return Files((OutFile(file, np.frombuffer(text.words.encode(), np.uint8)),))
@@ -107,10 +133,12 @@ import numpy as np
 from tangentry.pipeline.flow import Files, OutFile, OutputFile
 from text import Text, note
 
+VERSION = 1
+
 
 def join(texts: dict[str, Text], *, file: OutputFile | str, log: str = "calls") -> Files:
     """All words, in name order."""
-    note("join", log)
+    note(log, "join", VERSION, [(name, text.words) for name, text in texts.items()], file)
     said = "".join(f"{name}: {text.words}" for name, text in texts.items())
     return Files((OutFile(file, np.frombuffer(said.encode(), np.uint8)),))
 ''',
@@ -167,11 +195,22 @@ class Project:
 
     @property
     def calls(self) -> list[str]:
-        """The node calls of the last build, sorted."""
-        return sorted(self.log.read_text().split())
+        """The kinds that were called in the last build, sorted."""
+        return sorted(call.split(" ", 1)[0] for call in self.seen)
+
+    @property
+    def seen(self) -> list[str]:
+        """The node calls of the last build, each with all that it could see: arguments, file contents, source."""
+        return self.log.read_text().splitlines()
 
 
 @pytest.fixture
 def project(tmp_path: Path) -> Project:
     """A project with three assets and five nodes."""
     return Project(tmp_path)
+
+
+@pytest.fixture(scope="session")
+def make_project() -> type[Project]:
+    """Makes a project in a folder."""
+    return Project

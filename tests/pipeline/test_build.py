@@ -2,12 +2,7 @@
 
 from __future__ import annotations
 
-import random
-import shutil
-from pathlib import Path
 from typing import Any
-
-import pytest
 
 EVERY = sorted(["take", "loud", "judge", "put"] * 3 + ["join"])
 
@@ -176,58 +171,3 @@ def test_reasons_are_data(project):
         "after": 5,
         "text": "setting times changed 2 -> 5",
     }
-
-
-def edit(project: Any, rng: random.Random, fresh: str) -> set[str] | None:
-    """Change one thing of a project, anything; gives the assets it may concern, None for all."""
-    props = project.folder / "props"
-    if not (props / "a.txt").exists():
-        project.write("props/a.txt", f"hello {fresh}\n")
-        return {"props/a.txt"}
-    stem = rng.choice(sorted(path.stem for path in props.glob("*.txt")))
-    what = rng.choice(
-        ["prop", "side", "side gone", "setting", "source", "helper", "added", "renamed", "removed", "wiring"]
-    )
-    if what in ("prop", "side"):
-        project.write(f"props/{stem}.{'txt' if what == 'prop' else 'side'}", f"words {fresh}\n")
-    elif what == "side gone":
-        (props / f"{stem}.side").unlink(missing_ok=True)
-    elif what == "added":
-        stem = f"d{fresh}"
-        project.write(f"props/{stem}.txt", "new\n")
-    elif what == "renamed":
-        (props / f"{stem}.txt").rename(props / f"r{fresh}.txt")
-        stem = f"r{fresh}"
-    elif what == "removed":
-        (props / f"{stem}.txt").unlink()
-        return set()
-    else:
-        path, old, new = {
-            "setting": ("graph.yaml", "times: 2", "times: 3"),
-            "source": ("kinds/loud.py", "* times", f"* times + '{fresh}'"),
-            "helper": ("kinds/helper.py", "words.upper()", f"words.upper() + '{fresh}'"),
-            "wiring": ("graph.yaml", "{node: put, text: said", "{node: put, text: raw"),
-        }[what]
-        project.write(path, project.read(path).replace(old, new))
-        return None
-    return {f"props/{stem}.txt"}
-
-
-@pytest.mark.parametrize("seed", range(8))
-def test_after_any_edits_a_build_equals_one_from_scratch_and_repeats_nothing(project, tmp_path_factory, seed):
-    rng = random.Random(seed)
-    project.build()
-    for turn in range(6):
-        concerned = edit(project, rng, f"{seed}{turn}")
-        record = project.build(tidy=True)
-        assert len(project.calls) == record.count("ran")
-        assert concerned is None or {name for name, state in states(record).items() if state == "made"} <= concerned
-    assert project.build().count("ran") == 0
-    outputs = {path.name: path.read_text() for path in (project.folder / "made").iterdir()}
-    left_out = shutil.ignore_patterns("made", ".tangentry")
-    fresh = Path(shutil.copytree(project.folder, tmp_path_factory.mktemp("fresh") / "p", ignore=left_out))
-    project.graph = fresh / "graph.yaml"
-
-    project.build()
-
-    assert {path.name: path.read_text() for path in (fresh / "made").iterdir()} == outputs
