@@ -14,7 +14,8 @@ from pathlib import Path
 from typing import Any
 
 import hypothesis.strategies as st
-from hypothesis import given, note, settings
+import pytest
+from hypothesis import example, given, note, settings
 
 SOURCES = {"take": "take", "loud": "loud", "judge": "judge", "put": "put", "join": "join", "helper": "helper", "mark": "deep/mark"}
 WIRINGS = [
@@ -82,8 +83,49 @@ def told(record: Any) -> list[Any]:
     return [(one.name, one.errors, one.findings, one.outputs) for one in [*record.assets, record.library]]
 
 
+EACH = {"loud": 3, "judge": 3, "put": 3, "join": 1}
+ONE_ASSET = {"take": 1, "loud": 1, "judge": 1, "put": 1, "join": 1}
+AFFECTED = [
+    (("file", "b", "good day"), ONE_ASSET),
+    (("file", "b", "hello b"), {}),  # saved as it was
+    (("touched", "b"), {}),
+    (("comment", 1), {}),
+    (("side file", "a", "and more"), ONE_ASSET),
+    (("file", "d", "one more"), ONE_ASSET),
+    (("removed", "c"), {"join": 1}),
+    (("renamed", "a", "d"), {"take": 1, "put": 1, "join": 1}),  # the words are known already, under another name
+    (("setting", "times: 3"), EACH),
+    (("option", 3), EACH),
+    (("source", "take", 2), {"take": 3}),  # gives the same values: no further
+    (("source", "helper", 2), {"loud": 3}),
+    (("source", "mark", 2), {"loud": 3}),
+    (("source", "judge", 2), {"judge": 3}),
+    (("source", "put", 2), {"put": 3}),
+    (("source", "join", 2), {"join": 1}),
+    (("wiring", 0, True), {"put": 3}),
+    (("wiring", 1, True), {"judge": 3, "put": 3}),
+    (("wiring", 2, True), {"join": 1}),
+    (("wiring", 3, True), EACH),
+    (("wiring", 4, True), {"put": 3}),
+]
+
+
+@pytest.mark.parametrize(("change", "affected"), AFFECTED, ids=lambda one: " ".join(map(str, one)))
+def test_an_edit_makes_exactly_these_nodes_run_again(project, change, affected):
+    project.build()
+
+    edit(project, *change)
+    project.build()
+    assert Counter(project.calls) == affected
+
+    project.build()
+    assert project.calls == []
+
+
 @settings(max_examples=25, deadline=None, derandomize=True)
 @given(edits=st.lists(EDITS, min_size=1, max_size=5))
+@example(edits=[("file", "a", "rude words"), ("renamed", "a", "d"), ("side file", "d", "and more"), ("renamed", "d", "b")])
+@example(edits=[("source", "mark", 3), ("wiring", 3, True), ("source", "mark", 1), ("wiring", 3, False)])
 def test_after_any_edit_exactly_what_is_affected_runs_again(make_project, edits):
     with tempfile.TemporaryDirectory() as folder, tempfile.TemporaryDirectory() as scratch:
         project = make_project(Path(folder))
