@@ -15,8 +15,8 @@ from pathlib import Path
 from typing import Any, NamedTuple
 
 import numpy as np
+from tangentry.pipeline.arrays import digest_array
 from tangentry.pipeline.store import StoreError
-from tangentry.pipeline.values import digest_array
 
 SETTLED_NS = 2_000_000_000  # a file that changed this shortly before its digest was taken may change again unseen
 TABLES = """

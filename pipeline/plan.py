@@ -118,9 +118,15 @@ def lay_out(graph: Graph, members: Sequence[Member]) -> nx.DiGraph[StepId]:
         for path in step.makes.values():
             one = os.path.normpath(path)
             if one in made:
-                problems.append(f"{path} would be made twice: by {made[one]} and by {where}; put {{stem}} or {{below}} into its name")
+                problems.append(
+                    f"{path} would be made twice: by {made[one]} and by {where}; put {{stem}} or {{below}} into its name"
+                )
             made[one] = where
-    problems += [f"{path} would be made by {made[path]}, over what is read by {read[path]}; name another file" for path in made if path in read]
+    problems += [
+        f"{path} would be made by {made[path]}, over what is read by {read[path]}; name another file"
+        for path in made
+        if path in read
+    ]
     if problems:
         raise GraphError(*(f"{graph.path}: {problem}" for problem in problems))
     return dag

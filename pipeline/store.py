@@ -1,8 +1,9 @@
 """The content-addressed store: what was made once is found again by the digest of what it was made from.
 
-    arrays/5f/5f1c....npy     an array, named by its content; read by memory map, never with pickle
+    arrays/5f/5f1c....npy     an array, named by its content; read by memory map
     values/a0/a07e....json    a value's manifest, named by its content
-    results/3c/3c99....json   what a node made, named by its key: one result per set of side files it read
+    results/3c/3c99....json   what a node made, named by its key: one result per set of side files it read;
+                              the digest of the rest stands in its first line
     aside/                    objects that turned out damaged
     turns, running/           locks of builds under way (see sharing.py)
     ledger.sqlite             what this machine remembers (see ledger.py)
@@ -24,20 +25,14 @@ from collections.abc import Callable, Iterable, Iterator
 from pathlib import Path
 from typing import Any
 
-import numpy as np
+from tangentry.pipeline.arrays import ArrayDigests, digest_array, map_array, write_array
 from tangentry.pipeline.errors import TangentryError
 from tangentry.pipeline.flow import Array
 from tangentry.pipeline.sharing import Running, Turns
-from tangentry.pipeline.values import (
-    ArrayDigests,
-    arrays_of,
-    digest_array,
-    digest_text,
-    from_manifest,
-    to_manifest,
-)
+from tangentry.pipeline.values import arrays_of, digest_text, from_manifest, to_manifest
 from tangentry.pipeline.writing import WriteError, sweep, write_whole
 
+UNREADABLE = (OSError, ValueError, TypeError)  # what spoilt objects give rise to
 USED_WITHIN = 3600.0  # seconds: trim leaves alone what a build may be using
 
 
@@ -100,13 +95,7 @@ class Store:
 
     def _keep_array(self, array: Array) -> str:
         digest = self.digest(array)
-        written = self._write(
-            self._place("arrays", digest),
-            lambda file: np.lib.format.write_array(
-                file, np.ascontiguousarray(array).reshape(array.shape), allow_pickle=False
-            ),
-        )
-        self.written += written
+        self.written += self._write(self._place("arrays", digest), lambda file: write_array(file, array))
         return digest
 
     def fetch_array(self, digest: str) -> Array:
@@ -114,12 +103,12 @@ class Store:
         path = self._place("arrays", digest)
         self._bring(path)
         try:
-            array = _map(path)
+            array = map_array(path)
             if digest not in self._checked:
                 if digest_array(array) != digest:
                     raise ValueError("content does not match its name")
                 self._checked.add(digest)
-        except (OSError, ValueError, EOFError, SyntaxError) as error:
+        except UNREADABLE as error:
             self._set_aside(path)
             raise Damaged(f"{path}: {error}") from error
         self.digest.remember(array, digest)
@@ -132,11 +121,10 @@ class Store:
         path = self._place("results", key)
         self._bring(path)
         try:
-            kept = json.loads(path.read_bytes())
-            return [Result(**one) for one in kept]
+            return [Result(**one) for one in json.loads(_signed(path))]
         except FileNotFoundError:
             return []
-        except (OSError, ValueError, KeyError, TypeError):
+        except UNREADABLE:
             self._set_aside(path)
             return []
 
@@ -145,7 +133,7 @@ class Store:
         path = self._place("results", key)
         others = [one for one in self.results(key) if one.reads != result.reads]
         text = json.dumps([dataclasses.asdict(one) for one in [result, *others]], separators=(",", ":"))
-        self._write(path, lambda file: file.write(text.encode()), replace=True)
+        self._write(path, lambda file: file.write(f"{digest_text(text)}\n{text}".encode()), replace=True)
 
     # Care
 
@@ -251,28 +239,25 @@ class Store:
         """After an object was written: a store that others share hands it on."""
 
 
-def _map(path: Path) -> Array:
-    """An array by memory map, read-only. The map is taken off its file object, so plain views of it stay plain arrays."""
-    try:
-        mapped = np.load(path, mmap_mode="r", allow_pickle=False)
-    except ValueError:
-        mapped = np.load(path, allow_pickle=False)  # an empty array can't be mapped
-        mapped.setflags(write=False)
-    array: Array = np.asarray(mapped).view(np.ndarray)
-    return array
+def _signed(path: Path) -> str:
+    """The rest of a file whose first line is its digest. Raises ValueError where it is not."""
+    digest, _, text = path.read_text("utf-8").partition("\n")
+    if digest_text(text) != digest:
+        raise ValueError("content does not match its digest")
+    return text
 
 
 SOUND: dict[str, Callable[[Path], bool]] = {
-    "arrays": lambda path: digest_array(_map(path)) == path.stem,
+    "arrays": lambda path: digest_array(map_array(path)) == path.stem,
     "values": lambda path: digest_text(path.read_text("utf-8")) == path.stem,
-    "results": lambda path: bool(json.loads(path.read_bytes())),
+    "results": lambda path: bool(_signed(path)),
 }  # by room: does an object's content match its name?
 
 
 def _holds(sound: Callable[[Path], bool], path: Path) -> bool:
     try:
         return sound(path)
-    except (OSError, ValueError, EOFError, SyntaxError):
+    except UNREADABLE:
         return False
 
 

@@ -14,7 +14,6 @@ import json
 import math
 import types
 import typing
-import weakref
 from collections.abc import Callable, Mapping
 from functools import cache
 from typing import Any
@@ -25,8 +24,6 @@ from tangentry.pipeline.flow import Array
 
 Plain = None | bool | int | float | str | list[Any] | dict[str, Any]
 
-REMEMBERED_FROM = 4096  # bytes: smaller arrays are hashed faster than looked up
-
 
 def canonical(data: Plain) -> str:
     """The one JSON text of plain data: keys sorted, no spaces."""
@@ -36,39 +33,6 @@ def canonical(data: Plain) -> str:
 def digest_text(text: str) -> str:
     """Digest of a text, 64 hexadecimal digits."""
     return blake3(text.encode()).hexdigest()
-
-
-class ArrayDigests:
-    """Digests of arrays, remembered for read-only arrays while they live; `hashed` counts those really computed."""
-
-    def __init__(self) -> None:
-        self.hashed = 0
-        self._known: dict[int, tuple[weakref.ref[Array], str]] = {}
-
-    def __call__(self, array: Array) -> str:
-        """Digest of an array's type, shape and bytes. Raises TypeError for arrays of Python objects."""
-        remembered = self._known.get(id(array))
-        if remembered is not None and remembered[0]() is array:
-            return remembered[1]
-        self.hashed += 1
-        digest = digest_array(array)
-        self.remember(array, digest)
-        return digest
-
-    def remember(self, array: Array, digest: str) -> None:
-        """Note the digest of an array that was just read or written under it."""
-        if not array.flags.writeable:
-            name = id(array)
-            self._known[name] = (weakref.ref(array, lambda _: self._known.pop(name, None)), digest)
-
-
-def digest_array(array: Array) -> str:
-    """Digest of an array's type, shape and bytes. Raises TypeError for arrays of Python objects."""
-    if array.dtype.hasobject:
-        raise TypeError("an array of Python objects can't flow along an edge")
-    head = f"{array.dtype.str}{array.shape}".encode()
-    body = np.ascontiguousarray(array).reshape(-1).view(np.uint8)
-    return blake3(head).update(body.data if body.size else b"").hexdigest()
 
 
 def to_manifest(value: object, keep: Callable[[Array], str]) -> str:

@@ -79,21 +79,21 @@ def loud(text: Text, other: Text | None = None, *, times: int = 1, log: str = "c
     note(log, "loud", VERSION, helper.VERSION, mark.VERSION, text.words, more, times)
     return replace(text, words=mark.marked(helper.raised(text.words + more) * times))
 ''',
-    "helper.py": '''
+    "helper.py": """
 VERSION = 1
 
 
 def raised(words: str) -> str:
     return words.upper()
-''',
+""",
     "deep/__init__.py": "",
-    "deep/mark.py": '''
+    "deep/mark.py": """
 VERSION = 1
 
 
 def marked(words: str) -> str:
     return words
-''',
+""",
     "judge.py": '''
 import numpy as np
 

@@ -17,7 +17,15 @@ import hypothesis.strategies as st
 import pytest
 from hypothesis import example, given, note, settings
 
-SOURCES = {"take": "take", "loud": "loud", "judge": "judge", "put": "put", "join": "join", "helper": "helper", "mark": "deep/mark"}
+SOURCES = {
+    "take": "take",
+    "loud": "loud",
+    "judge": "judge",
+    "put": "put",
+    "join": "join",
+    "helper": "helper",
+    "mark": "deep/mark",
+}
 WIRINGS = [
     ("text: said, unless_faulty: verdict", "text: raw, unless_faulty: verdict"),
     ("{node: judge, text: said", "{node: judge, text: raw"),
@@ -124,7 +132,9 @@ def test_an_edit_makes_exactly_these_nodes_run_again(project, change, affected):
 
 @settings(max_examples=25, deadline=None, derandomize=True)
 @given(edits=st.lists(EDITS, min_size=1, max_size=5))
-@example(edits=[("file", "a", "rude words"), ("renamed", "a", "d"), ("side file", "d", "and more"), ("renamed", "d", "b")])
+@example(
+    edits=[("file", "a", "rude words"), ("renamed", "a", "d"), ("side file", "d", "and more"), ("renamed", "d", "b")]
+)
 @example(edits=[("source", "mark", 3), ("wiring", 3, True), ("source", "mark", 1), ("wiring", 3, False)])
 def test_after_any_edit_exactly_what_is_affected_runs_again(make_project, edits):
     with tempfile.TemporaryDirectory() as folder, tempfile.TemporaryDirectory() as scratch:
@@ -142,7 +152,9 @@ def test_after_any_edit_exactly_what_is_affected_runs_again(make_project, edits)
             needed = set(project.seen)
             versions = source_versions(project)
             assert all(call.split(" ", 1)[1].startswith(f"({versions[call.split()[0]]},") for call in needed)
-            faulted = {call for call in needed if "'bug" in call and call.startswith("take")}  # is tried again each time
+            faulted = {
+                call for call in needed if "'bug" in call and call.startswith("take")
+            }  # is tried again each time
             assert calls == Counter(needed - (called - faulted))
             assert told(record) == told(from_scratch)
             assert outputs == {path.name: path.read_text() for path in (project.folder / "made").iterdir()}

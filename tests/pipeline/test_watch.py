@@ -33,7 +33,9 @@ def test_a_burst_of_saves_counts_as_one(project):
     stop, thread = saves(project, names)
     try:
         folder = project.folder / "props"
-        saved = wait_for_saves([folder, *(project.folder / name for name in names)], [], project.folder / "s", time.time())
+        saved = wait_for_saves(
+            [folder, *(project.folder / name for name in names)], [], project.folder / "s", time.time()
+        )
     finally:
         stop.set()
         thread.join()
