@@ -26,7 +26,7 @@ from tangentry.pipeline.library import Member
 from tangentry.pipeline.plan import Parts, StepId, asset_steps, relative_digest
 from tangentry.pipeline.remote import open_store
 from tangentry.pipeline.store import Store
-from tangentry.pipeline.work import Bench, Event, Started
+from tangentry.pipeline.work import Bench, Done, Event, Started
 
 GRACE = 0.5  # seconds for a worker to tidy up
 DEATHS_IN_A_ROW = 3  # of workers that had not begun a step: then something is wrong with all of them
@@ -84,6 +84,7 @@ class _Worker:
     pipe: Connection
     task: Task | None = None
     running: StepId | None = None
+    settled: set[StepId] = dataclasses.field(default_factory=set)  # of the task; a successor settles them again
 
 
 class Workers:
@@ -138,9 +139,14 @@ class Workers:
         self._died = 0
         for event in events:
             if isinstance(event, Finished):
+                worker.settled = set()
                 self._give(worker, waiting.popleft() if waiting else None)
             else:
                 worker.running = event.id if isinstance(event, Started) else None
+            if isinstance(event, Done):
+                if event.id in worker.settled:
+                    continue
+                worker.settled.add(event.id)
             yield event
 
     def _replace(self, worker: _Worker) -> None:
