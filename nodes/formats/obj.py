@@ -16,9 +16,9 @@ from tangentry.pipeline.flow import Array, InputFile, OutFile
 def read_obj(file: InputFile) -> Asset:
     """The asset in an OBJ file: one part for each object and material, in the order they appear; v grows upward.
 
-    Polygons stay polygons, groups (`g`) divide nothing. Faces without UVs in a part that has some get (0, 0), faces without
-    normals their own; both are noted, as are material libraries and images that are not there. Raises InputError naming
-    the line of whatever can't be used.
+    Polygons stay polygons, groups (`g`) divide nothing. Faces without UVs in a part that has some get (0, 0), faces
+    without normals their own; both are noted, as are material libraries and images that are not there. Raises
+    InputError naming the line of whatever can't be used.
     """
     found = read_statements(file)
     if len(found.starts) < 2:

@@ -1,12 +1,16 @@
-"""OBJ's material libraries: names, and the images they map (MTL, as described in the Advanced Visualizer manual, appendix B1)."""
+"""OBJ's material libraries: names, and the images they map (MTL; Advanced Visualizer manual, appendix B1)."""
 
 from __future__ import annotations
 
+import math
 import ntpath
 
 import numpy as np
 from tangentry.nodes.formats.gltf_reading import sniff
+from tangentry.nodes.formats.image_headers import read_header
+from tangentry.nodes.formats.scan import as_words, shown
 from tangentry.nodes.model import Image, MapUse, Material
+from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import InputFile
 
 ROLES = {
@@ -22,7 +26,9 @@ ROLES = {
     "map_bump": "height",
     "disp": "height",
     "norm": "normal",
-}  # norm, map_pr and map_pm: common practice, no source
+    "map_kn": "normal",
+}  # norm, map_kn, map_pr and map_pm: common practice, no source
+STATED = {".png", ".jpg", ".jpeg", ".webp", ".tif", ".tiff"}  # suffixes of what is held against its header
 OPTION_WORDS = {
     "-blendu": 1,
     "-blendv": 1,
@@ -55,16 +61,16 @@ class Materials:
         """Read a library beside the file; one that is not there is noted."""
         beside = self._file.beside(_beside(name))
         if not beside.exists:
-            self.notes.append(f"material library {name} is not there")
+            self.notes.append(f"material library {shown(name)} is not there")
             return
         material, maps = "", {}  # type: str, dict[str, tuple[MapUse, ...]]
-        for line in beside.bytes().tobytes().decode("utf-8", "replace").splitlines():
+        for line in as_words(beside.bytes().tobytes()).splitlines():
             keyword, _, rest = line.strip().replace("\t", " ").partition(" ")
             if keyword.lower() == "newmtl":
                 material = rest.strip()
                 maps.setdefault(material, ())
             elif keyword.lower() in ROLES and material and rest.strip():
-                use = self._use(ROLES[keyword.lower()], rest.strip(), beside)
+                use = self._use(ROLES[keyword.lower()], rest.strip(), beside, material)
                 if use is not None:
                     maps[material] = (*maps.get(material, ()), use)
         self._maps = {**maps, **self._maps}
@@ -77,19 +83,28 @@ class Materials:
         """The materials that were used."""
         return tuple(Material(name, self._maps.get(name, ())) for name in self._rows)
 
-    def _use(self, role: str, words: str, library: InputFile) -> MapUse | None:
+    def _use(self, role: str, words: str, library: InputFile, material: str) -> MapUse | None:
         name, strength = _image_name(words)
         if not name:
             return None
         if name not in self._image_rows:
-            beside = library.beside(_beside(name))
-            there = beside.exists
-            if not there:
-                self.notes.append(f"image {name} is not there")
-            content = beside.bytes() if there else np.zeros(0, np.uint8)
             self._image_rows[name] = len(self.images)
-            self.images.append(Image(beside.name, sniff(content), content))
+            self.images.append(self._image(library.beside(_beside(name)), name, material))
         return MapUse(role, self._image_rows[name], strength=strength)
+
+    def _image(self, beside: InputFile, name: str, material: str) -> Image:
+        """The image as it is found; raises InputError for one that is no image, though its suffix says so."""
+        if not beside.exists:
+            self.notes.append(f"image {shown(name)} is not there")
+            return Image(beside.name, "", np.zeros(0, np.uint8))
+        content = beside.bytes()
+        if beside.suffix in STATED:
+            try:
+                read_header(content, beside.path)
+            except InputError as error:
+                place = f'material "{shown(material)}", image {shown(name)}'
+                raise InputError(self._file, place, error.found, error.advice) from None
+        return Image(beside.name, sniff(content), content)
 
 
 def _image_name(words: str) -> tuple[str, float]:
@@ -97,27 +112,22 @@ def _image_name(words: str) -> tuple[str, float]:
     parts = words.split()
     at, strength = 0, 1.0
     while at < len(parts) and parts[at].lower() in OPTION_WORDS:
-        count = OPTION_WORDS[parts[at].lower()]
-        if parts[at].lower() == "-bm" and at + 1 < len(parts):
-            try:
-                strength = float(parts[at + 1])
-            except ValueError:
-                strength = 1.0
-        taken = 0
-        while taken < count and at + 1 + taken < len(parts) and (count == 1 or _is_number(parts[at + 1 + taken])):
-            taken += 1
-        at += 1 + taken
-    if at >= len(parts):
-        return "", strength
-    return words[words.index(parts[at]) :] if at == 0 else words.split(maxsplit=at)[at], strength
+        option = parts[at].lower()
+        at += 1
+        for taken in range(OPTION_WORDS[option]):  # -o, -s and -t take one to three numbers
+            if at >= len(parts) or (OPTION_WORDS[option] > 1 and not _is_number(parts[at])):
+                break
+            if option == "-bm" and taken == 0 and _is_number(parts[at]):
+                strength = float(parts[at])
+            at += 1
+    return (words.split(maxsplit=at)[at] if at < len(parts) else ""), strength
 
 
 def _is_number(word: str) -> bool:
     try:
-        float(word)
+        return math.isfinite(float(word))
     except ValueError:
         return False
-    return True
 
 
 def _beside(name: str) -> str:

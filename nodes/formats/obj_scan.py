@@ -6,7 +6,7 @@ from typing import NamedTuple
 
 import numpy as np
 from numba import njit
-from tangentry.nodes.formats.scan import as_text, read_integer, read_number, skip_line, skip_space, skip_word
+from tangentry.nodes.formats.scan import as_text, as_words, read_integer, read_number, skip_line, skip_space, skip_word
 from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array, InputFile
 
@@ -50,13 +50,9 @@ def _line(text: Array, at: int) -> int:
 
 
 def _words(text: Array, at: int) -> tuple[str, str]:
-    line = (
-        text[at : skip_line(text, at)].tobytes().decode("utf-8", "replace").replace("\\\r\n", " ").replace("\\\n", " ")
-    )
-    keyword, _, rest = line.strip().partition(" ")
-    if "\t" in keyword:
-        keyword, _, rest = line.strip().partition("\t")
-    return keyword, rest.strip()
+    line = as_words(text[at : skip_line(text, at)].tobytes()).replace("\\\r\n", " ").replace("\\\n", " ")
+    keyword, *rest = line.split(None, 1)
+    return keyword, rest[0].strip() if rest else ""
 
 
 def _check(file: InputFile, text: Array, points: Array, index: Array, counts: tuple[int, int, int]) -> None:

@@ -16,13 +16,29 @@ MOST = 10**17  # a mantissa below this takes one digit more within int64
 
 
 def as_text(content: Array) -> Array:
-    """The same bytes, ending with a newline; lines that end with a lone carriage return get newlines."""
+    """The same bytes, ending with a newline; lone carriage returns become newlines, and a mark of UTF-8 goes."""
+    if content[:3].tobytes() == b"\xef\xbb\xbf":
+        content = content[3:]
     if len(content) and not (content == NEWLINE).any():
         content = np.where(content == 13, np.uint8(NEWLINE), content)
     if not len(content) or content[-1] != NEWLINE:
         content = np.append(content, np.uint8(NEWLINE))
     content.setflags(write=False)
     return content
+
+
+def as_words(text: bytes) -> str:
+    """Text in UTF-8, or, where it is not, in Latin-1, which takes any byte."""
+    try:
+        return text.decode("utf-8-sig")
+    except UnicodeDecodeError:
+        return text.decode("latin-1")
+
+
+def shown(name: str) -> str:
+    """A name as messages show it: in one line, and not without end."""
+    plain = "".join(one if one.isprintable() else "?" for one in name)
+    return plain if len(plain) <= 80 else plain[:77] + "..."
 
 
 @njit(cache=True, nogil=True)
