@@ -67,8 +67,8 @@ class Home:
         _, folder = self._outermost
         now = source_digest(folder, None)
         if _IMPORTED.setdefault(folder, now) != now:
-            for name, _ in list(_modules_below(folder)):
-                del sys.modules[name]
+            for name in [self.package, *(name for name, _ in _modules_below(folder))]:
+                sys.modules.pop(name, None)
             _PUT_AWAY.pop(folder, None)
             _IMPORTED[folder] = now
         if not self._is_project:
