@@ -7,8 +7,9 @@ from __future__ import annotations
 
 from typing import Any
 
-from tangentry.pipeline.drafts import FORMAT
+from tangentry.pipeline.drafts import FORMAT, MOST_NODES
 from tangentry.pipeline.kinds import REQUIRED, Kind, Kinds, Setting
+from tangentry.pipeline.yaml import LONGEST
 
 DIALECT = "https://json-schema.org/draft/2020-12/schema"
 FILLED_IN = {"type": "string", "pattern": r"\{[A-Za-z_]\w*\}"}
@@ -21,6 +22,7 @@ def graph_schema(kinds: Kinds) -> dict[str, Any]:
     found = [kinds.get(name) for name in kinds.names]
     section = {
         "type": ["object", "null"],
+        "maxProperties": MOST_NODES,
         "propertyNames": {"pattern": NAME},
         "additionalProperties": {"$ref": "#/$defs/node"},
     }
@@ -30,10 +32,11 @@ def graph_schema(kinds: Kinds) -> dict[str, Any]:
         "title": "Tangentry graph file",
         "type": "object",
         "required": ["tangentry"],
+        "anyOf": [{"required": ["per_asset"]}, {"required": ["whole_library"]}],
         "additionalProperties": False,
         "properties": {
             "tangentry": {"const": FORMAT, "description": "version of this format"},
-            "about": {"type": ["string", "null"], "description": "what the graph is for"},
+            "about": {"type": ["string", "null"], "maxLength": LONGEST, "description": "what the graph is for"},
             "library": {
                 "description": "every file that matches is one asset",
                 "anyOf": [

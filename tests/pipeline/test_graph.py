@@ -2,12 +2,20 @@
 
 from __future__ import annotations
 
+from pathlib import Path
+
+import jsonschema
 import pytest
+import yaml
 from tangentry.pipeline.errors import GraphError
 from tangentry.pipeline.graph import option_from_text, read_graph
+from tangentry.pipeline.kinds import Kinds
 from tangentry.pipeline.library import find_members, unfold
 from tangentry.pipeline.plan import all_steps, lay_out
+from tangentry.pipeline.schema import graph_schema
 from tangentry.pipeline.yaml import read_yaml, scalar
+
+SHIPPED = sorted((Path(__file__).parents[2] / "graphs").glob("**/*.yaml"))
 
 HEAD = "tangentry: 1\nkinds: kinds\nlibrary: props/*.txt\n"
 RAW = "per_asset:\n  raw: {node: take, file: '{file}'}\n"
@@ -65,6 +73,38 @@ def test_a_wrong_graph_is_refused_in_one_clear_line(project, case):
     matching = [line for line in caught.value.problems if told in line]
     assert matching, caught.value.problems
     assert matching[0].startswith(str(project.graph)) and len(matching[0]) < 1000 and "\n" not in matching[0]
+
+
+BEYOND_A_SCHEMA = {
+    # what only following references, folders and placeholders can tell
+    "a missing reference", "a wrong flow type", "an unknown output", "a cycle", "an unfilled placeholder",
+    "an asset's field without a library", "an asset's field for the whole library", "many for one", "one for many",
+    "a kinds folder that is not there", "outputs in an outermost graph",
+    # what no parser hands on to a schema
+    "a duplicate key", "an alias", "a tag", "broken YAML", "a huge key", "deep nesting",
+}  # fmt: skip
+
+
+@pytest.mark.parametrize("case", sorted(set(REFUSED) - BEYOND_A_SCHEMA))
+def test_the_schema_rejects_what_reading_refuses(project, case):
+    project.write("bad.yaml", REFUSED[case][0])
+    schema = graph_schema(Kinds(project.folder / "kinds"))
+
+    assert not jsonschema.Draft202012Validator(schema).is_valid(yaml.safe_load(project.read("bad.yaml")))
+
+
+@pytest.mark.parametrize("path", SHIPPED, ids=lambda path: path.name)
+def test_the_schema_takes_every_shipped_graph(path):
+    schema = graph_schema(Kinds())
+
+    jsonschema.Draft202012Validator.check_schema(schema)
+    jsonschema.Draft202012Validator(schema).validate(read_yaml(path.read_bytes(), str(path)).plain())
+
+
+def test_the_schema_takes_the_test_project_too(project):
+    schema = graph_schema(Kinds(project.folder / "kinds"))
+
+    jsonschema.Draft202012Validator(schema).validate(read_yaml(project.graph.read_bytes(), "graph.yaml").plain())
 
 
 def test_all_errors_of_a_file_are_told_at_once(project):
