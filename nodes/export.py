@@ -31,11 +31,12 @@ def export(
     if suffix in (".glb", ".gltf"):
         from tangentry.nodes.formats.gltf import write_gltf
 
-        return Files(write_gltf(asset, map, path.name.removesuffix(path.suffix), suffix == ".glb"))
+        return Files(write_gltf(asset, map, path.name))
     if suffix == ".obj":
-        from tangentry.nodes.formats.obj import write_obj
+        from tangentry.nodes.formats.obj_writing import write_obj
+        from tangentry.nodes.formats.side_images import with_maps
 
-        return Files(write_obj(asset, path.stem))
+        return Files(write_obj(with_maps(asset, map, path.stem), path.stem))
     if suffix == ".ply":
         from tangentry.nodes.formats.ply import write_ply as write_one
     else:

@@ -647,7 +647,7 @@ def write(folder: str, asset: Asset, suffix: str, stem: str = "") -> None:
     """One prop in one format, its textures beside it or, in a GLB, inside."""
     stem = stem or asset.name
     if suffix == ".glb":
-        save(f"{folder}/{stem}.glb", write_gltf(asset, None, stem, True)[0].content)
+        save(f"{folder}/{stem}.glb", write_gltf(asset, None, f"{stem}.glb")[0].content)
         return
     for image in asset.images:
         save(f"{folder}/{image.name}", image.content)

@@ -42,7 +42,7 @@ class View:
             return None
         if use.image not in self._greens:
             image = self.asset.images[use.image]
-            texels = read_image(image.content, image.name)
+            texels = read_image(image.content, f"{self.asset.name}: {image.name}")
             self._greens[use.image] = measure_green(texels) if texels.shape[2] >= 3 else Green("undecided", 0.0)
         return self._greens[use.image]
 
@@ -55,7 +55,7 @@ class View:
         wanted = material.tangent_space_map
         uses = [wanted] if wanted is not None else [use for use in material.maps if use.uv == self.uv_set]
         headers = [
-            read_header(image.content, image.name)
+            read_header(image.content, f"{self.asset.name}: {image.name}")
             for image in (self.asset.images[use.image] for use in uses)
             if is_image(image.content)
         ]

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 from typing import Any
+from urllib.parse import quote
 
 import numpy as np
 from tangentry.nodes.formats.gltf_accessors import WIDTHS
@@ -91,14 +92,8 @@ class Builder:
         accessors[replaces] = kept | entry
         return replaces
 
-    def use(self, extension: str) -> None:
-        """Note an extension as used."""
-        used = self.list("extensionsUsed")
-        if extension not in used:
-            used.append(extension)  # type: ignore[arg-type]
-
-    def files(self, stem: str, binary: bool) -> tuple[OutFile, ...]:
-        """The document as one .glb, or as .gltf with its buffer beside it as `stem.bin`."""
+    def files(self, name: str, buffer: str) -> tuple[OutFile, ...]:
+        """The document as a file of that name: GLB, or, where `buffer` names a file, JSON with its buffer in that."""
         self._drop_unused_views()
         packed, offsets, at = [], [], 0
         for content in self._views:
@@ -112,14 +107,14 @@ class Builder:
             if offset:
                 view["byteOffset"] = offset
         body = np.concatenate(packed) if packed else np.zeros(0, np.uint8)
-        self._only_buffer(len(body), "" if binary else f"{stem}.bin")
+        self._only_buffer(len(body), quote(buffer))
         for empty in [name for name, value in self.document.items() if value == [] and name != "scenes"]:
             del self.document[empty]
         text = json.dumps(self.document, ensure_ascii=False, separators=(",", ":")).encode()
-        if binary:
-            return (OutFile(f"{stem}.glb", _glb(text, body)),)
-        files = [OutFile(f"{stem}.gltf", np.frombuffer(text, np.uint8))]
-        return (*files, OutFile(f"{stem}.bin", body)) if len(body) else tuple(files)
+        if not buffer:
+            return (OutFile(name, _glb(text, body)),)
+        files = [OutFile(name, np.frombuffer(text, np.uint8))]
+        return (*files, OutFile(buffer, body)) if len(body) else tuple(files)
 
     def _only_buffer(self, size: int, uri: str) -> None:
         """One buffer in place of all; what the first one carried besides its data stays."""
@@ -133,20 +128,14 @@ class Builder:
             self.document["buffers"] = [{**kept, "byteLength": size, **({"uri": uri} if uri else {})}]
 
     def _drop_unused_views(self) -> None:
-        """Leave out the views that nothing names; every mention of a view in glTF and its extensions is called bufferView."""
+        """Leave out the views that nothing names; whatever names a view in glTF and its extensions says bufferView."""
         mentions: list[dict[str, Any]] = []
-
-        def visit(data: Any) -> None:
-            if isinstance(data, dict):
-                if isinstance(data.get("bufferView"), int):
-                    mentions.append(data)
-                for value in data.values():
-                    visit(value)
-            elif isinstance(data, list):
-                for value in data:
-                    visit(value)
-
-        visit({name: value for name, value in self.document.items() if name != "bufferViews"})
+        waiting: list[Any] = [value for name, value in self.document.items() if name != "bufferViews"]
+        while waiting:
+            data = waiting.pop()
+            if isinstance(data, dict) and type(data.get("bufferView")) is int and data["bufferView"] < len(self._views):
+                mentions.append(data)
+            waiting += data.values() if isinstance(data, dict) else data if isinstance(data, list) else ()
         used = sorted({mention["bufferView"] for mention in mentions})
         renumbered = {old: new for new, old in enumerate(used)}
         for mention in mentions:
@@ -167,7 +156,7 @@ def _glb(text: bytes, body: Array) -> Array:
     return np.concatenate([np.array([0x46546C67, 2, size], "<u4").view(np.uint8), *chunks])
 
 
-def bounds(values: Array) -> dict[str, list[float]]:
+def bounds(values: Array) -> dict[str, Any]:
     """`min` and `max` of vertex data, as POSITION needs them."""
     return {"min": values.min(axis=0).tolist(), "max": values.max(axis=0).tolist()}
 

@@ -1,15 +1,17 @@
-"""The outer shape of glTF 2.0 files: JSON or GLB, with the buffers and images they name (specification, chapters 3.6 and 4)."""
+"""glTF 2.0 files from outside: JSON or GLB, with the buffers and images they name (specification, 3.6 and 4)."""
 
 from __future__ import annotations
 
 import base64
 import binascii
 import json
+import math
 import re
 from typing import Any
 from urllib.parse import unquote, unquote_to_bytes
 
 import numpy as np
+from tangentry.nodes.formats.gltf_shape import check_shape
 from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array, InputFile
 
@@ -20,27 +22,18 @@ EXPORT_AGAIN = "export the file again"
 
 
 def read_container(file: InputFile) -> tuple[dict[str, Any], list[Array]]:
-    """A file's JSON and its buffers, each (size,) uint8. Raises InputError naming the chunk, buffer or place that is wrong."""
+    """A file's JSON, its shape checked, and its buffers, each (size,) uint8. Raises InputError naming what is wrong."""
     content = file.bytes()
     if len(content) >= 4 and content[:4].tobytes() == b"glTF":
         text, binary = _glb(file, content)
     else:
         text, binary = content, None
     document = _json(file, text)
-    version = document.get("asset", {}).get("version") if isinstance(document.get("asset"), dict) else None
-    if not isinstance(version, str) or version.split(".")[0] != "2":
+    check_shape(file, document)
+    version = document.get("asset", {}).get("version", "")
+    if version.split(".")[0] != "2":
         raise InputError(file, "asset.version", f"{version!r}, but glTF 2.x is read", "convert the file to glTF 2.0")
-    return document, [
-        _buffer(file, number, one, binary) for number, one in enumerate(entries(file, document, "buffers"))
-    ]
-
-
-def entries(file: InputFile, document: dict[str, Any], name: str) -> list[dict[str, Any]]:
-    """One of the document's top-level lists, its members checked to be objects; empty where there is none."""
-    found = document.get(name, [])
-    if not isinstance(found, list) or not all(isinstance(one, dict) for one in found):
-        raise InputError(file, name, "not a list of objects", EXPORT_AGAIN)
-    return found
+    return document, [_buffer(file, number, one, binary) for number, one in enumerate(document.get("buffers", []))]
 
 
 def _glb(file: InputFile, content: Array) -> tuple[Array, Array | None]:
@@ -72,13 +65,15 @@ def _json(file: InputFile, text: Array) -> dict[str, Any]:
     if not len(text):
         raise InputError(file, "", "the file is empty", EXPORT_AGAIN)
     try:
-        document = json.loads(text.tobytes().decode("utf-8-sig"))
+        document = json.loads(text.tobytes().decode("utf-8-sig"), parse_float=_finite, parse_constant=_finite)
     except UnicodeDecodeError as error:
         raise InputError(file, f"byte {error.start}", "not UTF-8: this is no glTF file", EXPORT_AGAIN) from None
     except json.JSONDecodeError as error:
         raise InputError(
             file, f"line {error.lineno}, column {error.colno}", f"not JSON: {error.msg}", EXPORT_AGAIN
         ) from None
+    except ValueError as error:  # a number that is none, or longer than Python takes
+        raise InputError(file, "", f"not JSON: {error}", EXPORT_AGAIN) from None
     except RecursionError:
         raise InputError(file, "", "JSON nested too deeply", EXPORT_AGAIN) from None
     if not isinstance(document, dict):
@@ -86,9 +81,16 @@ def _json(file: InputFile, text: Array) -> dict[str, Any]:
     return document
 
 
+def _finite(text: str) -> float:
+    number = float(text)
+    if not math.isfinite(number):
+        raise ValueError(f"the number {text[:40]} is not finite")
+    return number
+
+
 def _buffer(file: InputFile, number: int, buffer: dict[str, Any], binary: Array | None) -> Array:
     place, size = f"buffer {number}", buffer.get("byteLength")
-    if not isinstance(size, int) or size < 0:
+    if size is None:
         raise InputError(file, place, f"byteLength is {size!r}", EXPORT_AGAIN)
     if "uri" in buffer:
         content, _ = resolve(file, place, buffer["uri"])
@@ -103,10 +105,8 @@ def _buffer(file: InputFile, number: int, buffer: dict[str, Any], binary: Array 
     return content[:size]
 
 
-def resolve(file: InputFile, place: str, uri: object) -> tuple[Array, str]:
-    """What a uri names, (size,) uint8, and its media type where the uri states one. Raises InputError where it can't be had."""
-    if not isinstance(uri, str):
-        raise InputError(file, place, f"uri is {uri!r}", EXPORT_AGAIN)
+def resolve(file: InputFile, place: str, uri: str) -> tuple[Array, str]:
+    """What a uri names, (size,) uint8, and its media type if the uri states one. Raises InputError if it is gone."""
     data = DATA_URI.match(uri)
     if data:
         body = uri[data.end() :]

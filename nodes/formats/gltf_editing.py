@@ -1,9 +1,10 @@
-"""An asset's own glTF document, edited: TANGENT where frames were solved, vertices split where they must be, nothing else."""
+"""An asset's own glTF document, edited: TANGENT where frames were solved, vertices split where they must be."""
 
 from __future__ import annotations
 
 import json
 from collections import Counter
+from collections.abc import Iterator
 from typing import Any
 
 import numpy as np
@@ -22,12 +23,13 @@ def edited_document(asset: Asset) -> Builder:
     assert asset.document is not None
     document = json.loads(asset.document.text)
     accessors = Accessors(InputFile(asset.name), document, list(asset.document.buffers))
-    builder = Builder(document, [accessors.view(number) for number in range(len(accessors.views))])
+    builder = Builder(document, [accessors.view(number, "") for number in range(len(accessors.views))])
     builder.images = list(asset.images)
     editing = _Editing(builder, accessors)
     for part in asset.parts:
         m, p = part.place
         editing.primitive(part, document["meshes"][m]["primitives"][p])
+    editing.empty_unused()
     return builder
 
 
@@ -55,6 +57,13 @@ class _Editing:
         else:
             self._split(part, primitive, new, label, first)
 
+    def empty_unused(self) -> None:
+        """Take the data of accessors that nothing uses any more; their numbers stay, lest others change."""
+        for number, uses in self.uses.items():
+            if uses == 0:
+                for name in ("bufferView", "byteOffset", "sparse"):
+                    self.builder.list("accessors")[number].pop(name, None)
+
     def _changed(self, part: Part, attributes: dict[str, int]) -> dict[str, Stream]:
         """The attributes whose values at some corner are no longer those of the document, as streams."""
         assert part.source is not None
@@ -75,7 +84,7 @@ class _Editing:
         return new
 
     def _whole(self, primitive: dict[str, Any], name: str, values: tuple[Array, Array], vertices: int) -> None:
-        """Put an attribute of an unsplit primitive: shared with the primitives that share the rest, where their values agree."""
+        """Put an attribute of an unsplit primitive: shared with those that share the rest, where their values agree."""
         attributes = primitive["attributes"]
         rows, filled = values
         key = (hash(name), *sorted(number for other, number in attributes.items() if other != name))
@@ -85,6 +94,8 @@ class _Editing:
             if np.array_equal(others[both], rows[both]):
                 others[filled] = rows[filled]
                 theirs |= filled
+                if attributes.get(name, number) != number:
+                    self.uses[attributes[name]] -= 1
                 attributes[name] = self.builder.accessor(others, number, **_extras(name, others))
                 return
         attributes[name] = self._put(attributes.get(name), rows, name)
@@ -176,19 +187,18 @@ def _source_order(source: Array) -> Array:
     return np.lexsort((source, is_copy))
 
 
-def _mentions(document: dict[str, Any]) -> list[int]:
+def _mentions(document: dict[str, Any]) -> Iterator[int]:
     """Every mention of an accessor by the specification's own objects."""
-    found: list[int] = []
     for mesh in document.get("meshes", ()):
-        for primitive in mesh["primitives"]:
-            found += [*primitive["attributes"].values(), *([primitive["indices"]] if "indices" in primitive else [])]
+        for primitive in mesh.get("primitives", ()):
+            yield from primitive.get("attributes", {}).values()
+            yield from (primitive[name] for name in ("indices",) if name in primitive)
             for target in primitive.get("targets", ()):
-                found += target.values()
+                yield from target.values()
     for animation in document.get("animations", ()):
         for sampler in animation.get("samplers", ()):
-            found += [sampler.get("input", -1), sampler.get("output", -1)]
-    found += [skin["inverseBindMatrices"] for skin in document.get("skins", ()) if "inverseBindMatrices" in skin]
+            yield from (sampler[name] for name in ("input", "output") if name in sampler)
+    for skin in document.get("skins", ()):
+        yield from (skin[name] for name in ("inverseBindMatrices",) if name in skin)
     for node in document.get("nodes", ()):
-        instancing = node.get("extensions", {}).get("EXT_mesh_gpu_instancing", {})
-        found += instancing.get("attributes", {}).values()
-    return [number for number in found if isinstance(number, int)]
+        yield from node.get("extensions", {}).get("EXT_mesh_gpu_instancing", {}).get("attributes", {}).values()

@@ -62,7 +62,7 @@ def _unit_or_up(normals: Array) -> Array:
 
 
 def _materials(builder: Builder, asset: Asset) -> None:
-    """Materials with the colour, normal and emissive maps that glTF can show; all images go along, so rows correspond."""
+    """Materials with the colour, normal and emissive maps that glTF can show; all images go along: rows correspond."""
     used: dict[int, int] = {}
     for material in asset.materials:
         entry: dict[str, Any] = {"name": material.name, "pbrMetallicRoughness": {"metallicFactor": 0.0}}

@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 import json
-import math
 from typing import Any
 
 import numpy as np
 from tangentry.nodes.formats.gltf_accessors import Accessors
-from tangentry.nodes.formats.gltf_container import DATA_URI, EXPORT_AGAIN, entries, read_container, resolve, side_file
+from tangentry.nodes.formats.gltf_container import DATA_URI, EXPORT_AGAIN, read_container, resolve, side_file
+from tangentry.nodes.formats.gltf_shape import check_texture
 from tangentry.nodes.model import Asset, Document, Frames, Image, MapUse, Material, Morph, Part, Stream
 from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array, InputFile
@@ -20,6 +20,9 @@ PACKED = {
     "EXT_meshopt_compression": "meshopt",
     "KHR_meshopt_compression": "meshopt",
 }
+UNDERSTOOD = frozenset(
+    {"KHR_mesh_quantization", "KHR_texture_transform", "KHR_materials_variants", "EXT_mesh_gpu_instancing"}
+)
 CORE_MAPS = {"normalTexture": "normal", "occlusionTexture": "occlusion", "emissiveTexture": "emissive"}
 METALLIC_MAPS = {"baseColorTexture": "colour", "metallicRoughnessTexture": "metallic roughness"}
 IMAGE_EXTENSIONS = ("KHR_texture_basisu", "EXT_texture_webp", "EXT_texture_avif", "MSFT_texture_dds")
@@ -30,31 +33,29 @@ def read_gltf(file: InputFile) -> Asset:
 
     Each primitive of triangles, strips or fans is one part, `place` its mesh and primitive, its streams sharing one
     index array; v grows downward. Raises InputError, naming accessor, mesh and primitive, for whatever is wrong, and by
-    name for compressed meshes, which are not read.
+    name for extensions that hold vertex data in a form that is not read.
     """
     document, buffers = read_container(file)
-    for name, what in PACKED.items():
-        if name in document.get("extensionsRequired", []) or name in document.get("extensionsUsed", []):
-            raise InputError(file, name, f"{what}-compressed meshes are not read", "export without mesh compression")
+    _refuse_packed(file, document)
     accessors = Accessors(file, document, buffers)
-    images = tuple(_image(file, number, one, accessors) for number, one in enumerate(entries(file, document, "images")))
+    for number in range(len(accessors.views)):
+        accessors.view(number, f"bufferView {number}")
+    images = tuple(_image(file, number, one, accessors) for number, one in enumerate(document.get("images", [])))
     materials = tuple(
-        _material(file, number, one, document) for number, one in enumerate(entries(file, document, "materials"))
+        _material(file, number, one, document) for number, one in enumerate(document.get("materials", []))
     )
     parts: list[Part] = []
-    notes: list[str] = []
-    for m, mesh in enumerate(entries(file, document, "meshes")):
-        primitives = mesh.get("primitives", [])
-        if not isinstance(primitives, list) or not all(isinstance(one, dict) for one in primitives):
-            raise InputError(file, f"mesh {m}", "its primitives are not a list of objects", EXPORT_AGAIN)
-        for p, primitive in enumerate(primitives):
+    required = [name for name in document.get("extensionsRequired", []) if name not in UNDERSTOOD]
+    notes = [f"the extension {name}, which the file requires, is carried through as it is" for name in required]
+    for m, mesh in enumerate(document.get("meshes", [])):
+        for p, primitive in enumerate(mesh.get("primitives", [])):
             mode = primitive.get("mode", TRIANGLES)
             if mode in (TRIANGLES, STRIP, FAN):
                 parts.append(
-                    _Primitive(file, accessors, primitive, m, p, materials).part(str(mesh.get("name", f"mesh {m}")))
+                    _Primitive(file, accessors, primitive, m, p, materials).part(mesh.get("name", f"mesh {m}"))
                 )
             else:
-                notes.append(f"mesh {m} primitive {p}: {MODES.get(mode, f'mode {mode!r}')} carried through as they are")
+                notes.append(f"mesh {m} primitive {p}: {MODES.get(mode, f'mode {mode}')} carried through as they are")
     if not parts:
         raise InputError(file, "", "there are no triangles in it", "export the mesh with its faces")
     return Asset(
@@ -68,22 +69,34 @@ def read_gltf(file: InputFile) -> Asset:
     )
 
 
+def _refuse_packed(file: InputFile, document: dict[str, Any]) -> None:
+    """Raise InputError for extensions by which vertex data is held in a form of its own."""
+    named = {*document.get("extensionsRequired", []), *document.get("extensionsUsed", [])}
+    primitives = [one for mesh in document.get("meshes", []) for one in mesh.get("primitives", [])]
+    holders = [*primitives, *document.get("accessors", []), *document.get("bufferViews", [])]
+    held = {name for one in holders for name in one.get("extensions", {})} - UNDERSTOOD
+    for name in sorted(named):
+        if name in PACKED:
+            raise InputError(
+                file, name, f"{PACKED[name]}-compressed meshes are not read", "export without mesh compression"
+            )
+        if name in held and name in document.get("extensionsRequired", []):
+            raise InputError(file, name, "the file requires it for its vertex data, and it is not read", EXPORT_AGAIN)
+
+
 # Materials and images
 
 
 def _image(file: InputFile, number: int, image: dict[str, Any], accessors: Accessors) -> Image:
-    place, mime = f"image {number}", str(image.get("mimeType", ""))
+    place, mime = f"image {number}", image.get("mimeType", "")
     if "bufferView" in image:
-        view = image["bufferView"]
-        if not isinstance(view, int) or not 0 <= view < len(accessors.views):
-            raise InputError(file, place, f"bufferView {view!r} does not exist", EXPORT_AGAIN)
-        content, name = accessors.view(view), str(image.get("name") or f"image_{number}")
-    elif isinstance(image.get("uri"), str) and not DATA_URI.match(image["uri"]):
+        content, name = accessors.view(image["bufferView"], place), image.get("name") or f"image_{number}"
+    elif "uri" in image and not DATA_URI.match(image["uri"]):
         beside = side_file(file, place, image["uri"])
         content, name = (beside.bytes() if beside.exists else np.zeros(0, np.uint8)), beside.name
     elif "uri" in image:
         content, stated = resolve(file, place, image["uri"])
-        mime, name = mime or stated, str(image.get("name") or f"image_{number}")
+        mime, name = mime or stated, image.get("name") or f"image_{number}"
     else:
         content, name = np.zeros(0, np.uint8), f"image_{number}"
     return Image(name, mime or sniff(content), content)
@@ -98,6 +111,10 @@ def sniff(content: Array) -> str:
         return "image/jpeg"
     if head.startswith(b"\xabKTX 20\xbb"):
         return "image/ktx2"
+    if head.startswith(b"DDS "):
+        return "image/vnd-ms.dds"
+    if head[4:] == b"ftypavif":
+        return "image/avif"
     return "image/webp" if head[:4] == b"RIFF" and head[8:] == b"WEBP" else ""
 
 
@@ -105,16 +122,13 @@ def _material(file: InputFile, number: int, material: dict[str, Any], document: 
     place = f"material {number}"
     uses = [_use(file, f"{place}, {key}", material.get(key), role, document) for key, role in CORE_MAPS.items()]
     metallic = material.get("pbrMetallicRoughness", {})
-    if isinstance(metallic, dict):
-        uses += [
-            _use(file, f"{place}, {key}", metallic.get(key), role, document) for key, role in METALLIC_MAPS.items()
-        ]
-    extensions = material.get("extensions", {})
-    for name, extension in extensions.items() if isinstance(extensions, dict) else ():
-        for key, info in extension.items() if isinstance(extension, dict) else ():
-            if isinstance(info, dict) and isinstance(info.get("index"), int):
+    uses += [_use(file, f"{place}, {key}", metallic.get(key), role, document) for key, role in METALLIC_MAPS.items()]
+    for name, extension in material.get("extensions", {}).items():
+        for key, info in extension.items():
+            if isinstance(info, dict) and type(info.get("index")) is int:
+                check_texture(file, f"materials[{number}].extensions.{name}.{key}", info)
                 uses.append(_use(file, f"{place}, {name}.{key}", info, _extension_role(name, key), document))
-    return Material(str(material.get("name", f"material {number}")), tuple(use for use in uses if use is not None))
+    return Material(material.get("name", f"material {number}"), tuple(use for use in uses if use is not None))
 
 
 def _extension_role(name: str, key: str) -> str:
@@ -125,42 +139,34 @@ def _extension_role(name: str, key: str) -> str:
     return f"{name.split('_')[-1]} {key.removesuffix('Texture')}"
 
 
-def _use(file: InputFile, place: str, info: Any, role: str, document: dict[str, Any]) -> MapUse | None:
-    if not isinstance(info, dict):
+def _use(
+    file: InputFile, place: str, info: dict[str, Any] | None, role: str, document: dict[str, Any]
+) -> MapUse | None:
+    if info is None:
         return None
-    textures = entries(file, document, "textures")
-    index = info.get("index")
-    if not isinstance(index, int) or not 0 <= index < len(textures):
-        raise InputError(file, place, f"texture {index!r} does not exist (there are {len(textures)})", EXPORT_AGAIN)
+    textures = document.get("textures", [])
+    index = info.get("index", len(textures))
+    if not index < len(textures):
+        raise InputError(file, place, f"texture {index} does not exist (there are {len(textures)})", EXPORT_AGAIN)
     source = _texture_image(textures[index])
-    if source is None or not 0 <= source < len(document.get("images", [])):
+    if source is None or not source < len(document.get("images", [])):
         return None
-    moved = (
-        info.get("extensions", {}).get("KHR_texture_transform", {})
-        if isinstance(info.get("extensions", {}), dict)
-        else {}
-    )
-    uv = moved.get("texCoord", info.get("texCoord", 0))
+    moved = info.get("extensions", {}).get("KHR_texture_transform", {})
     offset, scale = moved.get("offset", [0, 0]), moved.get("scale", [1, 1])
-    strength = info.get("scale", info.get("strength", 1.0))
-    try:
-        numbers = [float(value) for value in (*offset, moved.get("rotation", 0), *scale, strength)]
-        if len(numbers) != 6 or not all(math.isfinite(value) for value in numbers) or not isinstance(uv, int) or uv < 0:
-            raise ValueError
-    except (TypeError, ValueError):
-        raise InputError(
-            file, place, "its texCoord, transform or scale is not made of proper numbers", EXPORT_AGAIN
-        ) from None
-    return MapUse(role, source, uv, tuple(numbers[:5]), numbers[5])
+    if len(offset) != 2 or len(scale) != 2:
+        raise InputError(file, place, "the offset or scale of its transform has not two numbers", EXPORT_AGAIN)
+    transform = tuple(float(value) for value in (*offset, moved.get("rotation", 0), *scale))
+    strength = float(info.get("scale", info.get("strength", 1.0)))
+    return MapUse(role, source, moved.get("texCoord", info.get("texCoord", 0)), transform, strength)
 
 
 def _texture_image(texture: dict[str, Any]) -> int | None:
     extensions = texture.get("extensions", {})
-    for name in IMAGE_EXTENSIONS if isinstance(extensions, dict) else ():
-        if isinstance(extensions.get(name), dict) and isinstance(extensions[name].get("source"), int):
+    for name in IMAGE_EXTENSIONS:
+        if "source" in extensions.get(name, {}):
             return int(extensions[name]["source"])
-    source = texture.get("source")
-    return source if isinstance(source, int) else None
+    source: int | None = texture.get("source")
+    return source
 
 
 # Primitives
@@ -180,10 +186,9 @@ class _Primitive:
     ) -> None:
         self.file, self.accessors, self.primitive, self.at = file, accessors, primitive, (m, p)
         self.place, self.materials = f"mesh {m} primitive {p}", materials
-        attributes = primitive.get("attributes")
-        if not isinstance(attributes, dict) or "POSITION" not in attributes:
+        self.attributes: dict[str, int] = primitive.get("attributes", {})
+        if "POSITION" not in self.attributes:
             raise InputError(file, self.place, "it has no POSITION attribute", EXPORT_AGAIN)
-        self.attributes: dict[str, Any] = attributes
 
     def part(self, name: str) -> Part:
         points = self._attribute("POSITION", (3,))
@@ -219,8 +224,8 @@ class _Primitive:
         if name not in self.attributes:
             return None
         place = f"{self.place}, {name}"
-        values = self.accessors.values(self.attributes[name], place) if isinstance(self.attributes[name], int) else None
-        if values is None or values.shape[1] not in widths:
+        values = self.accessors.values(self.attributes[name], place)
+        if values.shape[1] not in widths:
             raise InputError(
                 self.file, place, "its accessor is not of the type that this attribute needs", EXPORT_AGAIN
             )
@@ -229,13 +234,13 @@ class _Primitive:
         return values
 
     def _sets(self, stem: str, widths: tuple[int, ...]) -> list[Array]:
-        found = []
+        found: list[Array] = []
         while (values := self._attribute(f"{stem}_{len(found)}", widths)) is not None:
             found.append(values)
         return found
 
     def _corners(self) -> Array:
-        """(3 triangles,) int32: the vertex of every corner; strips and fans cut into triangles (specification, 3.7.2.1)."""
+        """(3 triangles,) int32: the vertex of every corner; strips and fans as triangles (specification, 3.7.2.1)."""
         if "indices" in self.primitive:
             raw = self.accessors.raw(self.primitive["indices"], f"{self.place}, indices")
             if raw.shape[1] != 1 or raw.dtype.kind != "u":
@@ -274,11 +279,11 @@ class _Primitive:
 
     def _material(self) -> int:
         material = self.primitive.get("material", -1)
-        if material != -1 and (not isinstance(material, int) or not 0 <= material < len(self.materials)):
+        if material >= len(self.materials):
             raise InputError(
                 self.file,
                 self.place,
-                f"material {material!r} does not exist (there are {len(self.materials)})",
+                f"material {material} does not exist (there are {len(self.materials)})",
                 EXPORT_AGAIN,
             )
         return int(material)
@@ -296,18 +301,16 @@ class _Primitive:
 
     def _morphs(self) -> tuple[Morph, ...]:
         targets = self.primitive.get("targets", [])
-        if not isinstance(targets, list) or not all(isinstance(one, dict) for one in targets):
-            raise InputError(self.file, self.place, "its morph targets are not a list of objects", EXPORT_AGAIN)
         return tuple(
             Morph(*(self._displacement(t, target, name) for name in ("POSITION", "NORMAL", "TANGENT")))
             for t, target in enumerate(targets)
         )
 
-    def _displacement(self, t: int, target: dict[str, Any], name: str) -> Array | None:
+    def _displacement(self, t: int, target: dict[str, int], name: str) -> Array | None:
         if name not in target:
             return None
         place = f"{self.place}, morph target {t}, {name}"
-        values = self.accessors.values(target[name], place) if isinstance(target[name], int) else None
-        if values is None or values.shape != (self.count, 3):
+        values = self.accessors.values(target[name], place)
+        if values.shape != (self.count, 3):
             raise InputError(self.file, place, f"it does not hold {self.count} vectors", EXPORT_AGAIN)
         return values

@@ -4,8 +4,9 @@ from __future__ import annotations
 
 import re
 from pathlib import PurePosixPath
+from typing import Any
+from urllib.parse import quote
 
-import numpy as np
 from tangentry.nodes.formats.gltf_builder import Builder
 from tangentry.nodes.formats.gltf_editing import edited_document
 from tangentry.nodes.formats.gltf_making import new_document
@@ -13,13 +14,21 @@ from tangentry.nodes.formats.images import write_png
 from tangentry.nodes.maps.encodings import as_gltf_texels
 from tangentry.nodes.model import Asset, Map
 from tangentry.pipeline.errors import InputError
-from tangentry.pipeline.flow import OutFile
+from tangentry.pipeline.flow import Array, OutFile
 
-SUFFIXES = {"image/png": ".png", "image/jpeg": ".jpg", "image/webp": ".webp", "image/ktx2": ".ktx2"}
+SUFFIXES = {
+    "image/png": ".png",
+    "image/jpeg": ".jpg",
+    "image/webp": ".webp",
+    "image/ktx2": ".ktx2",
+    "image/avif": ".avif",
+    "image/vnd-ms.dds": ".dds",
+}
+UNKNOWN = "application/octet-stream"
 
 
-def write_gltf(asset: Asset, maps: Map | None, stem: str, binary: bool) -> tuple[OutFile, ...]:
-    """The files of an asset: one .glb, or .gltf with `stem.bin` and its images beside it.
+def write_gltf(asset: Asset, maps: Map | None, name: str) -> tuple[OutFile, ...]:
+    """The files of an asset: one .glb, or .gltf with its buffer, `stem.bin`, and its images beside it.
 
     maps   normal maps to put into the materials; a sheet's material "" serves all
 
@@ -27,51 +36,47 @@ def write_gltf(asset: Asset, maps: Map | None, stem: str, binary: bool) -> tuple
     were solved become TANGENT; vertices are split where corners of one vertex came to differ, and nowhere else.
     """
     builder = edited_document(asset) if asset.document is not None else new_document(asset)
-    files = _place_images(builder, stem, binary)
+    stem, _, suffix = name.rpartition(".")
+    binary = suffix.lower() == "glb"
+    taken = {name.lower(), f"{stem}.bin".lower()}
+    files = _place_images(builder, taken, binary)
     if maps is not None:
-        files += _place_maps(builder, maps, stem, binary, asset)
-    return (*builder.files(stem, binary), *files)
+        files += _place_maps(builder, maps, stem, binary, asset, taken)
+    return (*builder.files(name, "" if binary else f"{stem}.bin"), *files)
 
 
-def _place_images(builder: Builder, stem: str, binary: bool) -> list[OutFile]:
+def _place_images(builder: Builder, taken: set[str], binary: bool) -> list[OutFile]:
     """Images into the file, or beside it; an image that was not found stays the reference it was."""
     files: list[OutFile] = []
-    taken = {f"{stem}.gltf", f"{stem}.bin"}
     for number, (entry, image) in enumerate(zip(builder.document.get("images", ()), builder.images, strict=True)):
         if not len(image.content):
             continue
         if binary:
             if "bufferView" not in entry:
                 entry.pop("uri", None)
-                entry |= {"bufferView": builder.view(image.content), "mimeType": image.mime or "image/png"}
+                entry |= {"bufferView": builder.view(image.content), "mimeType": image.mime or UNKNOWN}
             continue
         name = _file_name(image.name, SUFFIXES.get(image.mime, ""), number, taken)
         entry.pop("bufferView", None)
-        entry["uri"] = _as_uri(name)
+        entry["uri"] = quote(name)
         entry.pop("mimeType", None)
         files.append(OutFile(name, image.content))
     return files
 
 
 def _file_name(name: str, suffix: str, number: int, taken: set[str]) -> str:
-    """A plain file name for an image, unlike those taken."""
+    """A plain file name for an image, unlike those taken, which are in lower case as some disks see them."""
     plain = re.sub(r"[^\w.\- ]", "_", PurePosixPath(name.replace("\\", "/")).name) or f"image_{number}"
     if suffix and not plain.lower().endswith((suffix, ".jpeg")):
         plain += suffix
-    if plain in taken:
+    while plain.lower() in taken:
         plain = f"{number}_{plain}"
-    taken.add(plain)
+    taken.add(plain.lower())
     return plain
 
 
-def _as_uri(name: str) -> str:
-    from urllib.parse import quote
-
-    return quote(name)
-
-
-def _place_maps(builder: Builder, maps: Map, stem: str, binary: bool, asset: Asset) -> list[OutFile]:
-    """Each normal map as the normalTexture of its material; a material without one of its own takes the sheet that serves all."""
+def _place_maps(builder: Builder, maps: Map, stem: str, binary: bool, asset: Asset, taken: set[str]) -> list[OutFile]:
+    """Each normal map as the normalTexture of its material; one without its own sheet takes that which serves all."""
     files: list[OutFile] = []
     textures: dict[int, int] = {}
     by_name = {sheet.material: number for number, sheet in enumerate(maps.sheets)}
@@ -89,9 +94,8 @@ def _place_maps(builder: Builder, maps: Map, stem: str, binary: bool, asset: Ass
             continue
         if chosen not in textures:
             content = write_png(as_gltf_texels(maps.sheets[chosen]))
-            textures[chosen] = _texture(
-                builder, content, f"{stem}_normal_{chosen}" if len(maps.sheets) > 1 else f"{stem}_normal", binary, files
-            )
+            name = f"{stem}_normal_{chosen}" if len(maps.sheets) > 1 else f"{stem}_normal"
+            textures[chosen] = _texture(builder, content, name, binary, files, taken)
         info = material.get("normalTexture", {})
         material["normalTexture"] = {
             "index": textures[chosen],
@@ -100,26 +104,27 @@ def _place_maps(builder: Builder, maps: Map, stem: str, binary: bool, asset: Ass
     return files
 
 
-def _materials(builder: Builder, asset: Asset) -> list[dict]:  # type: ignore[type-arg]
+def _materials(builder: Builder, asset: Asset) -> list[dict[str, Any]]:
     """The document's materials; parts that have none get one, so that a map has a place."""
     materials = builder.list("materials")
     bare = [part for part in asset.parts if part.material < 0]
     if bare:
         materials.append({"name": ""})
         for mesh in builder.list("meshes"):
-            for primitive in mesh["primitives"]:
-                if "TANGENT" in primitive["attributes"]:
+            for primitive in mesh.get("primitives", ()):
+                if "TANGENT" in primitive.get("attributes", {}):
                     primitive.setdefault("material", len(materials) - 1)
         del materials[-1]["name"]
     return materials
 
 
-def _texture(builder: Builder, content: np.ndarray, name: str, binary: bool, files: list[OutFile]) -> int:
+def _texture(builder: Builder, content: Array, name: str, binary: bool, files: list[OutFile], taken: set[str]) -> int:
     images, textures = builder.list("images"), builder.list("textures")
     if binary:
         images.append({"name": name, "bufferView": builder.view(content), "mimeType": "image/png"})
     else:
-        images.append({"name": name, "uri": _as_uri(f"{name}.png")})
-        files.append(OutFile(f"{name}.png", content))
+        file = _file_name(name, ".png", len(images), taken)
+        images.append({"name": name, "uri": quote(file)})
+        files.append(OutFile(file, content))
     textures.append({"source": len(images) - 1})
     return len(textures) - 1
