@@ -12,7 +12,7 @@ from pathlib import Path
 import numpy as np
 from tangentry.nodes.formats.gltf import write_gltf
 from tangentry.nodes.formats.images import write_png
-from tangentry.nodes.formats.obj import write_obj
+from tangentry.nodes.formats.obj_writing import write_obj
 from tangentry.nodes.formats.ply import write_ply
 from tangentry.nodes.frames import frames
 from tangentry.nodes.model import Asset, Frames, Image, MapUse, Material, Part, Stream
@@ -649,26 +649,15 @@ def write(folder: str, asset: Asset, suffix: str, stem: str = "") -> None:
     if suffix == ".glb":
         save(f"{folder}/{stem}.glb", write_gltf(asset, None, f"{stem}.glb")[0].content)
         return
-    for image in asset.images:
-        save(f"{folder}/{image.name}", image.content)
     if suffix == ".ply":
         content = write_ply(asset).tobytes()
         for image in asset.images:
             content = content.replace(b"comment tangentry", f"comment TextureFile {image.name}".encode())
+            save(f"{folder}/{image.name}", image.content)
         save(f"{folder}/{stem}.ply", content)
         return
-    mesh, *_ = write_obj(asset, stem)
-    save(f"{folder}/{mesh.name}", mesh.content)
-    save(f"{folder}/{stem}.mtl", material_library(asset).encode())
-
-
-def material_library(asset: Asset) -> str:
-    """The text of an MTL file."""
-    lines = []
-    for material in asset.materials:
-        lines += [f"newmtl {material.name}", "Kd 1 1 1"]
-        lines += [f"map_Kd {asset.images[use.image].name}" for use in material.maps]
-    return "\n".join(lines) + "\n"
+    for file in write_obj(asset, stem):
+        save(f"{folder}/{file.name}", file.content)
 
 
 def save(path: str, content: np.ndarray | bytes) -> None:

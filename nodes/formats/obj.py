@@ -10,7 +10,7 @@ from tangentry.nodes.formats.obj_scan import Statements, read_statements
 from tangentry.nodes.geometry.normals import build_normals
 from tangentry.nodes.model import Asset, Part, Stream
 from tangentry.pipeline.errors import InputError
-from tangentry.pipeline.flow import Array, InputFile, OutFile
+from tangentry.pipeline.flow import Array, InputFile
 
 
 def read_obj(file: InputFile) -> Asset:
@@ -127,51 +127,3 @@ def _normals(found: Statements, index: Array, part: Part, notes: list[str]) -> S
     own = build_normals(part, "face")
     rows = np.where(bare, own.index + len(unit), index).astype(np.int32)
     return _stream(np.concatenate([np.where(sound[:, None], unit, 0), own.values]).astype(np.float32), rows)
-
-
-def write_obj(asset: Asset, stem: str) -> tuple[OutFile, ...]:
-    """An OBJ file of positions, UVs and normals, polygons kept, and a material library of names if there are materials.
-
-    OBJ has no place for frames: export GLB, PLY or NPZ for them.
-    """
-    lines = [f"mtllib {stem}.mtl"] if asset.materials else []
-    before = np.zeros(3, np.int64)
-    for part in asset.parts:
-        streams = [part.points, part.uvs[0] if part.uvs else None, part.normals]
-        lines.append(f"o {part.name or stem}")
-        if part.material >= 0:
-            lines.append(f"usemtl {asset.materials[part.material].name}")
-        for keyword, stream in zip(("v", "vt", "vn"), streams, strict=True):
-            values = stream.values if stream is not None else np.zeros((0, 3), np.float32)
-            if keyword == "vt" and asset.v_down and len(values):
-                values = np.stack([values[:, 0], 1 - values[:, 1]], axis=1)
-            lines += [f"{keyword} " + " ".join(f"{x:.9g}" for x in row) for row in values.tolist()]
-        lines += _faces(part, streams, before)
-        before += [len(stream.values) if stream is not None else 0 for stream in streams]
-    files = [OutFile(f"{stem}.obj", _bytes(lines))]
-    if asset.materials:
-        files.append(OutFile(f"{stem}.mtl", _bytes([f"newmtl {material.name}" for material in asset.materials])))
-    return tuple(files)
-
-
-def _faces(part: Part, streams: list[Stream | None], before: Array) -> list[str]:
-    columns = [
-        (stream.index + before[k] + 1).astype(str) if stream is not None else None for k, stream in enumerate(streams)
-    ]
-    words = columns[0]
-    assert words is not None
-    if columns[1] is not None or columns[2] is not None:
-        words = np.char.add(words, "/")
-        words = np.char.add(words, columns[1]) if columns[1] is not None else words
-        words = np.char.add(np.char.add(words, "/"), columns[2]) if columns[2] is not None else words
-    lines, group = [], None
-    for f in range(part.face_count):
-        if part.smoothing is not None and part.smoothing[f] != group:
-            group = part.smoothing[f]
-            lines.append(f"s {group or 'off'}")
-        lines.append("f " + " ".join(words[part.starts[f] : part.starts[f + 1]]))
-    return lines
-
-
-def _bytes(lines: list[str]) -> Array:
-    return np.frombuffer(("\n".join(lines) + "\n").encode(), np.uint8)

@@ -144,7 +144,7 @@ def large(folder: Path) -> None:
     """One OBJ of 1,000,000 triangles, load to export."""
     sys.path.insert(0, str(ROOT / "tests"))
     from shapes import torus
-    from tangentry.nodes.formats.obj import write_obj
+    from tangentry.nodes.formats.obj_writing import write_obj
 
     (folder / "props").mkdir()
     for file in write_obj(torus(1000, 500), "torus"):
