@@ -1,64 +1,50 @@
-"""A graph as a picture: its nodes in columns from left to right, each with what the last build made of it, as SVG.
-
-A node stands one column right of the last of its inputs. Within a column nodes are ordered by the mean place of what they
-are joined to, swept back and forth until nothing changes, so that few lines cross.
-"""
+"""A graph as a picture: its nodes in columns from left to right, each with what the last build made of it, as SVG."""
 
 from __future__ import annotations
 
-import dataclasses
 from collections import Counter
 from html import escape
 from typing import Any
 
+from tangentry.pipeline.arrange import Arrangement, Spot, arrange
 from tangentry.pipeline.graph import Graph
 from tangentry.pipeline.linking import Entry
 
-WIDE, HIGH = 178, 54  # of a box
-GAP_X, GAP_Y = 64, 26
-MARGIN = 34
-INK, PAPER, FAINT = "#20303c", "#fbfaf6", "#8a949b"
+WIDE, HIGH = 168, 62  # of a box
+GAP = 52  # between columns
+MARGIN, TOP, FOOT = 30, 52, 40
+INK, PAPER, FAINT, RULE = "#20303c", "#fbfaf6", "#6b767d", "#c9cdc8"
 # State -> fill, edge: told apart by lightness too, and always by words.
 LOOKS = {
     "failed": ("#f6d5cc", "#a8361c"),
     "blocked": ("#efe6e2", "#a8361c"),
-    "faulty": ("#fae6c0", "#a56a00"),
+    "faulty": ("#fae6c0", "#8a5800"),
     "ran": ("#d3e8e4", "#17665a"),
-    "reused": ("#eef1ee", "#7d8b86"),
-    "skipped": ("#ffffff", "#b9c0c3"),
-    "": ("#ffffff", "#7d8b86"),
+    "reused": ("#eef1ee", "#5f6d68"),
+    "skipped": ("#ffffff", "#8a949b"),
+    "": ("#ffffff", "#6b767d"),
 }
 WORDS = {"skipped": "left out"}
 
 
-@dataclasses.dataclass(frozen=True)
-class Box:
-    """A node in its place."""
-
-    entry: Entry
-    x: float
-    y: float
-
-
 def draw(graph: Graph, record: dict[str, Any] | None = None) -> str:
     """The graph as an SVG document; `record` is the last build's, in plain data."""
+    entries = {**graph.per_asset, **graph.whole_library}
+    inputs = {name: [source.node for source in entry.inputs.values()] for name, entry in entries.items()}
+    arranged = arrange(inputs, frozenset(graph.whole_library))
     states = _states(record or {})
-    boxes = _place(graph)
-    width = max(box.x for box in boxes.values()) + WIDE + MARGIN
-    height = max(box.y for box in boxes.values()) + HIGH + MARGIN + 26
-    lines = [
-        _line(boxes[source.node], box, source.every) for box in boxes.values() for source in box.entry.inputs.values()
-    ]
-    shapes = [_box(box, states.get(name, Counter())) for name, box in boxes.items()]
+    width = 2 * MARGIN + (1 + max(arranged.column.values())) * (WIDE + GAP) - GAP
+    height = TOP + (max(arranged.place.values()) + 0.5) * HIGH + FOOT
     title = f"{graph.path.name}: {graph.about}" if graph.about else graph.path.name
     return "\n".join(
         [
-            f'<svg xmlns="http://www.w3.org/2000/svg" viewBox="0 0 {width:.0f} {height:.0f}" width="{width:.0f}" height="{height:.0f}" font-family="Georgia, \'DejaVu Serif\', serif">',
+            f'<svg xmlns="http://www.w3.org/2000/svg" viewBox="0 0 {width} {height:.0f}" width="{width}" '
+            f'height="{height:.0f}" font-family="Georgia, \'DejaVu Serif\', serif">',
             f'<rect width="100%" height="100%" fill="{PAPER}"/>',
-            f'<text x="{MARGIN}" y="26" font-size="15" fill="{INK}">{escape(title)}</text>',
-            *_sections(graph, boxes, height),
-            *lines,
-            *shapes,
+            _text(MARGIN, 28, 15, INK, _cut(title, width // 8)),
+            *_sections(graph, arranged, height),
+            *_lines(graph, arranged),
+            *(_box(entry, _corner(arranged, name), states.get(name, Counter())) for name, entry in entries.items()),
             "</svg>\n",
         ]
     )
@@ -74,78 +60,60 @@ def _states(record: dict[str, Any]) -> dict[str, Counter[str]]:
     return states
 
 
-def _place(graph: Graph) -> dict[str, Box]:
-    entries = {**graph.per_asset, **graph.whole_library}
-    column: dict[str, int] = {}
-    for name, entry in entries.items():  # each section stands in an order in which it can run
-        column[name] = 1 + max((column[source.node] for source in entry.inputs.values()), default=-1)
-    columns: list[list[str]] = [[] for _ in range(max(column.values()) + 1)]
-    for name, place in column.items():
-        columns[place].append(name)
-    joined: dict[str, list[str]] = {name: [] for name in entries}
-    for name, entry in entries.items():
-        for source in entry.inputs.values():
-            joined[name].append(source.node)
-            joined[source.node].append(name)
-    row = {name: float(place) for names in columns for place, name in enumerate(names)}
-    for sweep in range(24):
-        for names in columns if sweep % 2 == 0 else reversed(columns):
-            _settle(names, row, joined)
-    lowest = min(row.values())
-    return {
-        name: Box(entry, MARGIN + column[name] * (WIDE + GAP_X), 58 + (row[name] - lowest) * (HIGH + GAP_Y))
-        for name, entry in entries.items()
-    }
+def _corner(arranged: Arrangement, spot: Spot) -> tuple[float, float]:
+    """The left end of a spot's middle."""
+    return MARGIN + arranged.column[spot] * (WIDE + GAP), TOP + arranged.place[spot] * HIGH
 
 
-def _settle(names: list[str], row: dict[str, float], joined: dict[str, list[str]]) -> None:
-    """Move a column's nodes towards what they are joined to, one row apart at least."""
-    wish = {
-        name: sum(row[one] for one in joined[name]) / len(joined[name]) if joined[name] else row[name] for name in names
-    }
-    names.sort(key=lambda name: (wish[name], row[name]))
-    floor = float("-inf")
-    for name in names:
-        row[name] = max(wish[name], floor)
-        floor = row[name] + 1
-    shift = sum(row[name] - wish[name] for name in names) / len(names)
-    for name in names:
-        row[name] -= shift
-
-
-def _sections(graph: Graph, boxes: dict[str, Box], height: float) -> list[str]:
+def _sections(graph: Graph, arranged: Arrangement, height: float) -> list[str]:
     """A word under each section, and a rule between them."""
-    words = [
-        f'<text x="{MARGIN}" y="{height - 12:.0f}" font-size="12" font-style="italic" fill="{FAINT}">once for each asset</text>'
-    ]
-    if graph.whole_library and graph.per_asset:
-        x = min(boxes[name].x for name in graph.whole_library)
-        words.append(
-            f'<text x="{x:.0f}" y="{height - 12:.0f}" font-size="12" font-style="italic" fill="{FAINT}">once for the whole library</text>'
+    words = [("once for each asset", MARGIN)] if graph.per_asset else []
+    rules = []
+    if graph.whole_library:
+        x = min(_corner(arranged, name)[0] for name in graph.whole_library)
+        words.append(("once for the whole library", int(x)))
+        if graph.per_asset:
+            path = f"M{x - GAP / 2:.0f} {TOP - 8}V{height - 8:.0f}"
+            rules.append(f'<path d="{path}" stroke="{RULE}" stroke-dasharray="2 4"/>')
+    return rules + [_text(x, height - 12, 12, FAINT, word, italic=True) for word, x in words]
+
+
+def _lines(graph: Graph, arranged: Arrangement) -> list[str]:
+    """The lines between boxes; those that carry the values of all assets are thicker."""
+    pieces = []
+    for start, end in arranged.joints:
+        (x1, y1), (x2, y2) = _corner(arranged, start), _corner(arranged, end)
+        x1 += WIDE
+        through = f"H{x2 + WIDE:.0f}" if isinstance(end, tuple) else ""
+        path = (
+            f"M{x1:.0f} {y1:.1f}C{(x1 + x2) / 2:.0f} {y1:.1f} {(x1 + x2) / 2:.0f} {y2:.1f} {x2:.0f} {y2:.1f}{through}"
         )
-    return words
+        from_asset = (start if isinstance(start, str) else start[0]) in graph.per_asset
+        every = from_asset and arranged.leads_to[end] <= set(graph.whole_library)
+        pieces.append(f'<path d="{path}" fill="none" stroke="{FAINT}" stroke-width="{2.8 if every else 1.2}"/>')
+    return pieces
 
 
-def _line(start: Box, end: Box, every: bool) -> str:
-    x1, y1, x2, y2 = start.x + WIDE, start.y + HIGH / 2, end.x, end.y + HIGH / 2
-    bend = max(28.0, (x2 - x1) / 2)
-    width = 3.2 if every else 1.3
-    return f'<path d="M{x1:.1f} {y1:.1f} C{x1 + bend:.1f} {y1:.1f} {x2 - bend:.1f} {y2:.1f} {x2:.1f} {y2:.1f}" fill="none" stroke="{FAINT}" stroke-width="{width}"/>'
-
-
-def _box(box: Box, states: Counter[str]) -> str:
+def _box(entry: Entry, corner: tuple[float, float], states: Counter[str]) -> str:
+    x, y = corner[0], corner[1] - HIGH / 2
     look = next((state for state in LOOKS if states[state]), "")
     fill, edge = LOOKS[look]
     told = ", ".join(f"{states[state]} {WORDS.get(state, state)}" for state in LOOKS if states[state])
-    name, kind = box.entry.name, box.entry.kind.name
-    title = f"{name}: {kind}" + (f" ({told})" if told else "")
+    title = f"{entry.name}: {entry.kind.name}" + (f" ({told})" if told else "")
     dash = ' stroke-dasharray="4 3"' if look in ("skipped", "blocked") else ""
     return (
-        f'<g><title>{escape(title)}</title><rect x="{box.x:.1f}" y="{box.y:.1f}" width="{WIDE}" height="{HIGH}" rx="4" fill="{fill}" stroke="{edge}" stroke-width="1.2"{dash}/>'
-        f'<text x="{box.x + 11:.1f}" y="{box.y + 21:.1f}" font-size="14" fill="{INK}">{escape(_cut(name, 22))}</text>'
-        f'<text x="{box.x + WIDE - 11:.1f}" y="{box.y + 21:.1f}" font-size="11" text-anchor="end" font-style="italic" fill="{FAINT}">{escape(kind if len(name) + len(kind) < 25 else "")}</text>'
-        f'<text x="{box.x + 11:.1f}" y="{box.y + 41:.1f}" font-size="11" fill="{edge}">{escape(told or kind)}</text></g>'
+        f'<g><title>{escape(title)}</title><rect x="{x:.0f}" y="{y:.1f}" width="{WIDE}" height="{HIGH}" rx="4" '
+        f'fill="{fill}" stroke="{edge}" stroke-width="1.2"{dash}/>'
+        + _text(x + 10, y + 20, 14, INK, _cut(entry.name, 20))
+        + _text(x + 10, y + 36, 11, FAINT, _cut(entry.kind.name, 26), italic=True)
+        + _text(x + 10, y + 52, 11, edge, _cut(told, 28))
+        + "</g>"
     )
+
+
+def _text(x: float, y: float, size: int, colour: str, words: str, italic: bool = False) -> str:
+    style = ' font-style="italic"' if italic else ""
+    return f'<text x="{x:.0f}" y="{y:.1f}" font-size="{size}" fill="{colour}"{style}>{escape(words)}</text>'
 
 
 def _cut(text: str, length: int) -> str:

@@ -52,6 +52,8 @@ class AssetRecord:
         self.steps.append(step)
         if done.result is not None:
             self.findings += done.result.findings
+            if any(one["severity"] == "fault" for one in done.result.findings):
+                step["faulty"] = True
 
     @property
     def state(self) -> str:

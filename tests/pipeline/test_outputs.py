@@ -82,7 +82,9 @@ def test_outputs_are_not_taken_for_members_of_the_library(project):
 def test_two_assets_that_would_make_one_file_are_refused_before_anything_runs(project, path):
     project.edit("graph.yaml", "{out}/{stem}.out", path)
 
-    with pytest.raises(GraphError, match=r"would be made twice: by props/a.txt, node done and by props/b.txt, node done"):
+    with pytest.raises(
+        GraphError, match=r"would be made twice: by props/a.txt, node done and by props/b.txt, node done"
+    ):
         project.build()
     assert project.calls == []
 
