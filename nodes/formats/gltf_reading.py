@@ -8,6 +8,7 @@ from typing import Any
 import numpy as np
 from tangentry.nodes.formats.gltf_accessors import Accessors
 from tangentry.nodes.formats.gltf_container import DATA_URI, EXPORT_AGAIN, read_container, resolve, side_file
+from tangentry.nodes.formats.gltf_draco import NOTE, unpack
 from tangentry.nodes.formats.gltf_shape import check_texture
 from tangentry.nodes.model import Asset, Document, Frames, Image, MapUse, Material, Morph, Part, Stream
 from tangentry.pipeline.errors import InputError
@@ -16,7 +17,6 @@ from tangentry.pipeline.flow import Array, InputFile
 TRIANGLES, STRIP, FAN = 4, 5, 6
 MODES = {0: "points", 1: "lines", 2: "line loops", 3: "line strips"}
 PACKED = {
-    "KHR_draco_mesh_compression": "Draco",
     "EXT_meshopt_compression": "meshopt",
     "KHR_meshopt_compression": "meshopt",
 }
@@ -36,6 +36,7 @@ def read_gltf(file: InputFile) -> Asset:
     name for extensions that hold vertex data in a form that is not read.
     """
     document, buffers = read_container(file)
+    unpacked = unpack(file, document, buffers)
     _refuse_packed(file, document)
     accessors = Accessors(file, document, buffers)
     for number in range(len(accessors.views)):
@@ -47,6 +48,7 @@ def read_gltf(file: InputFile) -> Asset:
     parts: list[Part] = []
     required = [name for name in document.get("extensionsRequired", []) if name not in UNDERSTOOD]
     notes = [f"the extension {name}, which the file requires, is carried through as it is" for name in required]
+    notes += [NOTE] if unpacked else []
     for m, mesh in enumerate(document.get("meshes", [])):
         for p, primitive in enumerate(mesh.get("primitives", [])):
             mode = primitive.get("mode", TRIANGLES)

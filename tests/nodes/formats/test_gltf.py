@@ -194,6 +194,8 @@ def test_samples_come_out_as_they_went_in(samples, exported, suffix):
             asset = load(str(path))
         except InputError:
             continue  # refusals are the business of other tests
+        if asset.notes and "unpacked" in asset.notes[0]:
+            continue  # not to be packed again
         kept.append(path)
         assert meaning(exported(asset, f"b{suffix}")) == meaning(path), path
 
@@ -419,7 +421,7 @@ def test_what_nothing_uses_any_more_is_left_out(tmp_path, exported):
 @pytest.mark.parametrize(
     ("name", "change"),
     [
-        ("KHR_draco_mesh_compression", {"extensionsUsed": ["KHR_draco_mesh_compression"]}),
+        ("KHR_draco_mesh_compression", {"extensionsRequired": ["KHR_draco_mesh_compression"]}),
         ("EXT_meshopt_compression", {"extensionsRequired": ["EXT_meshopt_compression"]}),
         ("ACME_packed", {"extensionsRequired": ["ACME_packed"]}),
     ],
