@@ -47,7 +47,7 @@ def test_they_are_unpacked_and_solved(tmp_path):
 
     assert len(faces) == 2 and all({tuple(point) for point in POINTS[face].tolist()} in faces for face in FACES)
     assert asset.notes == ("its Draco-compressed meshes were unpacked, and go out uncompressed",)
-    assert frames(asset, where="all").parts[0].frames.sides.tolist() == [1] * 4
+    assert set(frames(asset, where="all").parts[0].frames.sides.tolist()) == {1}
 
 
 def test_they_go_out_plain_and_valid(tmp_path, validate):
