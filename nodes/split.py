@@ -47,11 +47,11 @@ def _label(stream: Stream) -> Array:
 def _sides(part: Part, point: Array, v_down: bool) -> Array:
     """(corners,) int32: the side from which the corner's face is seen in UV space."""
     from tangentry.nodes.geometry.directions import triangle_directions
-    from tangentry.nodes.geometry.mikktspace import sides_of_faces
+    from tangentry.nodes.geometry.sides import sides_of_faces
     from tangentry.nodes.geometry.triangles import triangulate
 
     triangles, face = triangulate(part)
     found = triangle_directions(part, triangles, part.uvs[0], v_down)
-    side, _, _ = sides_of_faces(part.starts, face, point, found)
+    side = sides_of_faces(point[triangles], face, part.face_count, found).side
     each: Array = np.repeat(np.where(side < 0, -1, 1).astype(np.int32), np.diff(part.starts))
     return each

@@ -580,9 +580,9 @@ def stored(asset: Asset, change: Callable[[Part, Frames], Frames]) -> Asset:
 
 def shared_across_the_mirror(part: Part, made: Frames) -> Frames:
     """One frame for every point, normal and UV, whichever side its faces are seen from."""
-    from tangentry.nodes.geometry.frames import identity
+    from tangentry.nodes.geometry.corners import distinct_corners
 
-    same = identity(part, part.normals, part.uvs[0])
+    same = distinct_corners(part.points, part.normals, part.uvs[0]).label
     first = np.zeros(int(same.max()) + 1, np.int32)
     first[same[::-1]] = made.index[::-1]
     return Frames(made.tangents[first], None, made.sides[first], made.fallback[first], same, made.uv, made.method)

@@ -1,6 +1,6 @@
 """Tangent frames as sums over the triangles around a vertex, by weights of one's choice, skew kept.
 
-face      each face its own frame
+face      each face its own, its triangles by area
 uniform   every triangle counts alike
 area      by its area in space (Max 1999 discusses such weights for normals)
 angle     by its angle at the corner (Thuermer & Wuethrich 1998)
@@ -12,11 +12,13 @@ from typing import NamedTuple
 
 import numpy as np
 from numba import njit
-from tangentry.nodes.geometry.directions import Directions
-from tangentry.nodes.geometry.vectors import dot, unit
+from tangentry.nodes.geometry.angles import angle_from
+from tangentry.nodes.geometry.directions import edge, laid
+from tangentry.nodes.model import Part, Stream
 from tangentry.pipeline.flow import Array
 
 CANCELLED = 1e-5  # share of its terms' lengths below which a sum is rounding
+FLATTEST = 1e-6  # volume below which unit normal, tangent and bitangent lie in one plane and are no frame
 
 
 class Averaged(NamedTuple):
@@ -27,44 +29,92 @@ class Averaged(NamedTuple):
     side: Array  # (vertices,) int8: +1, -1, or 0 where nothing defines one
 
 
-def average(triangles: Array, vertex: Array, normal: Array, found: Directions, weights: str) -> Averaged:
+def average(
+    part: Part, triangles: Array, uv: Stream, v_down: bool, vertex: Array, normals: Array, method: str
+) -> Averaged:
     """Sums of the unit tangents and bitangents around each vertex; sums that cancel out define nothing.
 
     triangles  (n, 3) int32 corner numbers
     vertex     (corners,) int32: what is summed together
-    normal     (vertices, 3) float32: decides the side
-    weights    "uniform", "area" or "angle"
+    normals    (vertices, 3) float32: decide the sides
+    method     "face", "uniform", "area" or "angle"
     """
-    weight = {
-        "uniform": np.ones((len(triangles), 3), np.float32),
-        "area": np.broadcast_to(found.area[:, None], (len(triangles), 3)),
-        "angle": found.angle,
-    }[weights]
-    count = len(normal)
-    tangent, bitangent, total = np.zeros((count, 3)), np.zeros((count, 3)), np.zeros(count)
-    _add_up(triangles, vertex, found.tangent, found.bitangent, np.ascontiguousarray(weight), tangent, bitangent, total)
-    for sums in (tangent, bitangent):
-        sums[dot(sums, sums) <= (CANCELLED * total) ** 2] = 0
-    tangent, bitangent = unit(tangent), unit(bitangent)
-    side = np.sign(dot(np.cross(normal, tangent), bitangent)).astype(np.int8)
-    return Averaged(tangent.astype(np.float32), bitangent.astype(np.float32), side)
+    count = len(normals)
+    total = np.zeros((count, 7))
+    up = -1.0 if v_down else 1.0
+    weighing = {"uniform": 0, "area": 1, "face": 1, "angle": 2}[method]
+    _add_up(triangles, part.points.values, part.points.index, uv.values, uv.index, up, vertex, weighing, total)
+    made = Averaged(np.empty((count, 3), np.float32), np.empty((count, 3), np.float32), np.empty(count, np.int8))
+    _finish(total, normals, *made)
+    return made
 
 
 @njit(cache=True, nogil=True)
 def _add_up(
     triangles: Array,
+    points: Array,
+    at: Array,
+    uvs: Array,
+    uv_at: Array,
+    up: float,
     vertex: Array,
-    tangent: Array,
-    bitangent: Array,
-    weight: Array,
-    t_sum: Array,
-    b_sum: Array,
+    weighing: int,
     total: Array,
 ) -> None:
+    """Add to each vertex the tangent, the bitangent and the weight."""
+    w0 = w1 = w2 = 1.0
     for t in range(len(triangles)):
-        for k in range(3):
-            v, w = vertex[triangles[t, k]], np.float64(weight[t, k])
-            total[v] += w
-            for axis in range(3):
-                t_sum[v, axis] += w * tangent[t, axis]
-                b_sum[v, axis] += w * bitangent[t, axis]
+        c0, c1, c2 = triangles[t, 0], triangles[t, 1], triangles[t, 2]
+        x1, y1, z1 = edge(points, at[c0], at[c1])
+        x2, y2, z2 = edge(points, at[c0], at[c2])
+        q0, q1, q2 = uv_at[c0], uv_at[c1], uv_at[c2]
+        u1 = np.float64(uvs[q1, 0]) - np.float64(uvs[q0, 0])
+        v1 = (np.float64(uvs[q1, 1]) - np.float64(uvs[q0, 1])) * up
+        u2 = np.float64(uvs[q2, 0]) - np.float64(uvs[q0, 0])
+        v2 = (np.float64(uvs[q2, 1]) - np.float64(uvs[q0, 1])) * up
+        side, tx, ty, tz, bx, by, bz = laid(x1, y1, z1, x2, y2, z2, u1, v1, u2, v2)
+        if side == 0:
+            continue
+        if weighing == 1:
+            cx, cy, cz = y1 * z2 - z1 * y2, z1 * x2 - x1 * z2, x1 * y2 - y1 * x2
+            w0 = w1 = w2 = np.sqrt(cx * cx + cy * cy + cz * cz)
+        elif weighing == 2:
+            one, two, both = x1 * x1 + y1 * y1 + z1 * z1, x2 * x2 + y2 * y2 + z2 * z2, x1 * x2 + y1 * y2 + z1 * z2
+            w0, w1 = angle_from(both, one * two), angle_from(one - both, one * (one + two - 2 * both))
+            w2 = max(np.pi - w0 - w1, 0.0)
+        for c, w in ((c0, w0), (c1, w1), (c2, w2)):
+            v = vertex[c]
+            total[v, 0] += w * tx
+            total[v, 1] += w * ty
+            total[v, 2] += w * tz
+            total[v, 3] += w * bx
+            total[v, 4] += w * by
+            total[v, 5] += w * bz
+            total[v, 6] += w
+
+
+@njit(cache=True, nogil=True)
+def _finish(total: Array, normals: Array, tangent: Array, bitangent: Array, side: Array) -> None:
+    for v in range(len(total)):
+        tx, ty, tz, bx, by, bz = total[v, 0], total[v, 1], total[v, 2], total[v, 3], total[v, 4], total[v, 5]
+        t_length, b_length = np.sqrt(tx * tx + ty * ty + tz * tz), np.sqrt(bx * bx + by * by + bz * bz)
+        least = CANCELLED * total[v, 6]
+        side[v] = 0
+        for axis in range(3):
+            tangent[v, axis] = bitangent[v, axis] = 0
+        if not (least < t_length < np.inf and least < b_length < np.inf):
+            continue
+        tx, ty, tz, bx, by, bz = (
+            tx / t_length,
+            ty / t_length,
+            tz / t_length,
+            bx / b_length,
+            by / b_length,
+            bz / b_length,
+        )
+        nx, ny, nz = np.float64(normals[v, 0]), np.float64(normals[v, 1]), np.float64(normals[v, 2])
+        turn = (ny * tz - nz * ty) * bx + (nz * tx - nx * tz) * by + (nx * ty - ny * tx) * bz
+        if abs(turn) > FLATTEST:
+            side[v] = 1 if turn > 0 else -1
+            tangent[v, 0], tangent[v, 1], tangent[v, 2] = tx, ty, tz
+            bitangent[v, 0], bitangent[v, 1], bitangent[v, 2] = bx, by, bz

@@ -13,10 +13,14 @@ import os
 import sys
 import warnings
 from collections.abc import Callable
+from concurrent.futures import ThreadPoolExecutor
+from typing import TypeVar
 
 import numpy as np
 from numpy.typing import DTypeLike
 from tangentry.pipeline.flow import Array
+
+Made = TypeVar("Made")
 
 
 def shared_zeros(shape: tuple[int, ...], dtype: DTypeLike) -> Array:
@@ -31,6 +35,14 @@ def core_count() -> int:
     if sys.platform != "linux" or multiprocessing.parent_process() is not None:
         return 1
     return len(os.sched_getaffinity(0))
+
+
+def in_threads(work: Callable[[int], Made], count: int) -> list[Made]:
+    """[work(0), ..., work(count - 1)], at one time: for kernels that let go of the interpreter's lock."""
+    if count == 1:
+        return [work(0)]
+    with ThreadPoolExecutor(count) as pool:
+        return list(pool.map(work, range(count)))
 
 
 def share_out(work: Callable[[int], None], count: int) -> None:

@@ -39,7 +39,7 @@ def clip_ears(start: int, size: int, flat: Array, rank: Array, triangles: Array,
     held = [0]
     earlier = [-1]
     trials = np.array([TRIALS * size])
-    heap = [(0, 0.0, 0, 0, 0)]
+    heap: list[tuple[int, float, int, int, int]] = [(0, 0.0, 0, 0, 0)]
     heap.pop()
     waiting = [k for k in range(size)]
     left = size
@@ -57,7 +57,7 @@ def clip_ears(start: int, size: int, flat: Array, rank: Array, triangles: Array,
             cut = (flat[a, 0] - flat[c, 0]) ** 2 + (flat[a, 1] - flat[c, 1]) ** 2
             step = np.floor(np.log2(cut) * STEPS) if cut > 0 else -np.inf
             late = 1 if inward[k] or witness >= 0 else 0
-            heappush(heap, (late, step, np.int64(rank[start + k]), k, stamp[k]))
+            heappush(heap, (late, float(step), int(rank[start + k]), int(k), int(stamp[k])))
         _, _, _, tip, stamped = heappop(heap)
         while stamped != stamp[tip]:
             _, _, _, tip, stamped = heappop(heap)

@@ -4,8 +4,8 @@ from __future__ import annotations
 
 import numpy as np
 from tangentry.nodes.geometry import averaging, mikktspace
-from tangentry.nodes.geometry.corners import distinct_rows, distinct_values
-from tangentry.nodes.geometry.directions import Directions, triangle_directions
+from tangentry.nodes.geometry.corners import distinct_corners, distinct_rows, distinct_values, divided
+from tangentry.nodes.geometry.directions import triangle_directions
 from tangentry.nodes.geometry.triangles import triangulate
 from tangentry.nodes.geometry.vectors import axis_across, dot, reject, unit
 from tangentry.nodes.model import Frames, Part, Stream
@@ -22,62 +22,69 @@ def solve_frames(part: Part, uv: Stream, uv_set: int, v_down: bool, method: str)
     method  "face", "uniform", "area", "angle" (skew kept, see averaging.py) or "mikktspace"
 
     Corners of one `part.vertices` number are averaged together; without such numbers, those of one position, normal
-    and UV. What no UVs define takes the tangent of its own face, else that of another corner of its point, else an
+    and UV. What no UVs define takes the tangent of its own faces, else that of another corner of its point, else an
     axis across its normal (Duff et al. 2017), and is marked.
     """
     assert part.normals is not None
-    triangles, face = triangulate(part)
+    cut = triangulate(part)
+    solve = _by_scheme if method == "mikktspace" else _by_sums
+    frames = solve(part, part.normals, uv, uv_set, v_down, method, *cut)
+    return frames if (frames.sides != 0).all() else _defined(part, part.normals, uv, v_down, frames, *cut)
+
+
+def _by_scheme(
+    part: Part, normals: Stream, uv: Stream, uv_set: int, v_down: bool, method: str, triangles: Array, face: Array
+) -> Frames:
+    vertices = distinct_corners(part.points, normals, uv)
+    if part.vertices is not None:
+        vertices = divided(vertices, part.vertices)
+    points, normal = (stream.values[rows] for stream, rows in zip((part.points, normals), vertices.rows, strict=False))
     found = triangle_directions(part, triangles, uv, v_down)
-    normal = np.ascontiguousarray(part.normals.values[part.normals.index])
-    if method == "mikktspace":
-        solved = mikktspace.solve(
-            part.starts, triangles, face, _identity(part, uv), part.points.values, part.points.index, normal, found
-        )
-        index, tangent, bitangent, side = solved.index, solved.tangent, None, solved.side
+    solved = mikktspace.solve(triangles, face, part.face_count, vertices.label, points, normal, found)
+    tangent, side, group = solved
+    loose = np.flatnonzero(group < 0)
+    if len(loose):  # corners of no triangle
+        group[loose] = len(side) + np.arange(len(loose), dtype=np.int32)
+        tangent = np.concatenate([tangent, np.zeros((len(loose), 3), np.float32)])
+        side = np.concatenate([side, np.zeros(len(loose), np.int8)])
+    return Frames(tangent, None, side, np.zeros(len(side), bool), group, uv_set, method)
+
+
+def _by_sums(
+    part: Part, normals: Stream, uv: Stream, uv_set: int, v_down: bool, method: str, triangles: Array, face: Array
+) -> Frames:
+    if method != "face" and part.vertices is None:
+        vertices = distinct_corners(part.points, normals, uv)
+        index, normal = vertices.label, normals.values[vertices.rows[1]]
     else:
-        index, first = distinct_rows(_summed_together(part, uv, method))
-        weights = "area" if method == "face" else method
-        averaged = averaging.average(triangles, index, _row_normals(normal, index, len(first)), found, weights)
-        tangent, bitangent, side = averaged.tangent, averaged.bitangent, averaged.side
-    frames = Frames(tangent, bitangent, side, np.zeros(len(tangent), bool), index, uv_set, method)
-    return _defined(part, frames, _row_normals(normal, index, len(tangent)), face, found)
+        index, _ = distinct_rows(_owner(part) if part.vertices is None or method == "face" else part.vertices)
+        normal = _mean_normals(normals, index)
+    tangent, bitangent, side = averaging.average(part, triangles, uv, v_down, index, normal, method)
+    return Frames(tangent, bitangent, side, np.zeros(len(side), bool), index, uv_set, method)
 
 
-def identity(part: Part, *streams: Stream | None) -> Array:
-    """(corners,) int32: equal where positions and the values of every stream are, whatever the indices say."""
-    labels = [
-        distinct_values(stream.values)[0][stream.index] for stream in (part.points, *streams) if stream is not None
-    ]
-    return distinct_rows(*labels)[0]
+def _owner(part: Part) -> Array:
+    """(corners,) int32: the face of each corner."""
+    return np.repeat(np.arange(part.face_count, dtype=np.int32), np.diff(part.starts))
 
 
-def _identity(part: Part, uv: Stream) -> Array:
-    same = identity(part, part.normals, uv)
-    return same if part.vertices is None else distinct_rows(same, part.vertices)[0]
-
-
-def _summed_together(part: Part, uv: Stream, method: str) -> Array:
-    if method == "face":
-        return np.repeat(np.arange(part.face_count, dtype=np.int32), np.diff(part.starts))
-    return part.vertices if part.vertices is not None else identity(part, part.normals, uv)
-
-
-def _row_normals(normal: Array, index: Array, count: int) -> Array:
-    """(rows, 3) float32: the mean normal, unit, of the corners that have each row."""
-    total = np.stack([np.bincount(index, normal[:, axis], count) for axis in range(3)], axis=1)
-    total[~total.any(axis=1)] = UP
+def _mean_normals(normals: Stream, index: Array) -> Array:
+    """(rows, 3) float32: the mean normal, unit, of the corners that have each row of an index."""
+    at_corners = normals.values[normals.index]
+    total = np.stack([np.bincount(index, at_corners[:, axis]) for axis in range(3)], axis=1)
+    total[~(dot(total, total) > 0)] = UP
     return unit(total).astype(np.float32)
 
 
-def _defined(part: Part, frames: Frames, normal: Array, face: Array, found: Directions) -> Frames:
-    """Frames with every row defined; `normal` is that of each row."""
-    across = reject(frames.tangents, normal)
-    lost = (frames.sides == 0) | ~(dot(across, across) > FLATTEST**2)
-    if not lost.any():
-        return frames
-    tangent, side, own = frames.tangents.copy(), frames.sides.copy(), normal[lost]
+def _defined(
+    part: Part, normals: Stream, uv: Stream, v_down: bool, frames: Frames, triangles: Array, face: Array
+) -> Frames:
+    """Frames with every row defined."""
+    lost = frames.sides == 0
+    own = _mean_normals(normals, frames.index)[lost]
+    tangent, side = frames.tangents.copy(), frames.sides.copy()
     filled, filled_side = axis_across(own), np.ones(len(own), np.int8)
-    for offer, offered_side in (_lent(part, frames, lost), _face_tangents(part, frames, face, found)):
+    for offer, offered_side in (_lent(part, frames, lost), _face_tangents(part, uv, v_down, frames, triangles, face)):
         laid = reject(offer[lost], own)
         usable = (dot(laid, laid) > FLATTEST**2) & (offered_side[lost] != 0)
         filled = np.where(usable[:, None], unit(laid), filled)
@@ -90,10 +97,13 @@ def _defined(part: Part, frames: Frames, normal: Array, face: Array, found: Dire
     return Frames(tangent, bitangent, side, lost, frames.index, frames.uv, frames.method)
 
 
-def _face_tangents(part: Part, frames: Frames, face: Array, found: Directions) -> tuple[Array, Array]:
+def _face_tangents(
+    part: Part, uv: Stream, v_down: bool, frames: Frames, triangles: Array, face: Array
+) -> tuple[Array, Array]:
     """What the faces of each row say: (rows, 3) float64 unit tangents, by area, and (rows,) int8 sides."""
-    columns = [*(found.tangent * found.area[:, None]).T, found.side]
-    owner = np.repeat(np.arange(part.face_count), np.diff(part.starts))
+    found = triangle_directions(part, triangles, uv, v_down)
+    columns = [*(found.tangent * np.where(found.side != 0, found.area, 0)[:, None]).T, found.side]
+    owner = _owner(part)
     by_face = [np.bincount(face, column, part.face_count)[owner] for column in columns]
     total = np.stack([np.bincount(frames.index, column, len(frames.tangents)) for column in by_face], axis=1)
     return unit(total[:, :3]), np.sign(total[:, 3]).astype(np.int8)

@@ -15,9 +15,17 @@ from typing import NamedTuple
 
 import numpy as np
 from numba import njit
-from tangentry.nodes.geometry.directions import Directions
-from tangentry.nodes.geometry.unions import number, union
+from tangentry.nodes.geometry.angles import angle_from
+from tangentry.nodes.geometry.cores import core_count, in_threads
+from tangentry.nodes.geometry.directions import Directions, edge
+from tangentry.nodes.geometry.rings import NEXT, PREVIOUS, join_ring, rings
+from tangentry.nodes.geometry.sides import sides_of_faces
+from tangentry.nodes.geometry.unions import root
 from tangentry.pipeline.flow import Array
+
+FEW = 50_000  # corners below which a thread of their own is not worth its start
+CANCELLED = 1e-5  # share of its terms below which a sum is rounding
+FLAT = np.int8(2)  # kind of a triangle whose face has no area in space; others have their face's side for a kind
 
 
 class Solved(NamedTuple):
@@ -25,245 +33,176 @@ class Solved(NamedTuple):
 
     tangent: Array  # (groups, 3) float32, unit; zero where nothing defines one
     side: Array  # (groups,) int8, +1 or -1; 0 where nothing defines one
-    index: Array  # (corners,) int32: the group of each corner
+    group: Array  # (corners,) int32; -1 for corners of no triangle
 
 
 def solve(
-    starts: Array,
-    triangles: Array,
-    face: Array,
-    vertex: Array,
-    points: Array,
-    at: Array,
-    normal: Array,
-    found: Directions,
+    triangles: Array, face: Array, faces: int, vertex: Array, points: Array, normals: Array, found: Directions
 ) -> Solved:
     """Solve a part.
 
-    starts     (faces + 1,) int32
-    triangles  (n, 3) int32 corner numbers, and their face (n,) int32
+    triangles  (n, 3) int32 corner numbers, and their face (n,) int32, of so many `faces`
     vertex     (corners,) int32: corners of one number are one vertex
-    points     (points, 3) float32, and `at` (corners,) int32: the point of each corner
-    normal     (corners, 3) float32, unit
+    points     (vertices, 3) float32
+    normals    (vertices, 3) float32
     """
-    corners = len(vertex)
-    side, solid, edges = sides_of_faces(starts, face, vertex, found)
-    parent = np.arange(corners, dtype=np.int32)
-    _join(starts, vertex, solid, side, *edges, parent)
-    index = np.empty(corners, np.int32)
-    groups = number(parent, index)
-    total = np.zeros((groups, 3))
-    group_side = np.zeros(groups, np.int8)
-    _add_up(triangles, face, points, at, normal, found.tangent, found.side, side, index, total, group_side)
-    tangent = np.zeros((groups, 3), np.float32)
-    _normalise(total, tangent)
-    _borrow(starts, vertex, solid, index, tangent, group_side)
-    return Solved(tangent, group_side, index)
+    at = vertex[triangles]
+    sides = sides_of_faces(at, face, faces, found)
+    kind = np.where(sides.solid, sides.side, FLAT)[face]
+    starts, ring = rings(at, len(points))
+    tangent, side = np.empty((len(ring), 3), np.float32), np.empty(len(ring), np.int8)
+    group = np.full(len(vertex), -1, np.int32)
+    cores = core_count() if len(ring) > FEW else 1
+    bounds = np.searchsorted(starts, len(ring) * np.arange(cores) // cores).astype(np.int32)
+    arrays = (triangles, at, kind, found.tangent, found.side, starts, ring, points, normals, tangent, side, group)
+    counts = in_threads(
+        lambda k: _solve(bounds[k], bounds[k + 1] if k + 1 < cores else np.int32(len(points)), *arrays),
+        cores,
+    )
+    return _closed_up(tangent, side, group, starts[bounds], counts)
 
 
-def sides_of_faces(
-    starts: Array, face: Array, vertex: Array, found: Directions
-) -> tuple[Array, Array, tuple[Array, Array, Array]]:
-    """The side each face is seen from, whether it has area, and its edges: (side, solid, edge table).
-
-    side (faces,) int8: +1 as wound, -1 mirrored; a face without UV area takes the side of its neighbours, 0 where they
-    have none.
-    """
-    side = np.zeros(len(starts) - 1, np.int8)
-    solid = np.zeros(len(starts) - 1, np.bool_)
-    _face_sides(face, found.side, found.uv_area, found.area, side, solid)
-    edges = _edge_table(starts, vertex, solid)
-    _adopt_sides(starts, vertex, solid, side, *edges)
-    return side, solid, edges
+def _closed_up(tangent: Array, side: Array, group: Array, begins: Array, counts: list[int]) -> Solved:
+    """Runs of groups, so many from each begin, moved together."""
+    ends = begins + counts
+    for begin, gap in zip(begins[:0:-1], (begins[1:] - ends[:-1])[::-1], strict=True):
+        np.subtract(group, gap, out=group, where=group >= begin)
+    rows = [slice(begin, end) for begin, end in zip(begins, ends, strict=True)]
+    return Solved(np.concatenate([tangent[row] for row in rows]), np.concatenate([side[row] for row in rows]), group)
 
 
 @njit(cache=True, nogil=True)
-def _face_sides(face: Array, tri_side: Array, uv_area: Array, area: Array, side: Array, solid: Array) -> None:
-    """A polygon is seen from the side of its largest triangle in UV space; it is solid where a triangle has area."""
-    largest = np.zeros(len(side), np.float32)
-    for t in range(len(face)):
-        f = face[t]
-        if area[t] > 0:
-            solid[f] = True
-        if tri_side[t] != 0 and (uv_area[t] > largest[f] or (uv_area[t] == largest[f] and tri_side[t] > side[f])):
-            largest[f], side[f] = uv_area[t], tri_side[t]
-
-
-@njit(cache=True, nogil=True)
-def _edge_table(starts: Array, vertex: Array, solid: Array) -> tuple[Array, Array, Array]:
-    """Directed edges by hash of their ends: (slots, next, owner), chains of corners, and the face of each corner."""
-    corners = len(vertex)
-    size = 16
-    while size < 2 * corners:
-        size *= 2
-    slots = np.full(size, -1, np.int32)
-    chain = np.full(corners, -1, np.int32)
-    owner = np.empty(corners, np.int32)
-    for f in range(len(starts) - 1):
-        for c in range(starts[f], starts[f + 1]):
-            owner[c] = f
-            after = c + 1 if c + 1 < starts[f + 1] else starts[f]
-            if solid[f] and vertex[c] != vertex[after]:
-                slot = _edge_slot(vertex[c], vertex[after], size)
-                chain[c] = slots[slot]
-                slots[slot] = c
-    return slots, chain, owner
-
-
-@njit(cache=True, nogil=True)
-def _edge_slot(a: int, b: int, size: int) -> int:
-    key = (np.uint64(a) * np.uint64(0x9E3779B97F4A7C15)) ^ (np.uint64(b) * np.uint64(0xC2B2AE3D27D4EB4F))
-    key ^= key >> np.uint64(31)
-    key *= np.uint64(0x9E3779B97F4A7C15)
-    return np.int64((key >> np.uint64(20)) & np.uint64(size - 1))
-
-
-@njit(cache=True, nogil=True)
-def _adopt_sides(
-    starts: Array, vertex: Array, solid: Array, side: Array, slots: Array, chain: Array, owner: Array
-) -> None:
-    """Faces without UV area take the side that most of their neighbours have, wave after wave."""
-    faces = len(starts) - 1
-    front = np.empty(faces, np.int32)
-    open_count = 0
-    for f in range(faces):
-        if solid[f] and side[f] == 0:
-            front[open_count] = f
-            open_count += 1
-    given = np.empty(faces, np.int8)
-    while open_count:
-        kept = 0
-        changed = False
-        for k in range(open_count):
-            f = front[k]
-            votes = 0
-            heard = False
-            for c in range(starts[f], starts[f + 1]):
-                after = c + 1 if c + 1 < starts[f + 1] else starts[f]
-                other = slots[_edge_slot(vertex[after], vertex[c], len(slots))]
-                while other >= 0:
-                    g = owner[other]
-                    end = other + 1 if other + 1 < starts[g + 1] else starts[g]
-                    if vertex[other] == vertex[after] and vertex[end] == vertex[c] and side[g] != 0:
-                        votes += side[g]
-                        heard = True
-                    other = chain[other]
-            given[k] = (1 if votes >= 0 else -1) if heard else 0
-        for k in range(open_count):
-            if given[k] != 0:
-                side[front[k]] = given[k]
-                changed = True
-            else:
-                front[kept] = front[k]
-                kept += 1
-        open_count = kept
-        if not changed:
-            break
-
-
-@njit(cache=True, nogil=True)
-def _join(
-    starts: Array, vertex: Array, solid: Array, side: Array, slots: Array, chain: Array, owner: Array, parent: Array
-) -> None:
-    """Join the corners at both ends of every edge between faces seen from one side."""
-    for f in range(len(starts) - 1):
-        if not solid[f]:
-            continue
-        for c in range(starts[f], starts[f + 1]):
-            after = c + 1 if c + 1 < starts[f + 1] else starts[f]
-            if vertex[c] == vertex[after]:
-                union(parent, c, after)
-                continue
-            other = slots[_edge_slot(vertex[after], vertex[c], len(slots))]
-            while other >= 0:
-                g = owner[other]
-                end = other + 1 if other + 1 < starts[g + 1] else starts[g]
-                if vertex[other] == vertex[after] and vertex[end] == vertex[c] and side[f] == side[g]:
-                    union(parent, c, end)
-                    union(parent, after, other)
-                other = chain[other]
-
-
-@njit(cache=True, nogil=True)
-def _add_up(
+def _solve(
+    from_vertex: int,
+    to_vertex: int,
     triangles: Array,
-    face: Array,
-    points: Array,
     at: Array,
-    normal: Array,
-    tangent: Array,
+    kind: Array,
+    tri_tangent: Array,
     tri_side: Array,
+    starts: Array,
+    ring: Array,
+    points: Array,
+    normals: Array,
+    tangent: Array,
     side: Array,
-    index: Array,
-    total: Array,
-    group_side: Array,
-) -> None:
-    for t in range(len(triangles)):
-        for k in range(3):
-            c = triangles[t, k]
-            g = index[c]
-            group_side[g] = side[face[t]]
-            if tri_side[t] == 0:
-                continue
-            nx, ny, nz = np.float64(normal[c, 0]), np.float64(normal[c, 1]), np.float64(normal[c, 2])
-            tx, ty, tz = np.float64(tangent[t, 0]), np.float64(tangent[t, 1]), np.float64(tangent[t, 2])
-            lean = tx * nx + ty * ny + tz * nz
-            tx, ty, tz = tx - nx * lean, ty - ny * lean, tz - nz * lean
-            length = np.sqrt(tx * tx + ty * ty + tz * tz)
-            if not length > 0:
-                continue
-            p, before, after = at[c], at[triangles[t, (k + 2) % 3]], at[triangles[t, (k + 1) % 3]]
-            weight = _angle_in_plane(points, p, before, after, nx, ny, nz) / length
-            total[g, 0] += tx * weight
-            total[g, 1] += ty * weight
-            total[g, 2] += tz * weight
+    group: Array,
+) -> int:
+    """Write the groups of one vertex after another, from the row where its ring starts; gives how many there are."""
+    widest = 0
+    for v in range(from_vertex, to_vertex):
+        widest = max(widest, starts[v + 1] - starts[v])
+    seen = np.full(len(points), -1, np.int32)
+    before, after = np.empty(widest, np.int32), np.empty(widest, np.int32)
+    chain, parent, name = np.empty(widest, np.int32), np.empty(widest, np.int32), np.empty(widest, np.int32)
+    total = np.empty((widest, 4))
+    groups = starts[from_vertex]
+    for v in range(from_vertex, to_vertex):
+        begin, size = starts[v], starts[v + 1] - starts[v]
+        nx, ny, nz = np.float64(normals[v, 0]), np.float64(normals[v, 1]), np.float64(normals[v, 2])
+        scale = 1 / max(np.sqrt(nx * nx + ny * ny + nz * nz), 1e-30)
+        nx, ny, nz = nx * scale, ny * scale, nz * scale
+        _sort_ring(kind, ring, begin, size)
+        for i in range(size):
+            t, k = ring[begin + i] >> 2, ring[begin + i] & 3
+            before[i], after[i] = at[t, PREVIOUS[k]], at[t, NEXT[k]]
+        first, start = groups, 0
+        while start < size and kind[ring[begin + start] >> 2] != FLAT:
+            this, end = kind[ring[begin + start] >> 2], start + 1
+            while end < size and kind[ring[begin + end] >> 2] == this:
+                end += 1
+            join_ring(before, after, start, end, seen, chain, parent)
+            for i in range(start, end):
+                t, k = ring[begin + i] >> 2, ring[begin + i] & 3
+                top = root(parent, i)
+                if top == i:
+                    name[i], side[groups] = groups, this
+                    total[groups - first, 0] = total[groups - first, 1] = 0
+                    total[groups - first, 2] = total[groups - first, 3] = 0
+                    groups += 1
+                g = name[top]
+                group[triangles[t, k]] = g
+                if tri_side[t] == 0:
+                    continue
+                tx, ty, tz = np.float64(tri_tangent[t, 0]), np.float64(tri_tangent[t, 1]), np.float64(tri_tangent[t, 2])
+                lean = tx * nx + ty * ny + tz * nz
+                tx, ty, tz = tx - nx * lean, ty - ny * lean, tz - nz * lean
+                length = np.sqrt(tx * tx + ty * ty + tz * tz)
+                if length > 0:
+                    angle = _angle_in_plane(points, v, before[i], after[i], nx, ny, nz)
+                    weight = angle / length
+                    total[g - first, 0] += tx * weight
+                    total[g - first, 1] += ty * weight
+                    total[g - first, 2] += tz * weight
+                    total[g - first, 3] += angle
+            start = end
+        for g in range(first, groups):
+            x, y, z = total[g - first, 0], total[g - first, 1], total[g - first, 2]
+            length = np.sqrt(x * x + y * y + z * z)
+            scale = 1 / length if length > CANCELLED * total[g - first, 3] else 0.0
+            tangent[g, 0], tangent[g, 1], tangent[g, 2] = x * scale, y * scale, z * scale
+            if scale == 0:
+                side[g] = 0
+        if start < size:
+            groups = _borrow(triangles, ring, begin + start, begin + size, first, groups, tangent, side, group)
+    return groups - starts[from_vertex]
+
+
+@njit(cache=True, nogil=True)
+def _sort_ring(kind: Array, ring: Array, begin: int, size: int) -> None:
+    """Bring the triangles of each kind together, those without area last."""
+    alike = True
+    for i in range(1, size):
+        alike = alike and kind[ring[begin + i] >> 2] == kind[ring[begin] >> 2]
+    if alike:
+        return
+    place = begin
+    for wanted in range(-1, FLAT):
+        for i in range(place, begin + size):
+            if kind[ring[i] >> 2] == wanted:
+                ring[i], ring[place] = ring[place], ring[i]
+                place += 1
 
 
 @njit(cache=True, nogil=True)
 def _angle_in_plane(points: Array, p: int, before: int, after: int, nx: float, ny: float, nz: float) -> float:
     """The angle at p between two edges laid into the plane of a normal, radians."""
-    ax = np.float64(points[before, 0]) - points[p, 0]
-    ay = np.float64(points[before, 1]) - points[p, 1]
-    az = np.float64(points[before, 2]) - points[p, 2]
-    bx = np.float64(points[after, 0]) - points[p, 0]
-    by = np.float64(points[after, 1]) - points[p, 1]
-    bz = np.float64(points[after, 2]) - points[p, 2]
+    ax, ay, az = edge(points, p, before)
+    bx, by, bz = edge(points, p, after)
     a_lean, b_lean = ax * nx + ay * ny + az * nz, bx * nx + by * ny + bz * nz
-    ax, ay, az = ax - nx * a_lean, ay - ny * a_lean, az - nz * a_lean
-    bx, by, bz = bx - nx * b_lean, by - ny * b_lean, bz - nz * b_lean
-    cx, cy, cz = ay * bz - az * by, az * bx - ax * bz, ax * by - ay * bx
-    return np.arctan2(np.sqrt(cx * cx + cy * cy + cz * cz), ax * bx + ay * by + az * bz)
+    squares = (ax * ax + ay * ay + az * az - a_lean * a_lean) * (bx * bx + by * by + bz * bz - b_lean * b_lean)
+    return angle_from(ax * bx + ay * by + az * bz - a_lean * b_lean, squares)
 
 
 @njit(cache=True, nogil=True)
-def _normalise(total: Array, tangent: Array) -> None:
-    for g in range(len(total)):
-        length = np.sqrt(total[g, 0] ** 2 + total[g, 1] ** 2 + total[g, 2] ** 2)
-        if length > 0:
-            for k in range(3):
-                tangent[g, k] = total[g, k] / length
+def _borrow(
+    triangles: Array,
+    ring: Array,
+    start: int,
+    end: int,
+    first: int,
+    groups: int,
+    tangent: Array,
+    side: Array,
+    group: Array,
+) -> int:
+    """Corners of faces without area join a group at their vertex, that of the greatest tangent, or one of their own."""
+    lender = -1
+    for g in range(first, groups):
+        if side[g] != 0 and (lender < 0 or _greater(tangent, g, lender)):
+            lender = g
+    if lender < 0:
+        lender = groups
+        tangent[lender], side[lender] = 0, 0
+        groups += 1
+    for i in range(start, end):
+        group[triangles[ring[i] >> 2, ring[i] & 3]] = lender
+    return groups
 
 
 @njit(cache=True, nogil=True)
-def _borrow(starts: Array, vertex: Array, solid: Array, index: Array, tangent: Array, side: Array) -> None:
-    """Corners of faces without area move to a group at their vertex, of several to that of the greatest tangent."""
-    lender = np.full(vertex.max() + 1 if len(vertex) else 0, -1, np.int32)
-    for f in range(len(starts) - 1):
-        if solid[f]:
-            for c in range(starts[f], starts[f + 1]):
-                g, v = index[c], vertex[c]
-                if side[g] != 0 and (lender[v] < 0 or _greater(tangent, g, lender[v])):
-                    lender[v] = g
-    for f in range(len(starts) - 1):
-        if not solid[f]:
-            for c in range(starts[f], starts[f + 1]):
-                if lender[vertex[c]] >= 0:
-                    index[c] = lender[vertex[c]]
-
-
-@njit(cache=True, nogil=True)
-def _greater(rows: Array, a: int, b: int) -> bool:
-    for k in range(rows.shape[1]):
-        if rows[a, k] != rows[b, k]:
-            return rows[a, k] > rows[b, k]
+def _greater(rows: Array, one: int, other: int) -> bool:
+    for axis in range(3):
+        if rows[one, axis] != rows[other, axis]:
+            return rows[one, axis] > rows[other, axis]
     return False

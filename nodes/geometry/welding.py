@@ -34,7 +34,7 @@ def _slot(x: int, y: int, z: int, size: int) -> int:
     key = np.uint64(x) * np.uint64(0x9E3779B97F4A7C15) ^ np.uint64(y) * np.uint64(0xC2B2AE3D27D4EB4F)
     key ^= np.uint64(z) * np.uint64(0x165667B19E3779F9)
     key = (key ^ (key >> np.uint64(31))) * np.uint64(0x9E3779B97F4A7C15)
-    return np.int64((key >> np.uint64(20)) & np.uint64(size - 1))
+    return int((key >> np.uint64(20)) & np.uint64(size - 1))
 
 
 @njit(cache=True, nogil=True)
