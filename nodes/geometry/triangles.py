@@ -10,7 +10,7 @@ from __future__ import annotations
 
 import numpy as np
 from numba import njit
-from tangentry.nodes.geometry.ears import clip_ears
+from tangentry.nodes.geometry.ears import cut_polygons
 from tangentry.nodes.model import Part
 from tangentry.pipeline.flow import Array
 
@@ -26,63 +26,30 @@ def triangulate(part: Part) -> tuple[Array, Array]:
     if len(sizes) and (sizes == 3).all():
         corners = np.arange(len(part.points.index), dtype=np.int32).reshape(-1, 3)
         return corners, np.arange(len(sizes), dtype=np.int32)
-    count = int(np.maximum(sizes - 2, 0).sum())
-    triangles = np.empty((count, 3), np.int32)
-    face = np.empty(count, np.int32)
-    uv = part.uvs[0] if part.uvs else None
-    uv_values = uv.values if uv is not None else np.zeros((1, 2), np.float32)
-    uv_index = uv.index if uv is not None else np.zeros(len(part.points.index), np.int32)
-    _cut_all(
-        part.starts,
-        part.points.values,
-        part.points.index,
-        uv_values,
-        uv_index,
-        int(sizes.max(initial=3)),
-        _ranks(part, sizes, uv_values, uv_index),
-        triangles,
-        face,
-    )
+    counts = np.maximum(sizes - 2, 0)
+    face = np.repeat(np.arange(len(sizes), dtype=np.int32), counts)
+    triangles = np.empty((len(face), 3), np.int32)
+    rows = np.cumsum(counts) - counts
+    uv_values = part.uvs[0].values if part.uvs else np.zeros((1, 2), np.float32)
+    uv_index = part.uvs[0].index if part.uvs else np.zeros(len(part.points.index), np.int32)
+    _cut(part.starts, rows, part.points.values, part.points.index, uv_values, uv_index, triangles)
+    large = np.flatnonzero(sizes > 4)
+    if len(large):
+        corners = np.flatnonzero(np.repeat(sizes > 4, sizes))
+        keys = np.concatenate([uv_values[uv_index[corners]], part.points.values[part.points.index[corners]]], axis=1)
+        cut_polygons(part.points, part.starts[large], sizes[large], keys, rows[large], triangles)
     return triangles, face
 
 
-def _ranks(part: Part, sizes: Array, uvs: Array, uv_at: Array) -> Array:
-    """(corners,) int32: the place of each corner of a large polygon in the order of u, v, then x, y, z."""
-    rank = np.zeros(len(uv_at), np.int32)
-    corners = np.flatnonzero(np.repeat(sizes > 4, sizes))
-    values = np.concatenate([uvs[uv_at[corners]], part.points.values[part.points.index[corners]]], axis=1)
-    rank[corners[np.lexsort(values.T[::-1])]] = np.arange(len(corners), dtype=np.int32)
-    return rank
-
-
 @njit(cache=True, nogil=True)
-def _cut_all(
-    starts: Array,
-    points: Array,
-    at: Array,
-    uvs: Array,
-    uv_at: Array,
-    most: int,
-    rank: Array,
-    triangles: Array,
-    face: Array,
-) -> None:
-    done = 0
-    flat = np.empty((most, 2))
+def _cut(starts: Array, rows: Array, points: Array, at: Array, uvs: Array, uv_at: Array, triangles: Array) -> None:
+    """Write the triangles of triangles and quads, face f's from rows[f] on."""
     for f in range(len(starts) - 1):
-        start, size = starts[f], starts[f + 1] - starts[f]
-        if size < 3:
-            continue
+        start, size, row = starts[f], starts[f + 1] - starts[f], rows[f]
         if size == 3:
-            triangles[done, 0], triangles[done, 1], triangles[done, 2] = start, start + 1, start + 2
+            triangles[row, 0], triangles[row, 1], triangles[row, 2] = start, start + 1, start + 2
         elif size == 4:
-            _cut_quad(start, points, at, uvs, uv_at, triangles, done)
-        else:
-            _flatten(start, size, points, at, flat)
-            clip_ears(start, size, flat, rank, triangles, done)
-        for k in range(size - 2):
-            face[done + k] = f
-        done += size - 2
+            _cut_quad(start, points, at, uvs, uv_at, triangles, row)
 
 
 @njit(cache=True, nogil=True)
@@ -129,31 +96,3 @@ def _least(start: int, points: Array, at: Array, uvs: Array, uv_at: Array) -> in
                     best, least, key = k, key, least
                 break
     return best
-
-
-@njit(cache=True, nogil=True)
-def _flatten(start: int, size: int, points: Array, at: Array, flat: Array) -> None:
-    """The polygon's corners on the plane of its area vector (Newell's method), counter-clockwise."""
-    nx = ny = nz = 0.0
-    for k in range(size):
-        a, b = at[start + k], at[start + (k + 1) % size]
-        ax, ay, az = np.float64(points[a, 0]), np.float64(points[a, 1]), np.float64(points[a, 2])
-        bx, by, bz = np.float64(points[b, 0]), np.float64(points[b, 1]), np.float64(points[b, 2])
-        nx += (ay - by) * (az + bz)
-        ny += (az - bz) * (ax + bx)
-        nz += (ax - bx) * (ay + by)
-    length = np.sqrt(nx * nx + ny * ny + nz * nz)
-    if length > 0:
-        nx, ny, nz = nx / length, ny / length, nz / length
-    else:
-        nx, ny, nz = 0.0, 0.0, 1.0
-    sign = 1.0 if nz >= 0 else -1.0  # an axis of the plane (Duff et al. 2017)
-    a = -1.0 / (sign + nz)
-    b = nx * ny * a
-    ux, uy, uz = 1.0 + sign * nx * nx * a, sign * b, -sign * nx
-    vx, vy, vz = b, sign + ny * ny * a, -ny
-    for k in range(size):
-        p = at[start + k]
-        x, y, z = np.float64(points[p, 0]), np.float64(points[p, 1]), np.float64(points[p, 2])
-        flat[k, 0] = ux * x + uy * y + uz * z
-        flat[k, 1] = vx * x + vy * y + vz * z
