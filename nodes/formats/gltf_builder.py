@@ -8,6 +8,7 @@ from urllib.parse import quote
 
 import numpy as np
 from tangentry.nodes.formats.gltf_accessors import WIDTHS
+from tangentry.nodes.geometry.packing import BYTE, SHORT, pack_vectors
 from tangentry.nodes.model import Image
 from tangentry.pipeline.flow import Array, OutFile
 
@@ -21,6 +22,7 @@ TYPE_CODES = {
     np.dtype("<f4"): 5126,
 }
 VECTORS = {1: "SCALAR", 2: "VEC2", 3: "VEC3", 4: "VEC4"}
+QUANTISED = "KHR_mesh_quantization"
 VERTICES, INDICES = 34962, 34963  # buffer view targets
 ALIGN = 4
 
@@ -28,7 +30,8 @@ ALIGN = 4
 class Builder:
     """Takes views and accessors, gives files."""
 
-    def __init__(self, document: dict[str, Any] | None = None, views: list[Array] | None = None) -> None:
+    def __init__(self, vectors: str, document: dict[str, Any] | None = None, views: list[Array] | None = None) -> None:
+        self.most = {"short": SHORT, "byte": BYTE}.get(vectors, 0)  # of the codes for directions; 0: they stay float
         self.document: dict[str, Any] = (
             document if document is not None else {"asset": {"version": "2.0", "generator": GENERATOR}}
         )
@@ -57,6 +60,16 @@ class Builder:
         view = self.view(rows.reshape(-1), target=VERTICES, **strided)
         return self._entry(view, values, replaces, **more)
 
+    def directions(self, values: Array, replaces: int | None = None) -> int:
+        """Add an accessor of normals or tangents, in the form that was asked for (KHR_mesh_quantization)."""
+        if not self.most:
+            return self.accessor(values, replaces)
+        for name in ("extensionsUsed", "extensionsRequired"):
+            listed: list[str] = self.document.setdefault(name, [])
+            if QUANTISED not in listed:
+                listed.append(QUANTISED)
+        return self.accessor(pack_vectors(values, self.most), replaces, normalized=True)
+
     def indices(self, corners: Array, vertices: int, replaces: int | None = None) -> int:
         """Add an accessor of indices, of the smallest type that holds them; gives its number."""
         kind = (
@@ -84,11 +97,7 @@ class Builder:
         if replaces is None:
             accessors.append(entry)
             return len(accessors) - 1
-        kept = {
-            name: value
-            for name, value in accessors[replaces].items()
-            if name in ("name", "extras", "extensions", "normalized")
-        }
+        kept = {name: value for name, value in accessors[replaces].items() if name in ("name", "extras", "extensions")}
         accessors[replaces] = kept | entry
         return replaces
 

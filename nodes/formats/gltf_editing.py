@@ -18,12 +18,12 @@ from tangentry.pipeline.flow import Array, InputFile
 TRIANGLES = 4
 
 
-def edited_document(asset: Asset) -> Builder:
+def edited_document(asset: Asset, vectors: str) -> Builder:
     """The document with what changed on the asset's parts since it was read."""
     assert asset.document is not None
     document = json.loads(asset.document.text)
     accessors = Accessors(InputFile(asset.name), document, list(asset.document.buffers))
-    builder = Builder(document, [accessors.view(number, "") for number in range(len(accessors.views))])
+    builder = Builder(vectors, document, [accessors.view(number, "") for number in range(len(accessors.views))])
     builder.images = list(asset.images)
     editing = _Editing(builder, accessors)
     for part in asset.parts:
@@ -79,9 +79,17 @@ class _Editing:
             before = self.accessors.values(attributes[name], name) if name in attributes else None
             if before is None or not np.array_equal(before[part.source], stream.values[stream.index], equal_nan=True):
                 new[name] = stream
-        if part.frames is not None and part.frames.method != "stored" and part.normals is not None:
-            new["TANGENT"] = Stream(tangent_rows(part.frames), part.frames.index)
+        if part.normals is not None and self._to_pack(attributes.get("NORMAL")):
+            new["NORMAL"] = part.normals
+        if part.frames is not None and part.normals is not None:
+            brought = part.frames.method == "stored" and "TANGENT" in attributes
+            if not brought or self._to_pack(attributes["TANGENT"]):
+                new["TANGENT"] = Stream(tangent_rows(part.frames), part.frames.index)
         return new
+
+    def _to_pack(self, number: int | None) -> bool:
+        """Is that an accessor of floats, where directions were asked for in fewer bits?"""
+        return bool(self.builder.most) and number is not None and self.accessors.raw(number, "").dtype.kind == "f"
 
     def _whole(self, primitive: dict[str, Any], name: str, values: tuple[Array, Array], vertices: int) -> None:
         """Put an attribute of an unsplit primitive: shared with those that share the rest, where their values agree."""
@@ -96,17 +104,22 @@ class _Editing:
                 theirs |= filled
                 if attributes.get(name, number) != number:
                     self.uses[attributes[name]] -= 1
-                attributes[name] = self.builder.accessor(others, number, **_extras(name, others))
+                attributes[name] = self._add(name, others, number)
                 return
         attributes[name] = self._put(attributes.get(name), rows, name)
         self.shared[key] = (attributes[name], rows, filled)
 
-    def _put(self, old: int | None, values: Array, name: str, **more: Any) -> int:
+    def _add(self, name: str, values: Array, replaces: int | None) -> int:
+        if name in ("NORMAL", "TANGENT"):
+            return self.builder.directions(values, replaces)
+        return self.builder.accessor(values, replaces, **(bounds(values) if name == "POSITION" else {}))
+
+    def _put(self, old: int | None, values: Array, name: str) -> int:
         """Add an accessor, in the place of the old one if nobody else uses that."""
         replaces = old if old is not None and self.uses[old] == 1 else None
         if old is not None and replaces is None:
             self.uses[old] -= 1
-        number = self.builder.accessor(values, replaces, **_extras(name, values), **more)
+        number = self._add(name, values, replaces)
         self.uses[number] = 1
         return number
 
@@ -161,10 +174,6 @@ class _Editing:
             rows = np.zeros((vertices, 3), np.float32)
             rows[vertex] = morph.tangents[part.frames.index[corner]]
             target["TANGENT"] = self._put(target.get("TANGENT"), rows, "TANGENT displacement")
-
-
-def _extras(name: str, values: Array) -> dict[str, Any]:
-    return bounds(values) if name == "POSITION" else {}
 
 
 def _scattered(stream: Stream, source: Array, vertices: int, name: str) -> tuple[Array, Array]:

@@ -14,9 +14,9 @@ from tangentry.pipeline.flow import Array
 SHOWN = ("image/png", "image/jpeg")  # what core glTF 2.0 textures may be (specification, 3.8.3)
 
 
-def new_document(asset: Asset) -> Builder:
+def new_document(asset: Asset, vectors: str) -> Builder:
     """A document with a node and a mesh for each run of parts of one name, a primitive for each part."""
-    builder = Builder()
+    builder = Builder(vectors)
     builder.document |= {"scene": 0, "scenes": [{"nodes": []}], "nodes": [], "meshes": []}
     if asset.materials:
         _materials(builder, asset)
@@ -35,9 +35,9 @@ def _primitive(builder: Builder, asset: Asset, part: Part) -> dict[str, Any]:
     found = vertices_of(part)
     attributes = {"POSITION": builder.accessor(found.points, **bounds(found.points))}
     if found.normals is not None:
-        attributes["NORMAL"] = builder.accessor(_unit_or_up(found.normals))
+        attributes["NORMAL"] = builder.directions(_unit_or_up(found.normals))
     if found.tangents is not None and found.normals is not None:
-        attributes["TANGENT"] = builder.accessor(found.tangents)
+        attributes["TANGENT"] = builder.directions(found.tangents)
     for number, uv in enumerate(found.uvs):
         attributes[f"TEXCOORD_{number}"] = builder.accessor(uv if asset.v_down else _turned(uv))
     for number, colour in enumerate(found.colours):

@@ -27,15 +27,16 @@ SUFFIXES = {
 UNKNOWN = "application/octet-stream"
 
 
-def write_gltf(asset: Asset, maps: Map | None, name: str) -> tuple[OutFile, ...]:
+def write_gltf(asset: Asset, maps: Map | None, name: str, vectors: str = "float") -> tuple[OutFile, ...]:
     """The files of an asset: one .glb, or .gltf with its buffer, `stem.bin`, and its images beside it.
 
-    maps   normal maps to put into the materials; a sheet's material "" serves all
+    maps     normal maps to put into the materials; a sheet's material "" serves all
+    vectors  form of normals and tangents: "float", or "short" or "byte", normalised (KHR_mesh_quantization)
 
     Positions, normals, UVs and all else that did not change go out as they came in, accessor for accessor. Frames that
     were solved become TANGENT; vertices are split where corners of one vertex came to differ, and nowhere else.
     """
-    builder = edited_document(asset) if asset.document is not None else new_document(asset)
+    builder = edited_document(asset, vectors) if asset.document is not None else new_document(asset, vectors)
     stem, _, suffix = name.rpartition(".")
     binary = suffix.lower() == "glb"
     taken = {name.lower(), f"{stem}.bin".lower()}

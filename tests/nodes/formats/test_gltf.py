@@ -168,9 +168,9 @@ def made(tmp_path):
 
 @pytest.fixture
 def exported(tmp_path):
-    def write(asset, name: str, maps=None):
+    def write(asset, name: str, maps=None, **how):
         (tmp_path / "out").mkdir(exist_ok=True)
-        for file in export(asset, maps, file=name).files:
+        for file in export(asset, maps, file=name, **how).files:
             (tmp_path / "out" / file.name).write_bytes(file.content.tobytes())
         return tmp_path / "out" / name
 
@@ -380,6 +380,22 @@ def test_frames_go_with_the_node_that_places_the_mesh(tmp_path, exported, turn):
 
     assert_allclose(there.tangents[there.index[0]], carried / np.linalg.norm(carried), atol=1e-6)
     assert there.sides[there.index[0]] == here.sides[here.index[0]] * (-1 if over else 1)
+
+
+@pytest.mark.parametrize(("vectors", "code", "most"), [("short", 5122, 32767), ("byte", 5120, 127)])
+@pytest.mark.parametrize("document", [plain, rigged, folded])
+def test_directions_may_go_out_as_normalised_integers(made, exported, validate, document, vectors, code, most):
+    """KHR_mesh_quantization: NORMAL and TANGENT may be normalised bytes or shorts, aligned to four bytes."""
+    asset = frames(split(load(str(made(document, "a.glb")))))
+    as_floats, packed = exported(asset, "b.glb"), exported(asset, "c.glb", vectors=vectors)
+    before, after = meaning(as_floats), meaning(packed)
+
+    assert after["extensionsRequired"] == ["KHR_mesh_quantization"]
+    assert validate(packed)[str(packed)]["issues"]["numErrors"] == 0
+    for name in ("NORMAL", "TANGENT"):
+        old, new = (one["meshes"][0]["primitives"][0]["attributes"][name] for one in (before, after))
+        assert (after["accessors"][new]["componentType"], after["accessors"][new]["normalized"]) == (code, True)
+        assert_allclose(values(after, new) / most, values(before, old), atol=0.51 / most)
 
 
 def test_a_map_is_put_beside_images_of_its_name(made, exported):
