@@ -13,7 +13,7 @@ import numpy as np
 from tangentry.nodes.formats.gltf import write_gltf
 from tangentry.nodes.formats.images import write_png
 from tangentry.nodes.formats.obj_writing import write_obj
-from tangentry.nodes.formats.ply import write_ply
+from tangentry.nodes.formats.ply_writing import write_ply
 from tangentry.nodes.frames import frames
 from tangentry.nodes.model import Asset, Frames, Image, MapUse, Material, Part, Stream
 from tangentry.nodes.normals import normals
@@ -649,14 +649,7 @@ def write(folder: str, asset: Asset, suffix: str, stem: str = "") -> None:
     if suffix == ".glb":
         save(f"{folder}/{stem}.glb", write_gltf(asset, None, f"{stem}.glb")[0].content)
         return
-    if suffix == ".ply":
-        content = write_ply(asset).tobytes()
-        for image in asset.images:
-            content = content.replace(b"comment tangentry", f"comment TextureFile {image.name}".encode())
-            save(f"{folder}/{image.name}", image.content)
-        save(f"{folder}/{stem}.ply", content)
-        return
-    for file in write_obj(asset, stem):
+    for file in (write_ply if suffix == ".ply" else write_obj)(asset, stem):
         save(f"{folder}/{file.name}", file.content)
 
 

@@ -5,10 +5,10 @@ from __future__ import annotations
 from dataclasses import replace
 
 import numpy as np
+from tangentry.nodes.formats.corner_streams import sound_normals, sound_uvs, used_rows
 from tangentry.nodes.formats.obj_materials import Materials
 from tangentry.nodes.formats.obj_scan import Statements, read_statements
-from tangentry.nodes.geometry.normals import build_normals
-from tangentry.nodes.model import Asset, Part, Stream
+from tangentry.nodes.model import Asset, Part
 from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array, InputFile
 
@@ -76,54 +76,9 @@ def _part(found: Statements, faces: Array, name: str, material: int, smoothing: 
     corners = found.corners
     if not whole:
         corners = corners[np.repeat(found.starts[faces] - starts[:-1], sizes) + np.arange(starts[-1])]
-    points = _stream(found.points, corners[:, 0])
-    colours = (_stream(found.colours, corners[:, 0]),) if len(found.colours) else ()
+    points = used_rows(found.points, corners[:, 0])
+    colours = (used_rows(found.colours, corners[:, 0]),) if len(found.colours) else ()
     groups = None if smoothing is None else smoothing[faces]
-    part = Part(name, material, starts, points, colours=colours, smoothing=groups)
-    part = replace(part, uvs=_uvs(found, corners[:, 1], part, notes))
-    return replace(part, normals=_normals(found, corners[:, 2], part, notes))
-
-
-def _stream(values: Array, index: Array) -> Stream:
-    """The rows that corners use, in the file's order."""
-    used = np.zeros(len(values), bool)
-    used[index] = True
-    if used.all():
-        return Stream(values, np.ascontiguousarray(index))
-    row = np.cumsum(used, dtype=np.int32) - 1
-    return Stream(values[used], row[index])
-
-
-def _uvs(found: Statements, index: Array, part: Part, notes: list[str]) -> tuple[Stream, ...]:
-    bare = index < 0
-    finite = np.isfinite(found.uvs).all(axis=1)
-    if not len(found.uvs) or bare.all():
-        return ()
-    bare |= ~finite[np.maximum(index, 0)]
-    if not bare.any():
-        return (_stream(found.uvs, index),)
-    notes.append(f'{np.count_nonzero(bare)} corners of part "{part.name}" have no UVs and are given (0, 0)')
-    values = np.concatenate([np.where(finite[:, None], found.uvs, 0), np.zeros((1, 2), np.float32)])
-    return (_stream(values.astype(np.float32), np.where(bare, len(found.uvs), index).astype(np.int32)),)
-
-
-def _normals(found: Statements, index: Array, part: Part, notes: list[str]) -> Stream | None:
-    """Unit normals; corners without a proper one get that of their face, unless none of the part has one."""
-    if not len(found.normals):
-        return None
-    length = np.sqrt(np.einsum("ij,ij->i", found.normals, found.normals, dtype=np.float64))
-    sound = np.isfinite(length) & (length > 0)
-    bare = (index < 0) | ~sound[np.maximum(index, 0)]
-    if bare.all():
-        return None
-    scaled = found.normals / np.where(sound, length, 1)[:, None]
-    # Printed with few digits, a unit normal is a unit normal still.
-    unit = np.where((np.abs(length - 1) < 1e-6)[:, None], found.normals, scaled).astype(np.float32)
-    if not bare.any():
-        return _stream(unit, index)
-    notes.append(
-        f'{np.count_nonzero(bare)} corners of part "{part.name}" have no normals and are given those of their faces'
-    )
-    own = build_normals(part, "face")
-    rows = np.where(bare, own.index + len(unit), index).astype(np.int32)
-    return _stream(np.concatenate([np.where(sound[:, None], unit, 0), own.values]).astype(np.float32), rows)
+    uvs = sound_uvs(found.uvs, corners[:, 1], name, notes)
+    part = Part(name, material, starts, points, None, (uvs,) if uvs else (), colours, groups)
+    return replace(part, normals=sound_normals(found.normals, corners[:, 2], part, notes))
