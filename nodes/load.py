@@ -8,7 +8,7 @@ from tangentry.nodes.model import Asset
 from tangentry.pipeline.errors import InputError, nearest
 from tangentry.pipeline.flow import InputFile
 
-READ = (".obj", ".ply", ".gltf", ".glb")
+READ = (".obj", ".ply", ".stl", ".gltf", ".glb")
 STARTS = {
     b"glTF": ".glb",
     b"ply\n": ".ply",
@@ -20,13 +20,14 @@ STARTS = {
 
 
 def load(file: InputFile | str, *, if_missing: Literal["fail", "skip"] = "fail") -> Asset | None:
-    """The asset in a mesh file: OBJ, PLY, glTF or GLB, by its suffix.
+    """The asset in a mesh file: OBJ, PLY, STL, glTF or GLB, by its suffix.
 
     file        the mesh; the files it names (materials, buffers, images) are read beside it
     if_missing  skip: leave the asset out where there is no such file
 
-    Nothing is lost: polygons, index streams and a glTF document are kept as they are. Raises InputError naming the file,
-    the line, vertex, accessor or primitive, and the value that can't be used.
+    Nothing is lost: polygons, index streams and a glTF document are kept as they are; what of the others is passed over
+    is noted. STL brings no UVs: `frames` refuses it. Raises InputError naming the file, the line, vertex, accessor or
+    primitive, and the value that can't be used.
     """
     file = InputFile.of(file)
     if if_missing == "skip" and not file.exists:
@@ -36,10 +37,6 @@ def load(file: InputFile | str, *, if_missing: Literal["fail", "skip"] = "fail")
         raise InputError(file, "", "the file is empty", "export it again")
     head = content[:4].tobytes()
     kind = next((kind for start, kind in STARTS.items() if head.startswith(start)), "")
-    if file.suffix == ".stl":
-        raise InputError(
-            file, "", "STL holds no UVs, so tangent frames have nothing to follow", "export it as OBJ, PLY or glTF"
-        )
     if file.suffix not in READ:
         raise InputError(
             file,
@@ -57,6 +54,10 @@ def load(file: InputFile | str, *, if_missing: Literal["fail", "skip"] = "fail")
         from tangentry.nodes.formats.ply import read_ply
 
         return read_ply(file)
+    if file.suffix == ".stl":
+        from tangentry.nodes.formats.stl import read_stl
+
+        return read_stl(file)
     from tangentry.nodes.formats.gltf import read_gltf
 
     return read_gltf(file)
