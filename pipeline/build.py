@@ -61,6 +61,11 @@ class Site:
         folder, url = store_place(graph.path, store)
         return Site(graph, open_store(folder, url), Ledger(folder.absolute(), read_only), url)
 
+    def close(self) -> None:
+        """Write down what was learnt, and let go of both."""
+        self.store.close()
+        self.ledger.close()
+
     @property
     def home(self) -> Path:
         """What the ledger's paths are relative to: a project that moves as a whole keeps its memory."""
@@ -95,13 +100,13 @@ def make_plan(graph: Graph, store: str | os.PathLike[str] | None = None, only: s
         digest_of = relative_digest(graph.folder, site.ledger.digest_of)
         return plan(all_steps(graph, members), site.store, digest_of, site.ledger.parts_of(site.name))
     finally:
-        site.ledger.close()
+        site.close()
 
 
 def read_last_record(graph: Graph, store: str | os.PathLike[str] | None = None) -> dict[str, Any] | None:
     """The record of a graph's last build, in plain data; None where there is none."""
     site = Site.open(graph, store, read_only=True)
-    site.ledger.close()
+    site.close()
     try:
         record: dict[str, Any] = json.loads(site.last_record.read_bytes())
         return record
@@ -139,7 +144,7 @@ def run_build(
         with site.store.running.one_more():
             return _Build(site, only, overwrite).run(workers, cluster, stop_at_first, tidy, listener)
     finally:
-        site.ledger.close()
+        site.close()
 
 
 class _Build:

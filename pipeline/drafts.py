@@ -52,6 +52,7 @@ class Reading:
     problems: list[str] = dataclasses.field(default_factory=list)
     files: list[Path] = dataclasses.field(default_factory=list)
     renamed: dict[str, Reference] = dataclasses.field(default_factory=dict)  # "finish.verdict" -> "finish/verdict"
+    unusable: set[str] = dataclasses.field(default_factory=set)  # nodes that are there, but wrong
     count: int = 0
 
     def wrong(self, mark: object, what: str) -> None:
@@ -163,7 +164,11 @@ def read_section(root: Node, key: str, scope: Scope, reading: Reading) -> list[D
         elif "node" not in entry.value:
             reading.wrong(entry.mark, f'node "{name}" does not say its kind: add `node: KIND`')
         else:
-            drafts += _entry(name, entry, mark, scope, reading)
+            found = _entry(name, entry, mark, scope, reading)
+            drafts += found
+            if found:
+                continue
+        reading.unusable.add(scope.prefix + name)
     return drafts
 
 

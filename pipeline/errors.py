@@ -11,6 +11,8 @@ from __future__ import annotations
 import difflib
 from collections.abc import Iterable
 
+LONGEST = 500  # characters of a stranger's message
+
 
 class TangentryError(Exception):
     """Anything this package raises on purpose."""
@@ -39,6 +41,16 @@ class InputError(TangentryError):
 
 class NodeError(TangentryError):
     """A node failed through its own fault."""
+
+
+def one_line(error: BaseException) -> str:
+    """What a stranger's exception says, in one line of reasonable length.
+
+    >>> one_line(ValueError("first\\n  second"))
+    'ValueError: first second'
+    """
+    text = f"{type(error).__name__}: {' '.join(str(error).split())}"
+    return text if len(text) <= LONGEST else text[: LONGEST - 3] + "..."
 
 
 def nearest(found: str, possible: Iterable[str]) -> str:

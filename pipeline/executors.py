@@ -27,6 +27,7 @@ from tangentry.pipeline.plan import Parts, StepId, asset_steps, relative_digest
 from tangentry.pipeline.remote import open_store
 from tangentry.pipeline.store import Store
 from tangentry.pipeline.work import Bench, Done, Event, Started
+from tangentry.pipeline.writing import end_at_once
 
 GRACE = 0.5  # seconds for a worker to tidy up
 DEATHS_IN_A_ROW = 3  # of workers that had not begun a step: then something is wrong with all of them
@@ -176,8 +177,8 @@ def work(pipe: Connection, orders: Orders) -> None:
     import signal
 
     signal.signal(signal.SIGINT, signal.SIG_IGN)  # the main process ends its workers
-    signal.signal(signal.SIGTERM, signal.default_int_handler)  # and lets them tidy up what they were just writing
-    with contextlib.suppress(EOFError, ConnectionError, KeyboardInterrupt):
+    signal.signal(signal.SIGTERM, lambda *_: end_at_once(128 + signal.SIGTERM))
+    with contextlib.suppress(EOFError, ConnectionError):
         while True:
             unsent: list[Event | Finished] = []
             for event in _carry(orders, pipe.recv()):

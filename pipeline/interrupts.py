@@ -9,12 +9,13 @@ place was written whole, and what was kept is found again.
 from __future__ import annotations
 
 import contextlib
-import os
 import signal
 import socket
 import sys
 import threading
 from collections.abc import Iterator
+
+from tangentry.pipeline.writing import end_at_once
 
 GRACE = 1.0  # seconds to end in an orderly way
 TOLD = "\ninterrupted: what was made is kept, and the next build goes on from there"
@@ -47,4 +48,4 @@ def _listen(ours: socket.socket, ended: threading.Event) -> None:
     while told := ours.recv(1):
         if told[0] == signal.SIGINT and not ended.wait(GRACE):
             print(TOLD, file=sys.stderr, flush=True)
-            os._exit(EXIT_CODE)
+            end_at_once(EXIT_CODE)

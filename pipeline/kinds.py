@@ -19,7 +19,7 @@ from functools import cached_property
 from pathlib import Path
 from typing import Any
 
-from tangentry.pipeline.errors import GraphError, nearest
+from tangentry.pipeline.errors import GraphError, nearest, one_line
 from tangentry.pipeline.flow import InputFile, OutputFile
 from tangentry.pipeline.homes import Home, installed_homes, project_home
 
@@ -154,7 +154,7 @@ def _read_kind(name: str, home: Home, path: Path) -> Kind:
     try:
         function = home.load(path)
     except (Exception, SystemExit) as error:  # whatever a stranger's module does on import, the graph can't use it
-        raise GraphError(f"{path}: can't be imported: {type(error).__name__}: {error}") from error
+        raise GraphError(f"{path}: can't be imported: {one_line(error)}") from error
     return kind_of(function, path, *home.source(path))
 
 
@@ -163,7 +163,7 @@ def kind_of(function: Callable[..., Any], home: Path = Path(), source: str = "",
     try:
         hints = typing.get_type_hints(function, include_extras=True)
     except Exception as error:  # an annotation may be any expression
-        raise GraphError(f"{home}: {function.__name__}: its annotations can't be read: {error}") from error
+        raise GraphError(f"{home}: {function.__name__}: its annotations can't be read: {one_line(error)}") from error
     about = inspect.getdoc(function) or ""
     inputs, settings = {}, {}
     for name, parameter in inspect.signature(function).parameters.items():

@@ -16,7 +16,7 @@ from typing import Any, NamedTuple
 
 import numpy as np
 from tangentry.pipeline.arrays import digest_array
-from tangentry.pipeline.store import StoreError
+from tangentry.pipeline.store import unwritable
 
 SETTLED_NS = 2_000_000_000  # a file that changed this shortly before its digest was taken may change again unseen
 TABLES = """
@@ -56,7 +56,7 @@ class Ledger:
     """The memory of one store. Only one process writes; workers open it to read."""
 
     def __init__(self, folder: Path, read_only: bool = False) -> None:
-        self.read_only = read_only
+        self.read_only, self._folder = read_only, folder
         self.hashed = 0
         self._files: dict[str, tuple[Stat, int, str]] = {}
         self._new_files: dict[str, tuple[Stat, int, str]] = {}
@@ -71,9 +71,7 @@ class Ledger:
                 folder.mkdir(parents=True, exist_ok=True)
                 self._base = _open(path)
         except (OSError, sqlite3.OperationalError) as error:
-            raise StoreError(
-                f"{folder}: the store can't be written ({error}); correct its permissions, or name another with --store"
-            ) from error
+            raise unwritable(folder, error) from error
         if self._base is not None:
             rows = self._rows("select path, size, mtime, inode, noted, digest from files", ())
             self._files = {row[0]: ((row[1], row[2], row[3]), row[4], row[5]) for row in rows}
@@ -168,9 +166,7 @@ class Ledger:
             self._base.executemany(statement, rows)
             self._base.commit()
         except sqlite3.DatabaseError as error:
-            raise StoreError(
-                f"the store's ledger can't be written ({error}); free some space, or name another store with --store"
-            ) from error
+            raise unwritable(self._folder, error) from error
 
 
 def _open(path: Path) -> sqlite3.Connection:

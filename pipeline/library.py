@@ -7,7 +7,7 @@ import fnmatch
 import glob
 import os
 import re
-from collections.abc import Collection
+from collections.abc import Collection, Iterator
 from pathlib import Path, PurePosixPath
 
 from tangentry.pipeline.errors import GraphError
@@ -41,9 +41,11 @@ def find_members(graph: Graph, written: Collection[str] = (), only: str | None =
     for pattern in graph.library:
         for one in unfold(pattern):
             fixed = _fixed_part(one)
-            for path in glob.iglob(one, root_dir=graph.folder, recursive=True):
+            for path in _matches(graph.folder, one):
                 if os.path.isfile(graph.folder / path) and os.path.abspath(graph.folder / path) not in written:
                     name = relative_name(path, graph.folder)
+                    if not _is_text(name):
+                        raise GraphError(f"{graph.library_mark}: {ascii(name)} is no text in UTF-8; rename the file")
                     found.setdefault(name, Member(name, Path(os.path.relpath(path, fixed or ".")).as_posix()))
     if not found:
         raise GraphError(
@@ -60,17 +62,46 @@ def find_members(graph: Graph, written: Collection[str] = (), only: str | None =
     return chosen
 
 
+def _is_text(name: str) -> bool:
+    try:
+        name.encode()
+    except UnicodeEncodeError:
+        return False
+    return True
+
+
 def looked_into(graph: Graph) -> list[str]:
     """The folders that a library's patterns look into: none changes unless a file or folder comes, goes or is renamed."""
     folders: list[str] = []
     for pattern in [one for written in graph.library for one in unfold(written)]:
         top = os.path.join(graph.folder, _fixed_part(pattern))
-        folders.append(top)
-        if WILD.search(os.path.dirname(pattern)):
-            for here, below, _ in os.walk(top):
-                below[:] = [name for name in below if not name.startswith(".")]
-                folders += [os.path.join(here, name) for name in below]
+        folders += _folders(top) if WILD.search(os.path.dirname(pattern)) else [top]
     return folders
+
+
+def _matches(folder: Path, pattern: str) -> Iterator[str]:
+    """The paths that match, relative to a folder; `**` stands for any folders, linked ones too."""
+    parts = pattern.split("/")
+    if "**" not in parts:
+        yield from glob.iglob(pattern, root_dir=folder)
+        return
+    place = parts.index("**")
+    tail = "/".join(parts[place + 1 :] or ["*"])
+    for top in glob.iglob("/".join(parts[:place]), root_dir=folder) if place else ["."]:
+        for here in _folders(os.path.join(folder, top)):
+            yield from _matches(folder, f"{glob.escape(os.path.relpath(here, folder))}/{tail}")
+
+
+def _folders(top: str) -> Iterator[str]:
+    """A folder and all below it; hidden ones left out, and links that lead back to where they are."""
+    for here, below, _ in os.walk(top, followlinks=True):
+        yield here
+        real = os.path.realpath(here) + os.sep
+        below[:] = [
+            name
+            for name in below
+            if not name.startswith(".") and not real.startswith(os.path.realpath(os.path.join(here, name)) + os.sep)
+        ]
 
 
 def relative_name(path: str | os.PathLike[str], folder: Path) -> str:

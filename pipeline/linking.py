@@ -104,6 +104,8 @@ def _find(
         kind, every = by_name[node].kind, False
     elif node in outer:
         kind, every = outer[node].kind, True
+    elif node in reading.unusable:
+        return None
     else:
         possible = [*by_name, *outer]
         reading.wrong(

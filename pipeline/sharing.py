@@ -45,9 +45,13 @@ class Turns:
         self._path = folder / "turns"
         self._file: IO[bytes] | None = None
 
-    def __del__(self) -> None:
+    def close(self) -> None:
+        """Let go of the file."""
         if self._file is not None:
             self._file.close()
+            self._file = None
+
+    __del__ = close
 
     @contextlib.contextmanager
     def of(self, key: str) -> Iterator[None]:

@@ -40,6 +40,15 @@ class StoreError(TangentryError):
     """The store can't be written or read; nothing that was in it is lost."""
 
 
+def unwritable(folder: Path, why: object) -> StoreError:
+    """The error of a store that can't be written."""
+    reason = getattr(why, "strerror", None) or why
+    return StoreError(
+        f"{folder}: the store can't be written ({reason}); free some space or correct its permissions, or name another "
+        "with --store"
+    )
+
+
 class Damaged(TangentryError):
     """An object is missing, or its content does not match its name; what made it must run again."""
 
@@ -135,6 +144,10 @@ class Store:
         text = json.dumps([dataclasses.asdict(one) for one in [result, *others]], separators=(",", ":"))
         self._write(path, lambda file: file.write(f"{digest_text(text)}\n{text}".encode()), replace=True)
 
+    def close(self) -> None:
+        """Let go of what is open."""
+        self.turns.close()
+
     # Care
 
     def size(self) -> dict[str, tuple[int, int]]:
@@ -225,10 +238,7 @@ class Store:
         try:
             write_whole(path, fill)
         except WriteError as error:
-            raise StoreError(
-                f"{self.folder}: the store can't be written ({error.reason}); free some space or correct its "
-                "permissions, or name another with --store"
-            ) from error
+            raise unwritable(self.folder, error.reason) from error
         self._send(path)
         return True
 

@@ -15,7 +15,7 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
-from tangentry.pipeline.errors import InputError, NodeError
+from tangentry.pipeline.errors import InputError, NodeError, one_line
 from tangentry.pipeline.flow import Files, Finding, Findings, InputFile
 from tangentry.pipeline.plan import KEY_FORMAT, Decision, Outcome, Parts, Reason, Step, StepId, decide, outcome_of
 from tangentry.pipeline.store import Damaged, Result, Store, StoreError
@@ -129,7 +129,7 @@ class Bench:
         except InputError as fault:
             error = str(fault)
         except (Exception, SystemExit) as fault:  # the one place where a node's own fault is caught, whatever it is
-            error = f'node "{step.node}" ({step.kind.name}) failed: {type(fault).__name__}: {fault}'
+            error = f'node "{step.node}" ({step.kind.name}) failed: {one_line(fault)}'
             detail = "".join(traceback.format_exception(fault))
         reads = self._side_reads(step, files)
         result = dataclasses.replace(result, reads=reads, error=error or None)

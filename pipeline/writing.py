@@ -9,12 +9,14 @@ import time
 from collections.abc import Callable
 from errno import EDQUOT, ENOSPC, EROFS
 from pathlib import Path
-from typing import Any
+from typing import Any, NoReturn
 
 from tangentry.pipeline.errors import TangentryError
 
 SUFFIX = ".unfinished"
 ABANDONED_AFTER = 3600.0  # seconds: whoever was writing it so long ago is no more
+
+_UNDER_WAY: set[Path] = set()  # temporary files of this process
 
 
 class WriteError(TangentryError):
@@ -32,6 +34,7 @@ def write_whole(path: Path, fill: Callable[[Any], object]) -> None:
     Raises WriteError where the disk is full, the place is read-only, and the like.
     """
     unfinished = path.with_name(f".{path.name[:80]}.{os.getpid()}.{secrets.token_hex(4)}{SUFFIX}")
+    _UNDER_WAY.add(unfinished)
     try:
         path.parent.mkdir(parents=True, exist_ok=True)
         with open(unfinished, "wb") as file:
@@ -43,6 +46,16 @@ def write_whole(path: Path, fill: Callable[[Any], object]) -> None:
         if isinstance(error, OSError):
             raise WriteError(path, error) from error
         raise
+    finally:
+        _UNDER_WAY.discard(unfinished)
+
+
+def end_at_once(code: int) -> NoReturn:
+    """End this process here and now, but for what it is just writing: that goes first."""
+    for path in list(_UNDER_WAY):
+        with contextlib.suppress(OSError):
+            path.unlink()
+    os._exit(code)
 
 
 def sweep(folder: Path) -> None:

@@ -15,6 +15,7 @@ from tangentry.pipeline.errors import GraphError
 
 DEEPEST = 40  # levels of nesting
 LONGEST = 10_000  # characters of one scalar
+LONGEST_KEY = 200
 LARGEST = 16_000_000  # bytes of a file
 
 INTEGER = re.compile(r"[-+]?[0-9]+")
@@ -161,6 +162,8 @@ def _mapping(mark: Mark, events: Any, file: str, problems: list[str], depth: int
         name = key.value if isinstance(key.value, str) else event.value if isinstance(event, yaml.ScalarEvent) else None
         if name is None:
             problems.append(f"{key.mark}: a key must be plain text")
+        elif len(name) > LONGEST_KEY:
+            problems.append(f"{key.mark}: {len(name)} characters in one key; at most {LONGEST_KEY} are read")
         elif name in keys:
             problems.append(f'{key.mark}: "{name}" is given twice; first at line {keys[name].line}')
         else:
