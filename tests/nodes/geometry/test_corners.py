@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import numpy as np
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 from hypothesis.extra.numpy import arrays
 from numpy.testing import assert_array_equal
@@ -14,6 +14,7 @@ from tangentry.nodes.model import Stream
 FEW = arrays(np.float32, st.tuples(st.integers(0, 600), st.just(2)), elements=st.sampled_from([0.0, -0.0, 1.5, -2.0]))
 
 
+@settings(deadline=None)
 @given(FEW)
 def test_labels_are_those_of_a_sort(values):
     """numpy.unique tells rows apart by sorting them."""
@@ -25,6 +26,7 @@ def test_labels_are_those_of_a_sort(values):
     assert_array_equal(where[made], first[label.ravel()])
 
 
+@settings(deadline=None)
 @given(FEW)
 def test_arrays_side_by_side_are_as_one(values):
     one, other = (distinct_values(*given)[0] for given in ((values,), (values[:, :1], values[:, 1:])))
