@@ -139,7 +139,14 @@ def plan_lines(planned: list[Planned]) -> list[str]:
 
 
 def plan_json(planned: list[Planned]) -> str:
-    """A plan as JSON, version 1: every step with its state and its reasons."""
+    """A plan as JSON, version 1. Within a version, keys are only added.
+
+    tangentry_plan   1
+    steps            every step: its asset ("" for those of `whole_library`), node and kind
+        state        "run", "reuse", "wait" (runs if what it waits for turns out changed), "skip" (an input that it needs
+                     is left out) or "blocked" (one that it needs failed)
+        reasons      as in the record; of "wait", the node that it waits for
+    """
     steps = [
         {
             "asset": one.step.asset,

@@ -56,7 +56,9 @@ def test_a_disk_that_fills_up_ends_the_build_in_one_message(project, limit, work
 def test_a_really_full_disk_ends_the_build_in_one_message_and_keeps_what_was_made(project, small_disk):
     for name in "defghijklmnop":
         project.write(f"props/{name}.txt", f"hello {name}\n")
-    project.edit("kinds/take.py", "np.arange(20000, dtype=np.uint8)", "np.full(20000, len(str(file)) + ord(words[6]), np.uint8)")
+    project.edit(
+        "kinds/take.py", "np.arange(20000, dtype=np.uint8)", "np.full(20000, len(str(file)) + ord(words[6]), np.uint8)"
+    )
 
     done = build(project.graph, "--store", small_disk)
 

@@ -50,7 +50,9 @@ def test_a_hundred_thousand_wrong_nodes_are_not_told_one_by_one(project, capsys)
 
 
 def test_a_chain_of_thousands_of_nodes_is_no_harm(project):
-    chain = "".join(f"  n{number}: {{node: loud, text: {f'n{number - 1}' if number else 'raw'}}}\n" for number in range(3000))
+    chain = "".join(
+        f"  n{number}: {{node: loud, text: {f'n{number - 1}' if number else 'raw'}}}\n" for number in range(3000)
+    )
     project.write("graph.yaml", HEAD + RAW + chain)
 
     assert main(["plan", str(project.graph), "--asset", "a"]) == 0
@@ -106,7 +108,11 @@ def test_a_kind_whose_module_fails_on_import_is_told_with_its_file(project, caps
 )
 @pytest.mark.parametrize("workers", [1, 2])
 def test_a_node_that_returns_what_it_must_not_costs_its_step_alone(project, returned, why, workers):
-    project.edit("kinds/loud.py", "return replace(", f"import numpy as np\n    return {returned} if 'b' in text.words else replace(")
+    project.edit(
+        "kinds/loud.py",
+        "return replace(",
+        f"import numpy as np\n    return {returned} if 'b' in text.words else replace(",
+    )
 
     record = project.build(workers=workers)
 
