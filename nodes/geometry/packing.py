@@ -2,7 +2,7 @@
 
 short, byte   each component as a signed normalised integer: c = round(n * most), n = c / most, most 32767 or 127
 10-10-10-2    the same with 10 bits each in one word, x lowest; two bits on top hold the side: 1 or -1
-octahedral    two signed 16-bit numbers, the octahedron unfolded (Cigolle et al. 2014), the nearest code of four
+octahedral    two signed 16-bit numbers, the octahedron unfolded, see octahedron.py
 quaternion    the rotation that turns x, y, z into tangent, bitangent and normal of the right-handed frame, signed
               16-bit, its w never 0: the sign of w is the side (the rotation of q and -q is one; Shoemake 1985)
 """
@@ -10,6 +10,7 @@ quaternion    the rotation that turns x, y, z into tangent, bitangent and normal
 from __future__ import annotations
 
 import numpy as np
+from tangentry.nodes.geometry.octahedron import octahedral_codes, octahedral_directions
 from tangentry.pipeline.flow import Array
 
 SHORT, BYTE, TEN = 32767, 127, 511
@@ -44,34 +45,12 @@ def unpack_words(words: Array) -> Array:
 
 def pack_octahedral(vectors: Array) -> Array:
     """(n, 2) int16 of (n, 3) unit vectors."""
-    low = np.floor(_unfolded(vectors.astype(np.float64)) * SHORT)
-    best, nearest = low, np.full(len(vectors), -np.inf)
-    for corner in ((0, 0), (1, 0), (0, 1), (1, 1)):
-        tried = np.clip(low + corner, -SHORT, SHORT)
-        cosine = np.einsum("ij,ij->i", _folded(tried / SHORT), vectors)
-        best = np.where((cosine > nearest)[:, None], tried, best)
-        nearest = np.maximum(nearest, cosine)
-    return best.astype(np.int16)
+    return (octahedral_codes(vectors, 2 * SHORT) - SHORT).astype(np.int16)
 
 
 def unpack_octahedral(codes: Array) -> Array:
     """(n, 3) float32, unit: the inverse of `pack_octahedral`."""
-    return _folded(codes / float(SHORT)).astype(np.float32)
-
-
-def _unfolded(vectors: Array) -> Array:
-    flat = vectors[:, :2] / np.maximum(np.abs(vectors).sum(axis=1, keepdims=True), 1e-30)
-    over = (1 - np.abs(flat[:, ::-1])) * np.where(flat >= 0, 1, -1)
-    out: Array = np.where(vectors[:, 2:] < 0, over, flat)
-    return out
-
-
-def _folded(flat: Array) -> Array:
-    z = 1 - np.abs(flat).sum(axis=1, keepdims=True)
-    over = (1 - np.abs(flat[:, ::-1])) * np.where(flat >= 0, 1, -1)
-    vectors = np.concatenate([np.where(z < 0, over, flat), z], axis=1)
-    out: Array = vectors / np.sqrt(np.einsum("ij,ij->i", vectors, vectors))[:, None]
-    return out
+    return octahedral_directions(codes.astype(np.int32) + SHORT, 2 * SHORT)
 
 
 def pack_quaternions(normals: Array, tangents: Array) -> Array:

@@ -3,7 +3,7 @@
     unorm       -1..1 over the whole range of codes, in three channels: c = (n + 1) / 2 * most
     snorm       codes offset by half: 128 (32768) is exactly 0
     xy          two channels as unorm; z is rebuilt: sqrt(1 - x^2 - y^2)
-    octahedral  two channels, the octahedron unfolded (Cigolle et al. 2014)
+    octahedral  two channels, the octahedron unfolded, the nearest code of four (Cigolle et al. 2014)
     float       three float32 channels, as they are
 
 Green up stores y as it is; green down stores -y.
@@ -14,10 +14,14 @@ from __future__ import annotations
 from dataclasses import replace
 
 import numpy as np
+from numba import njit
+from tangentry.nodes.geometry.octahedron import octahedral_codes, octahedral_directions
 from tangentry.nodes.model import Sheet
 from tangentry.pipeline.flow import Array
 
 ENCODINGS = ("unorm", "snorm", "xy", "octahedral", "float")
+DOWN = np.array([1, -1, 1], np.float32)
+AHEAD = np.array([0, 0, 1], np.float32)
 
 
 def most(bits: int) -> int:
@@ -25,21 +29,47 @@ def most(bits: int) -> int:
     return (1 << bits) - 1
 
 
-def encode_normals(normals: Array, encoding: str, bits: int, green: str) -> Array:
-    """Codes, (height, width, 2 or 3) uint8 or uint16 (float32 for "float"), of (height, width, 3) float32 unit normals."""
+def encode_normals(normals: Array, encoding: str, bits: int, green: str, diffuse: bool = False) -> Array:
+    """Codes, (height, width, 2 or 3) uint8 or uint16, float32 for "float", of unit normals (height, width, 3) float32.
+
+    diffuse   hand what rounding loses on to the texels that follow (Floyd & Steinberg 1976); not for octahedral codes
+    """
     if green == "down":
-        normals = normals * np.array([1, -1, 1], np.float32)
+        normals = normals * DOWN
     if encoding == "float":
         return np.ascontiguousarray(normals, np.float32)
     top = most(bits)
-    if encoding == "snorm":
-        half = top // 2
-        codes = np.rint(normals * half) + half + 1
-    elif encoding == "octahedral":
-        codes = np.rint((_unfold(normals) + 1) / 2 * top)
+    if encoding == "octahedral":
+        codes = octahedral_codes(normals.reshape(-1, 3), top).reshape(*normals.shape[:2], 2)
     else:
-        codes = np.rint((normals[..., : 2 if encoding == "xy" else 3].astype(np.float64) + 1) / 2 * top)
-    return np.clip(codes, 0, top).astype(np.uint8 if bits == 8 else np.uint16)
+        components = normals[..., : 2 if encoding == "xy" else 3].astype(np.float64)
+        codes = components * (top // 2) + top // 2 + 1 if encoding == "snorm" else (components + 1) / 2 * top
+        if diffuse:
+            _diffuse(codes, float(top))
+    return np.clip(np.rint(codes), 0, top).astype(np.uint8 if bits == 8 else np.uint16)
+
+
+@njit(cache=True, nogil=True)
+def _diffuse(codes: Array, top: float) -> None:
+    """Round (height, width, channels) in place, row by row, every other one backward."""
+    height, width, channels = codes.shape
+    for r in range(height):
+        step = 1 if r % 2 == 0 else -1
+        for k in range(width):
+            c = k if step == 1 else width - 1 - k
+            for channel in range(channels):
+                wanted = codes[r, c, channel]
+                given = min(max(np.rint(wanted), 0.0), top)
+                codes[r, c, channel] = given
+                lost = wanted - given
+                if 0 <= c + step < width:
+                    codes[r, c + step, channel] += lost * 7 / 16
+                    if r + 1 < height:
+                        codes[r + 1, c + step, channel] += lost / 16
+                if r + 1 < height:
+                    codes[r + 1, c, channel] += lost * 5 / 16
+                    if 0 <= c - step < width:
+                        codes[r + 1, c - step, channel] += lost * 3 / 16
 
 
 def decode_texels(texels: Array, encoding: str, green: str) -> Array:
@@ -47,36 +77,25 @@ def decode_texels(texels: Array, encoding: str, green: str) -> Array:
     if encoding == "float" or texels.dtype.kind == "f":
         normals = texels[..., :3].astype(np.float32)
     else:
-        top = np.iinfo(texels.dtype).max
-        if encoding == "snorm":
-            half = top // 2
-            normals = (texels[..., :3].astype(np.float32) - (half + 1)) / half
-        else:
-            normals = texels[..., :3].astype(np.float32) * np.float32(2 / top) - 1
-        if encoding == "octahedral":
-            normals = _fold(normals[..., :2])
-        elif encoding == "xy" or normals.shape[2] == 2:
-            x, y = normals[..., 0], normals[..., 1]
-            normals = np.stack([x, y, np.sqrt(np.maximum(0, 1 - x * x - y * y))], axis=-1)
+        normals = _directions(texels, encoding, int(np.iinfo(texels.dtype).max))
     length = np.sqrt(np.einsum("...i,...i->...", normals, normals))[..., None]
-    normals = np.where(length > 0, normals / np.where(length > 0, length, 1), np.array([0, 0, 1], np.float32)).astype(
-        np.float32
-    )
-    return normals * np.array([1, -1, 1], np.float32) if green == "down" else normals
+    normals = np.where(length > 0, normals / np.where(length > 0, length, 1), AHEAD).astype(np.float32)
+    return normals * DOWN if green == "down" else normals
 
 
-def _unfold(normals: Array) -> Array:
-    """(..., 2) in -1..1: the octahedron's upper half as a diamond, the lower folded over its edges."""
-    flat = normals[..., :2] / np.abs(normals).sum(axis=-1, keepdims=True)
-    folded = (1 - np.abs(flat[..., ::-1])) * np.where(flat >= 0, 1, -1)
-    out: Array = np.where(normals[..., 2:] < 0, folded, flat)
-    return out
-
-
-def _fold(flat: Array) -> Array:
-    z = 1 - np.abs(flat).sum(axis=-1, keepdims=True)
-    folded = (1 - np.abs(flat[..., ::-1])) * np.where(flat >= 0, 1, -1)
-    return np.concatenate([np.where(z < 0, folded, flat), z], axis=-1).astype(np.float32)
+def _directions(texels: Array, encoding: str, top: int) -> Array:
+    """(height, width, 3) float32, not normalised."""
+    if encoding == "octahedral":
+        codes = texels[..., :2].astype(np.int32).reshape(-1, 2)
+        return octahedral_directions(codes, top).reshape(*texels.shape[:2], 3)
+    if encoding == "snorm":
+        half = top // 2
+        return (texels[..., :3].astype(np.float32) - np.float32(half + 1)) / np.float32(half)
+    normals = texels[..., :3].astype(np.float32) * np.float32(2 / top) - 1
+    if encoding == "xy" or normals.shape[2] == 2:
+        x, y = normals[..., 0], normals[..., 1]
+        return np.stack([x, y, np.sqrt(np.maximum(0, 1 - x * x - y * y))], axis=-1)
+    return normals
 
 
 def decoded(sheet: Sheet) -> Array:
@@ -84,7 +103,7 @@ def decoded(sheet: Sheet) -> Array:
     return decode_texels(sheet.texels, sheet.encoding, sheet.green)
 
 
-def encoded(sheet: Sheet, encoding: str, bits: int, green: str) -> Sheet:
+def encoded(sheet: Sheet, encoding: str, bits: int, green: str, diffuse: bool = False) -> Sheet:
     """A sheet's normals in another encoding. Codes that only change the side of green are flipped exactly."""
     wanted = np.uint8 if bits == 8 else np.uint16
     if (
@@ -97,7 +116,8 @@ def encoded(sheet: Sheet, encoding: str, bits: int, green: str) -> Sheet:
             texels = texels.copy()
             texels[..., 1] = most(bits) - texels[..., 1]
         return replace(sheet, texels=texels, green=green)
-    return replace(sheet, texels=encode_normals(decoded(sheet), encoding, bits, green), encoding=encoding, green=green)
+    texels = encode_normals(decoded(sheet), encoding, bits, green, diffuse)
+    return replace(sheet, texels=texels, encoding=encoding, green=green)
 
 
 def as_gltf_texels(sheet: Sheet) -> Array:

@@ -1,4 +1,4 @@
-"""What few bits cost: angles against figures that an independent program found in float64, for a million uniform normals
+"""What few bits cost, as angles: figures that an independent program found in float64 for a million uniform normals
 of the hemisphere (PCG64, seed 0). The forms are those of Cigolle et al., JCGT 2014, and of the glTF extension
 KHR_mesh_quantization; for those that nobody tabulated, half a step of the code bounds the angle."""
 
