@@ -27,7 +27,6 @@ from tangentry.pipeline.plan import (
     Step,
     StepId,
     all_steps,
-    asset_steps,
     assets_of,
     lay_out,
     plan,
@@ -199,7 +198,8 @@ class _Build:
         return {(asset, node): self.last[asset, node] for node in self.graph.per_asset if (asset, node) in self.last}
 
     def _carry_here(self, task: Task) -> Iterator[Event]:
-        yield from self.bench.carry(asset_steps(self.graph, task.member), task.last, task.refuse)
+        steps = [self.step_of((task.member.name, node)) for node in self.graph.per_asset]
+        yield from self.bench.carry(steps, task.last, task.refuse)
         self.bench.forget()
 
     def _whole_library(self) -> None:
@@ -255,9 +255,9 @@ class _Build:
         for id, parts in self.parts.items():
             step = self.step_of(id)
             for path in [*step.reads.values(), *side_files(step, parts.get("reads", {}))]:
-                yield self.graph.folder / path
+                yield os.path.join(self.graph.folder, path)
         for name in self.outputs.claimed:
-            yield self.site.home / name
+            yield os.path.join(self.site.home, name)
 
     def _conclude(self, tidy: bool) -> Record:
         self.record.assets = list(self.assets.values())

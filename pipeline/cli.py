@@ -103,6 +103,12 @@ def _read(chosen: argparse.Namespace) -> Graph:
     return read_graph(chosen.graph, sets)
 
 
+def _write(file: str, content: bytes) -> None:
+    from tangentry.pipeline.writing import write_whole
+
+    write_whole(Path(file), lambda opened: opened.write(content))
+
+
 # build
 
 
@@ -133,8 +139,10 @@ def _build(chosen: argparse.Namespace) -> int:
 
     store, _ = store_place(Path(chosen.graph), chosen.store)
     asked = [os.path.abspath(chosen.graph), chosen.store or "", chosen.asset or "", *chosen.set]
-    word = None if chosen.record or chosen.tidy or chosen.overwrite or chosen.watch else unbroken(store, asked)
+    word = None if chosen.tidy or chosen.overwrite or chosen.watch else unbroken(store, asked)
     if word is not None:
+        if chosen.record:
+            _write(chosen.record, word.record)
         print(word.text)
         return word.code
     began = time.time()
@@ -142,7 +150,8 @@ def _build(chosen: argparse.Namespace) -> int:
     if record.lasting:
         from tangentry.pipeline.terminal import told_again
 
-        seal(store, asked, record.rests_on, Word("\n".join(told_again(record)), code))
+        again = record.unchanged().text().encode()
+        seal(store, asked, record.rests_on, Word("\n".join(told_again(record)), code, again))
     return _watch(chosen, record, store, began) if chosen.watch else code
 
 
@@ -150,7 +159,6 @@ def _build_once(chosen: argparse.Namespace) -> tuple[Record, int]:
     from tangentry.pipeline.build import run_build
     from tangentry.pipeline.interrupts import heard_at_once
     from tangentry.pipeline.terminal import Progress, closing_lines
-    from tangentry.pipeline.writing import write_whole
 
     graph = _read(chosen)
     with Progress() as progress, heard_at_once():
@@ -166,7 +174,7 @@ def _build_once(chosen: argparse.Namespace) -> tuple[Record, int]:
             listener=progress.asset,
         )
     if chosen.record:
-        write_whole(Path(chosen.record), lambda file: file.write(record.text().encode()))
+        _write(chosen.record, record.text().encode())
     print("\n".join(closing_lines(record)), flush=True)
     return record, 0 if record.sound else 1
 
@@ -219,11 +227,10 @@ def _draw_words(parser: argparse.ArgumentParser) -> None:
 def _draw(chosen: argparse.Namespace) -> int:
     from tangentry.pipeline.build import read_last_record
     from tangentry.pipeline.draw import draw
-    from tangentry.pipeline.writing import write_whole
 
     graph = _read(chosen)
     picture = draw(graph, read_last_record(graph, chosen.store))
-    write_whole(Path(chosen.output), lambda file: file.write(picture.encode()))
+    _write(chosen.output, picture.encode())
     print(f"drawn     {chosen.output}")
     return 0
 

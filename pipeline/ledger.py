@@ -12,6 +12,7 @@ import sqlite3
 import time
 from collections.abc import Iterable, Sequence
 from pathlib import Path
+from stat import S_ISREG
 from typing import Any, NamedTuple
 
 import numpy as np
@@ -39,12 +40,12 @@ Stat = tuple[int, int, int]  # size, mtime in nanoseconds, inode
 
 
 def stat_of(path: str | os.PathLike[str]) -> Stat | None:
-    """Size, modification time and inode of a file; None where there is none."""
+    """Size, modification time and inode of a file; None where there is no file."""
     try:
         found = os.stat(path)
     except (OSError, ValueError):
         return None
-    return found.st_size, found.st_mtime_ns, found.st_ino
+    return (found.st_size, found.st_mtime_ns, found.st_ino) if S_ISREG(found.st_mode) else None
 
 
 def digest_file(path: str | os.PathLike[str]) -> str:
@@ -79,7 +80,7 @@ class Ledger:
     def digest_of(self, path: str | os.PathLike[str]) -> str | None:
         """Digest of a file as it is now, from memory where its size, time and inode are unchanged; None: no such file."""
         name, now = os.path.abspath(path), stat_of(path)
-        if now is None or not os.path.isfile(name):
+        if now is None:
             return None
         remembered = self._files.get(name)
         if remembered is not None:

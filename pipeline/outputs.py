@@ -38,6 +38,7 @@ class Outputs:
 
     def __post_init__(self) -> None:
         self._known = self.ledger.outputs()
+        self._places: dict[str, str] = {}  # folder -> the same, as the ledger names it
         self._by_step: dict[StepId, list[str]] = {}
         for name, one in self._known.items():
             if one.graph == self.graph:
@@ -63,7 +64,7 @@ class Outputs:
 
     def _place(self, path: str, id: StepId, digest: str, content_of: Callable[[str], Array]) -> None:
         target = self.folder / path
-        name = os.path.relpath(target.resolve(), self.home)
+        name = self._name(target)
         if self.claimed.setdefault(name, id) != id:
             raise OutputError(
                 f"{path}: is also made by {' '.join(self.claimed[name])}; put {{stem}} or {{below}} into its name"
@@ -80,6 +81,13 @@ class Outputs:
             self.ledger.note_output(name, record)
         if altered:
             self._write(target, path, digest, content_of)
+
+    def _name(self, target: Path) -> str:
+        """A file's name in the ledger."""
+        place, last = os.path.split(target)
+        if place not in self._places:
+            self._places[place] = os.path.relpath(os.path.realpath(place), self.home)
+        return os.path.normpath(os.path.join(self._places[place], last))
 
     def _write(self, target: Path, path: str, digest: str, content_of: Callable[[str], Array]) -> None:
         content = content_of(digest)

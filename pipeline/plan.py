@@ -326,13 +326,14 @@ def outcome_of(step: Step, decision: Decision) -> Outcome:
     return None if decision.state == "blocked" else dict.fromkeys(step.kind.outputs)
 
 
-def relative_digest(folder: Path, digest_of: Callable[[Path], str | None]) -> Callable[[str], str | None]:
+def relative_digest(folder: Path, digest_of: Callable[[str], str | None]) -> Callable[[str], str | None]:
     """`digest_of` for paths relative to a graph's folder, each asked once."""
     seen: dict[str, str | None] = {}
+    home = os.path.abspath(folder)
 
     def ask(path: str) -> str | None:
         if path not in seen:
-            seen[path] = digest_of(folder / path)
+            seen[path] = digest_of(os.path.join(home, path))
         return seen[path]
 
     return ask

@@ -3,6 +3,7 @@
     line 1      JSON: what was asked, what to say, the exit code, when it was sealed, how many paths
     then        the paths, a line each
     then        size, modification time (ns) and inode of each, 64-bit integers; -1 -1 -1: not there
+    then        the record of building again with nothing changed
 
 Directories that the library's patterns look into are among the paths: a member that comes, goes or is renamed changes
 them. This file imports next to nothing: it stands on the path of a build that has nothing to do.
@@ -19,7 +20,7 @@ from pathlib import Path
 from typing import NamedTuple
 
 SETTLED_NS = 2_000_000_000  # what changed this shortly before the sealing may change again unseen
-VERSION = 1
+VERSION = 2
 
 
 class Word(NamedTuple):
@@ -27,6 +28,7 @@ class Word(NamedTuple):
 
     text: str
     code: int
+    record: bytes
 
 
 def store_place(graph: Path, store: str | os.PathLike[str] | None) -> tuple[Path, str]:
@@ -47,13 +49,13 @@ def unbroken(folder: Path, asked: list[str]) -> Word | None:
         if sealed["version"] != VERSION or sealed["asked"] != asked:
             return None
         paths = os.fsdecode(rest[: sealed["names"]]).split("\n")
-        stats = array("q")
-        stats.frombytes(rest[sealed["names"] :])
+        stats, end = array("q"), sealed["names"] + 24 * len(paths)
+        stats.frombytes(rest[sealed["names"] : end])
     except (OSError, ValueError, KeyError, TypeError):
         return None
     if len(stats) != 3 * len(paths) or _stats(paths) != stats:
         return None
-    return Word(sealed["text"], sealed["code"])
+    return Word(sealed["text"], sealed["code"], rest[end:])
 
 
 def seal(folder: Path, asked: list[str], paths: Iterable[Path | str], word: Word) -> bool:
@@ -68,9 +70,8 @@ def seal(folder: Path, asked: list[str], paths: Iterable[Path | str], word: Word
     head = {"version": VERSION, "asked": asked, "text": word.text, "code": word.code, "names": len(text)}
     from tangentry.pipeline.writing import write_whole
 
-    write_whole(
-        _place(folder, asked), lambda file: file.write(json.dumps(head).encode() + b"\n" + text + stats.tobytes())
-    )
+    content = b"".join([json.dumps(head).encode(), b"\n", text, stats.tobytes(), word.record])
+    write_whole(_place(folder, asked), lambda file: file.write(content))
     return True
 
 
