@@ -5,17 +5,19 @@ from __future__ import annotations
 import struct
 from typing import NamedTuple
 
+from tangentry.nodes.formats.exr import MAGIC, exr_size
 from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array
 
-READ = "PNG, JPEG, WebP and TIFF are read"
+READ = "PNG, JPEG, WebP, TIFF and EXR are read"
+HEADER = 1 << 20  # bytes in which an EXR header must end
 BAD = "the file is damaged or cut off: export it again"
 
 
 class ImageHeader(NamedTuple):
     """Format and size."""
 
-    format: str  # "PNG", "JPEG", "WebP" or "TIFF"
+    format: str  # "PNG", "JPEG", "WebP", "TIFF" or "EXR"
     width: int
     height: int
 
@@ -32,7 +34,9 @@ def read_header(content: Array, name: str) -> ImageHeader:
             return _checked(_webp(head), name)
         if head[:4] in (b"II*\0", b"MM\0*"):
             return _checked(_tiff(content.tobytes(), "<" if head[:2] == b"II" else ">"), name)
-    except (struct.error, IndexError):
+        if head.startswith(MAGIC):
+            return _checked(ImageHeader("EXR", *exr_size(content[:HEADER].tobytes(), name)), name)
+    except (struct.error, IndexError, ValueError):
         raise InputError(name, "header", "cut off", BAD) from None
     shown = head[:8].hex(" ")
     raise InputError(name, "", f"not an image that can be read (it begins with {shown}); {READ}", "save it as PNG")
@@ -90,6 +94,6 @@ def _tiff(data: bytes, order: str) -> ImageHeader:
 def is_image(content: Array) -> bool:
     """Does a file begin like an image that can be read?"""
     head = content[:12].tobytes()
-    return head.startswith((b"\x89PNG", b"\xff\xd8", b"II*\0", b"MM\0*")) or (
+    return head.startswith((b"\x89PNG", b"\xff\xd8", b"II*\0", b"MM\0*", MAGIC)) or (
         head[:4] == b"RIFF" and head[8:12] == b"WEBP"
     )

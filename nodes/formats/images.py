@@ -1,6 +1,7 @@
-"""Image files as texels, and back: PNG, TIFF, WebP and JPEG through imagecodecs, at their own bit depth.
+"""Image files as texels, and back: PNG, TIFF, WebP and JPEG through imagecodecs, EXR, at their own bit depth.
 
-The size is read from the header and held against a limit before anything is decoded: a small file can announce a huge image.
+The size is read from the header and held against a limit before anything is decoded: a small file can announce a huge
+image.
 """
 
 from __future__ import annotations
@@ -21,7 +22,7 @@ def read_image(content: Array, name: str, pixels: int = MOST_PIXELS) -> Array:
     pixels   the most that is decoded
 
     Palettes are looked up and 1-, 2- and 4-bit greys spread over 8 bits. Raises InputError naming the file and the
-    reason where it is no image, is cut off, is larger than the limit, or is of a kind that holds no plain channels (CMYK).
+    reason where it is no image, is cut off, is larger than the limit, or of a kind that holds no plain channels (CMYK).
     """
     if not len(content):
         raise InputError(name, "", "the file is empty", "export the image again")
@@ -49,6 +50,10 @@ def read_image(content: Array, name: str, pixels: int = MOST_PIXELS) -> Array:
 def _decode(content: Array, header: ImageHeader, name: str) -> Array:
     import imagecodecs
 
+    if header.format == "EXR":
+        from tangentry.nodes.formats.exr import read_exr
+
+        return read_exr(content, name)
     decoders = {
         "PNG": (imagecodecs.png_decode, imagecodecs.PngError),
         "JPEG": (imagecodecs.jpeg8_decode, imagecodecs.Jpeg8Error),
@@ -56,9 +61,13 @@ def _decode(content: Array, header: ImageHeader, name: str) -> Array:
         "TIFF": (imagecodecs.tiff_decode, imagecodecs.TiffError),
     }
     decode, trouble = decoders[header.format]
+    data = content.tobytes()
+    # The decoder makes up what is missing; entropy-coded data holds no marker but the end (ITU-T T.81, B.1.1.2).
+    if header.format == "JPEG" and data.rfind(b"\xff\xd9") < data.rfind(b"\xff\xda"):
+        raise InputError(name, "", "JPEG data without an end", "the file is damaged or cut off: export it again")
     try:
-        texels: Array = decode(content.tobytes())
-    except (trouble, ValueError, RuntimeError, MemoryError) as error:
+        texels: Array = decode(data)
+    except (trouble, ValueError, RuntimeError, MemoryError, IndexError, TypeError, OverflowError) as error:
         raise InputError(
             name,
             "",
@@ -87,3 +96,16 @@ def write_png(texels: Array) -> Array:
 
     plane = texels[:, :, 0] if texels.shape[2] == 1 else texels
     return np.frombuffer(imagecodecs.png_encode(np.ascontiguousarray(plane)), np.uint8)
+
+
+def write_tiff(texels: Array) -> Array:
+    """A TIFF file, (size,) uint8, of (height, width, 1 to 4) uint8, uint16 or float32 texels."""
+    import imagecodecs
+
+    plane = texels[:, :, 0] if texels.shape[2] == 1 else texels
+    kind = "minisblack" if texels.shape[2] < 3 else "rgb"
+    further = {"extrasample": "unassalpha"} if texels.shape[2] in (2, 4) else {}
+    packed = imagecodecs.tiff_encode(
+        np.ascontiguousarray(plane), photometric=kind, compression=imagecodecs.TIFF.COMPRESSION.ADOBE_DEFLATE, **further
+    )
+    return np.frombuffer(packed, np.uint8)

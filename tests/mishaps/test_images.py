@@ -1,0 +1,160 @@
+"""Odd, broken and hostile images: the right texels, or an error that names the file and the reason."""
+
+from __future__ import annotations
+
+import io
+import struct
+import zlib
+
+import imagecodecs
+import numpy as np
+import pytest
+from PIL import Image
+from tangentry.nodes.formats.images import read_image, write_png, write_tiff
+from tangentry.pipeline.errors import InputError
+
+COLOURS = np.random.default_rng(0).integers(0, 256, (9, 5, 3), dtype=np.uint8)
+
+
+def saved(image: Image.Image, format: str = "PNG", **how) -> np.ndarray:
+    out = io.BytesIO()
+    image.save(out, format, **how)
+    return np.frombuffer(out.getvalue(), np.uint8)
+
+
+def chunk(kind: bytes, data: bytes) -> bytes:
+    return struct.pack(">I", len(data)) + kind + data + struct.pack(">I", zlib.crc32(kind + data))
+
+
+def png(width: int, height: int, bits: int, colour: int, rows: bytes) -> np.ndarray:
+    """A PNG of any header (PNG specification, 11.2)."""
+    head = chunk(b"IHDR", struct.pack(">IIBBBBB", width, height, bits, colour, 0, 0, 0))
+    body = b"\x89PNG\r\n\x1a\n" + head + chunk(b"IDAT", zlib.compress(rows)) + chunk(b"IEND", b"")
+    return np.frombuffer(body, np.uint8)
+
+
+@pytest.mark.parametrize("shape", [(1, 1, 3), (1, 31, 1), (7, 1, 4), (33, 17, 3)])
+@pytest.mark.parametrize("write", [write_png, write_tiff])
+def test_odd_sizes_are_read(write, shape):
+    texels = np.random.default_rng(1).integers(0, 65536, shape).astype(np.uint16)
+
+    assert (read_image(write(texels), "a") == texels).all()
+
+
+def test_palettes_are_looked_up():
+    found = read_image(
+        saved(Image.fromarray(COLOURS).convert("P", palette=Image.Palette.ADAPTIVE, colors=256)), "a.png"
+    )
+
+    assert found.shape == COLOURS.shape and np.abs(found.astype(int) - COLOURS).max() <= 4
+
+
+def test_grey_with_alpha_has_two_channels():
+    grey = np.stack([COLOURS[..., 0], COLOURS[..., 1]], axis=2)
+
+    image = Image.merge("LA", [Image.fromarray(grey[..., k]) for k in (0, 1)])
+
+    assert (read_image(saved(image), "a.png") == grey).all()
+
+
+@pytest.mark.parametrize(
+    ("bits", "row", "expected"),
+    [
+        (1, b"\x00\xb0", [255, 0, 255, 255]),
+        (2, b"\x00\xe4", [255, 170, 85, 0]),
+        (4, b"\x00\xf0\x8c", [255, 0, 136, 204]),
+    ],
+)
+def test_few_bits_are_spread_over_eight(bits, row, expected):
+    assert read_image(png(4, 1, bits, 0, row), "a.png")[0, :, 0].tolist() == expected
+
+
+def test_interlaced_images_are_read():
+    assert (read_image(saved(Image.fromarray(COLOURS), "PNG", interlace=1), "a.png") == COLOURS).all()
+
+
+def test_jpeg_and_webp_are_read():
+    smooth = np.tile(np.linspace(0, 255, 64).astype(np.uint8)[:, None, None], (1, 64, 3))
+
+    assert (
+        np.abs(read_image(saved(Image.fromarray(smooth), "JPEG", quality=95), "a.jpg").astype(int) - smooth).max() < 6
+    )
+    assert (read_image(saved(Image.fromarray(COLOURS), "WEBP", lossless=True), "a.webp") == COLOURS).all()
+
+
+def test_cmyk_is_refused():
+    with pytest.raises(InputError, match=r"a\.jpg: .*CMYK"):
+        read_image(saved(Image.fromarray(COLOURS).convert("CMYK"), "JPEG"), "a.jpg")
+
+
+@pytest.mark.parametrize(
+    "content",
+    [
+        png(60_000, 60_000, 8, 2, b""),
+        png(2**31 - 1, 2, 1, 0, b""),
+        np.frombuffer(b"RIFF\x1e\0\0\0WEBPVP8X\x0a\0\0\0" + bytes(4) + b"\xff\xff\xff\xff\xff\xff", np.uint8),
+    ],
+    ids=["PNG", "PNG of one bit", "WebP"],
+)
+def test_a_small_file_cannot_announce_a_huge_image(content):
+    with pytest.raises(InputError, match=r"a: header: \d+ x \d+ pixels, more than the 268,435,456"):
+        read_image(content, "a")
+
+
+@pytest.mark.parametrize("format", ["PNG", "JPEG", "WEBP", "TIFF"])
+@pytest.mark.parametrize("share", [0, 0.02, 0.3, 0.7])
+def test_what_is_cut_off_is_refused(format, share):
+    whole = saved(Image.fromarray(np.random.default_rng(2).integers(0, 256, (40, 40, 3), dtype=np.uint8)), format)
+
+    with pytest.raises(InputError, match=r"a\.img"):
+        read_image(whole[: int(len(whole) * share)], "a.img")
+
+
+@pytest.mark.parametrize("format", ["PNG", "JPEG", "WEBP", "TIFF"])
+def test_any_byte_may_be_wrong(format):
+    whole = saved(Image.fromarray(COLOURS), format)
+    for at in range(len(whole)):
+        content = whole.copy()
+        content[at] ^= 0x5A
+        try:
+            texels = read_image(content, "a.img", pixels=10_000)
+        except InputError as error:
+            assert "a.img" in str(error)
+        else:
+            assert texels.ndim == 3
+
+
+@pytest.mark.parametrize(
+    "content", [b"", b"hello", b"GIF89a" + bytes(20), b"\x89PNG\r\n\x1a\n", b"\xff\xd8\xff", b"II*\0"]
+)
+def test_what_is_no_image_is_refused(content):
+    with pytest.raises(InputError, match=r"^a"):
+        read_image(np.frombuffer(content, np.uint8), "a")
+
+
+@pytest.mark.parametrize("bad", [np.nan, np.inf])
+def test_floats_must_be_finite(bad):
+    texels = np.ones((3, 4, 3), np.float32)
+    texels[1, 2, 0] = bad
+
+    with pytest.raises(InputError, match=r"a\.tif: pixel \(2, 1\): not a finite number"):
+        read_image(write_tiff(texels), "a.tif")
+
+
+def test_exr_must_be_finite_and_whole():
+    pytest.importorskip("OpenEXR", reason="the extra `exr` is not installed")
+    from tangentry.nodes.formats.exr import write_exr
+
+    texels = np.ones((8, 8, 3), np.float32)
+    whole = write_exr(texels, False, "a.exr")
+    texels[3, 5] = np.nan
+    with pytest.raises(InputError, match=r"a\.exr: pixel \(5, 3\)"):
+        read_image(write_exr(texels, False, "a.exr"), "a.exr")
+    for size in (4, 8, 40, len(whole) // 2, len(whole) - 4):
+        with pytest.raises(InputError, match=r"a\.exr"):
+            read_image(whole[:size], "a.exr")
+
+
+def test_signed_and_wide_whole_numbers_are_refused():
+    with pytest.raises(InputError, match="texels of type int32"):
+        read_image(np.frombuffer(imagecodecs.tiff_encode(np.ones((2, 2), np.int32)), np.uint8), "a.tif")
