@@ -24,6 +24,9 @@ def check(
     normal: float = 90.0,
     lean: float = 5.0,
     explained: float = 30.0,
+    animations: int = 0,
+    motion_skew: float = 15.0,
+    motion_stretch: float = 2.0,
     severity: dict[str, Literal["fault", "warning", "note", "off"]] = {},  # noqa: B006
     accept: dict[str, str] = {},  # noqa: B006
 ) -> Findings:
@@ -41,6 +44,9 @@ def check(
     normal      degrees that a normal may be from its face
     lean        degrees that a tangent may be off the plane of its normal
     explained   degrees that a tangent from the file may be from what the UVs give
+    animations  moments at which each animation of the file is looked at, evenly from its first key to its last; 0: none
+    motion_skew  degrees by which skew may grow while the mesh moves
+    motion_stretch  factor by which stretch may grow while the mesh moves
     severity    of findings, by id: fault, warning, note, or off
     accept      findings that are known, by id, each with the reason
 
@@ -50,6 +56,7 @@ def check(
     from tangentry.nodes.checks.facts import facts_of
     from tangentry.nodes.checks.frames import frame_findings
     from tangentry.nodes.checks.gutter import gutter_findings
+    from tangentry.nodes.checks.motion import motion_findings
     from tangentry.nodes.checks.overlap import overlap_findings
     from tangentry.nodes.checks.shape import shape_findings
     from tangentry.nodes.checks.stored import mixed_findings
@@ -72,9 +79,10 @@ def check(
             *vertex_findings(view),
             *frame_findings(view, lean, explained),
         ]
-    found += [*overlap_findings(views, overlap), *mixed_findings(asset, found)]
+    moving, growth = motion_findings(views, animations, motion_skew, motion_stretch)
+    found += [*overlap_findings(views, overlap), *mixed_findings(asset, found), *moving]
     judged = (_judged(one, severity, accept) for one in found if severity.get(one.id) != "off")
-    return Findings(asset.name, tuple(judged), facts_of(views))
+    return Findings(asset.name, tuple(judged), facts_of(views) | growth)
 
 
 def _judged(

@@ -43,6 +43,8 @@ IDS = (
     "side-wrong",
     "map-green-down",
     "convention-mixed",
+    "motion-skew",
+    "motion-stretch",
 )
 
 

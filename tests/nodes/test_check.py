@@ -288,7 +288,7 @@ def test_sides_and_green_are_judged_together(sides, green, expected):
 
 
 def test_every_id_has_its_way_of_being_broken():
-    assert set(IDS) == {*BREAKS, "convention-mixed", "map-green-down"}
+    assert set(IDS) == {*BREAKS, "convention-mixed", "map-green-down", "motion-skew", "motion-stretch"}
 
 
 @pytest.mark.parametrize("setting", ["severity", "accept"])
