@@ -53,7 +53,9 @@ def strip(folder: Path, moves: str, way: str = "LINEAR", change: Any = None) -> 
             {"name": "root", "translation": [5, 0, 0], "children": [2]},
             {"name": "end", "translation": [3, 0, 0]},
         ],
-        "skins": [{"joints": [1, 2], "inverseBindMatrices": making.accessor([m.T.copy() for m in bound], "f4", "MAT4")}],
+        "skins": [
+            {"joints": [1, 2], "inverseBindMatrices": making.accessor([m.T.copy() for m in bound], "f4", "MAT4")}
+        ],
         "animations": [
             {
                 "name": "lift",

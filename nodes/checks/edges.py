@@ -27,11 +27,11 @@ def _non_manifold(view: View) -> Iterator[Finding]:
     count = view.edges.faces
     many = (view.edges.edge >= 0) & (count[view.edges.edge] > 2) if len(count) else np.zeros(0, bool)
     if many.any():
-        corners = np.flatnonzero(many)
+        corners, edges = np.flatnonzero(many), int((count > 2).sum())
         yield view.finding(
             "edge-non-manifold",
             "warning",
-            f"edges with more than two faces: {int((count > 2).sum())}, {int(count.max())} faces at most",
+            f"{edges} edge{'s' if edges > 1 else ''} with more than two faces, up to {int(count.max())}",
             "separate the faces that should not share the edge",
             "corner",
             corners,

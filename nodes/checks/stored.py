@@ -121,16 +121,16 @@ def _green(view: View, defined: Array, opposite: Array) -> Iterator[Finding]:
 
 def mixed_findings(asset: Asset, found: list[Finding]) -> Iterator[Finding]:
     """Parts whose sides follow the rule beside parts whose sides are its opposite."""
-    flipped = {one.part for one in found if one.id == "side-flipped"}
-    stored = {
-        part.name for part in asset.parts if part.frames is not None and part.frames.method == "stored" and part.uvs
-    }
-    if flipped and stored - flipped:
+    flipped = sum(one.id == "side-flipped" for one in found)  # one for each part; names may be common to several
+    stored = sum(
+        part.frames is not None and part.frames.method == "stored" and bool(part.uvs) for part in asset.parts
+    )
+    if 0 < flipped < stored:
         yield Finding(
             "convention-mixed",
             "warning",
-            len(flipped),
-            f"sides are opposite to the rule on {len(flipped)} parts and follow it on {len(stored - flipped)}",
+            flipped,
+            f"sides are opposite to the rule on {flipped} parts and follow it on {stored - flipped}",
             "export all parts alike",
             "",
             "",

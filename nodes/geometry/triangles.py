@@ -24,8 +24,8 @@ def triangulate(part: Part) -> tuple[Array, Array]:
     """
     sizes = np.diff(part.starts)
     if len(sizes) and (sizes == 3).all():
-        corners = np.arange(len(part.points.index), dtype=np.int32).reshape(-1, 3)
-        return corners, np.arange(len(sizes), dtype=np.int32)
+        whole = np.arange(len(part.points.index), dtype=np.int32).reshape(-1, 3)
+        return whole, np.arange(len(sizes), dtype=np.int32)
     counts = np.maximum(sizes - 2, 0)
     face = np.repeat(np.arange(len(sizes), dtype=np.int32), counts)
     triangles = np.empty((len(face), 3), np.int32)

@@ -251,12 +251,20 @@ def test_the_poles_of_a_sphere_are_no_fault():
     assert not check(asset(framed(triangulated(sphere_part())))).faulty
 
 
+@pytest.mark.parametrize("method", ["face", "area", "angle"])
+def test_normals_built_over_faces_wound_against_each_other_hide_nothing(method):
+    _, broken, _ = BREAKS["winding-inconsistent"]
+
+    assert "winding-inconsistent" in found(check(normals(asset(broken), method=method)))
+
+
 def test_mirrored_charts_are_a_note():
     assert {item.severity for item in check(asset(framed(reflected(GRID)))).items} == {"note"}
 
 
-def test_two_parts_of_two_conventions_are_told_once_for_the_whole():
-    plain, flipped = stored(GRID), replace(stored(GRID, sides=-framed(GRID).frames.sides), name="other")
+@pytest.mark.parametrize("name", ["another", GRID.name])
+def test_two_parts_of_two_conventions_are_told_once_for_the_whole(name):
+    plain, flipped = stored(GRID), replace(stored(GRID, sides=-framed(GRID).frames.sides), name=name)
 
     assert found(check(asset(plain, flipped))) - found(check(asset(flipped))) == {"convention-mixed"}
 
