@@ -17,7 +17,7 @@ def write(map: Map, *, file: OutputFile | str, half: bool = False) -> Files:
     """The sheets of a map as image files.
 
     file  where to; its suffix says the format: .png, .tif, .exr; `*` in its name stands for the name of each sheet's
-          material
+          material; the levels of a mip chain add their numbers: stone_1.png
     half  EXR: 16-bit floats instead of 32-bit ones
 
     Codes go out as they are, directions in two channels with an empty third. What is held as floats goes into TIFF and
@@ -27,11 +27,16 @@ def write(map: Map, *, file: OutputFile | str, half: bool = False) -> Files:
     suffix = PurePosixPath(file).suffix.lower()
     if suffix not in WRITTEN:
         raise InputError(file, "", f'suffix "{suffix}" names no image format', f"write one of {', '.join(WRITTEN)}")
-    names = [file.replace("*", _plain(sheet.material)) for sheet in map.sheets]
+    names = [_name(file, sheet) for sheet in map.sheets]
     if len({name.lower() for name in names}) < len(names):
         raise InputError(file, "", f"{len(names)} sheets for one file", "put * into its name, for each material's name")
     sheets = zip(names, map.sheets, strict=True)
     return Files(tuple(OutFile(name, _image(sheet, suffix, half, name)) for name, sheet in sheets))
+
+
+def _name(file: str, sheet: Sheet) -> str:
+    name = PurePosixPath(file.replace("*", _plain(sheet.material)))
+    return str(name.with_stem(f"{name.stem}_{sheet.level}") if sheet.level else name)
 
 
 def _plain(material: str) -> str:

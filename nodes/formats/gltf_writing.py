@@ -80,7 +80,7 @@ def _place_maps(builder: Builder, maps: Map, stem: str, binary: bool, asset: Ass
     """Each normal map as the normalTexture of its material; one without its own sheet takes that which serves all."""
     files: list[OutFile] = []
     textures: dict[int, int] = {}
-    by_name = {sheet.material: number for number, sheet in enumerate(maps.sheets)}
+    by_name = {sheet.material: number for number, sheet in enumerate(maps.sheets) if sheet.level == 0}
     for number, sheet in enumerate(maps.sheets):
         if sheet.holds != "normal" or sheet.space not in ("tangent", ""):
             raise InputError(

@@ -6,6 +6,8 @@ image.
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 from tangentry.nodes.formats.image_headers import ImageHeader, read_header
 from tangentry.pipeline.errors import InputError
@@ -104,7 +106,7 @@ def write_tiff(texels: Array) -> Array:
 
     plane = texels[:, :, 0] if texels.shape[2] == 1 else texels
     kind = "minisblack" if texels.shape[2] < 3 else "rgb"
-    further = {"extrasample": "unassalpha"} if texels.shape[2] in (2, 4) else {}
+    further: dict[str, Any] = {"extrasample": "unassalpha"} if texels.shape[2] in (2, 4) else {}
     packed = imagecodecs.tiff_encode(
         np.ascontiguousarray(plane), photometric=kind, compression=imagecodecs.TIFF.COMPRESSION.ADOBE_DEFLATE, **further
     )

@@ -18,10 +18,11 @@ class Sheet:
         "unorm"  # "unorm": -1..1 over the code range; "snorm"; "xy": z rebuilt; "octahedral"; "float": as is
     )
     name: str = ""  # where it came from, for messages
+    level: int = 0  # of a mip chain: 0 is the map itself
 
 
 @flow_value
 class Map:
-    """One sheet per material that has one; a lone sheet with material "" serves all."""
+    """One sheet per material that has one, or a chain of levels of each; a lone sheet with material "" serves all."""
 
     sheets: tuple[Sheet, ...]
