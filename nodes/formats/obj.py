@@ -75,10 +75,10 @@ def _part(found: Statements, faces: Array, name: str, material: int, smoothing: 
     starts = np.concatenate([[0], np.cumsum(sizes)]).astype(np.int32)
     corners = found.corners
     if not whole:
-        corners = corners[np.repeat(found.starts[faces] - starts[:-1], sizes) + np.arange(starts[-1])]
-    points = used_rows(found.points, corners[:, 0])
-    colours = (used_rows(found.colours, corners[:, 0]),) if len(found.colours) else ()
+        corners = corners[:, np.repeat(found.starts[faces] - starts[:-1], sizes) + np.arange(starts[-1])]
+    points = used_rows(found.points, corners[0])
+    colours = (used_rows(found.colours, corners[0]),) if len(found.colours) else ()
     groups = None if smoothing is None else smoothing[faces]
-    uvs = sound_uvs(found.uvs, corners[:, 1], name, notes)
+    uvs = sound_uvs(found.uvs, corners[1], name, notes)
     part = Part(name, material, starts, points, None, (uvs,) if uvs else (), colours, groups)
-    return replace(part, normals=sound_normals(found.normals, corners[:, 2], part, notes))
+    return replace(part, normals=sound_normals(found.normals, corners[2], part, notes))

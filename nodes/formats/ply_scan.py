@@ -6,7 +6,7 @@ from typing import NamedTuple
 
 import numpy as np
 from numba import njit
-from tangentry.nodes.formats.scan import NEWLINE, as_text, as_words, read_number, shown, skip_space
+from tangentry.nodes.formats.scan import NEWLINE, SPACE, as_text, as_words, read_number, shown, signed, skip_space
 from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array, InputFile
 
@@ -25,6 +25,7 @@ SIZES = np.array([1, 1, 2, 2, 4, 4, 4, 8])
 ORDERS = {"ascii": "", "binary_little_endian": "<", "binary_big_endian": ">"}
 MOST = 2**31 - 1  # rows of an element, and values of its lists: what int32 numbers
 MOST_HEADER = 1 << 16  # bytes
+MOST_ALIKE = 1 << 10  # values of a list in rows that are read as one table
 AGAIN = "export the file again"
 
 
@@ -40,7 +41,7 @@ class Element(NamedTuple):
     """An element of the header."""
 
     name: str
-    count: int
+    rows: int
     properties: list[Property]
 
 
@@ -91,10 +92,12 @@ def read_header(file: InputFile, content: Array) -> Header:
                 order = ORDERS[words[1]]
             elif words[:1] == ["element"]:
                 elements.append(Element(words[1], _count(words[2]), []))
-            elif words[:2] == ["property", "list"]:
-                elements[-1].properties.append(Property(words[4], TYPES[words[3]], TYPES[words[2]]))
             elif words[:1] == ["property"]:
-                elements[-1].properties.append(Property(words[2], TYPES[words[1]], ""))
+                listed = words[1] == "list"
+                one = Property(words[-1], TYPES[words[-2]], TYPES[words[2]] if listed else "")
+                if len(words) != (5 if listed else 3) or one.name in {each.name for each in elements[-1].properties}:
+                    raise ValueError
+                elements[-1].properties.append(one)
             elif words[:2] == ["comment", "TextureFile"]:
                 textures.append(line.split(None, 2)[2].strip())
         except (IndexError, KeyError, ValueError):
@@ -118,12 +121,11 @@ def read_elements(file: InputFile, content: Array, header: Header) -> dict[str, 
         data = as_text(data)
     read: dict[str, Columns] = {}
     for element in header.elements:
-        if not element.properties or not element.count:
+        if not element.properties or not element.rows:
             read[element.name] = _empty(element)
-        elif header.order and not any(one.length for one in element.properties):
-            read[element.name], at = _table(file, data, at, element, header.order)
         else:
-            read[element.name], at = _rows(file, data, at, element, header.order)
+            table = _table(file, data, at, element, header.order) if header.order else None
+            read[element.name], at = table or _rows(file, data, at, element, header.order)
     return read
 
 
@@ -138,17 +140,38 @@ def _empty(element: Element) -> Columns:
     return Columns(scalars, lists, _whole(element))
 
 
-def _table(file: InputFile, data: Array, at: int, element: Element, order: str) -> tuple[Columns, int]:
-    """Binary rows without lists: all of one size, so nothing is copied."""
-    row = np.dtype([(f"{k}", order + one.kind) for k, one in enumerate(element.properties)])
-    end = at + row.itemsize * element.count
+def _table(file: InputFile, data: Array, at: int, element: Element, order: str) -> tuple[Columns, int] | None:
+    """Binary rows whose lists are all as long as those of the first: one size, one table. None where they are not."""
+    fields: list[tuple[str, str, tuple[int, ...]]] = []
+    lengths: dict[str, int] = {}
+    here = at
+    for k, one in enumerate(element.properties):
+        if one.length:
+            word = data[here : here + np.dtype(one.length).itemsize]
+            lengths[one.name] = (
+                int(word.view(order + one.length)[0]) if len(word) == np.dtype(one.length).itemsize else -1
+            )
+            if not 0 <= lengths[one.name] <= MOST_ALIKE:
+                return None
+            fields.append((f"{k} length", order + one.length, ()))
+            here += len(word)
+        fields.append((f"{k}", order + one.kind, (lengths.get(one.name, 1),) if one.length else ()))
+        here += np.dtype(one.kind).itemsize * lengths.get(one.name, 1)
+    row = np.dtype(fields)
+    end = at + row.itemsize * element.rows
     if end > len(data):
+        if lengths:
+            return None
         there = (len(data) - at) // row.itemsize
-        raise InputError(
-            file, f"{element.name} {there}", f"the file ends here, but announces {element.count} of them", AGAIN
-        )
+        found = f"the file ends here, but announces {element.rows} of them"
+        raise InputError(file, f"{element.name} {there}", found, AGAIN)
     rows = data[at:end].view(row)
-    return Columns({one.name: rows[f"{k}"] for k, one in enumerate(element.properties)}, {}, _whole(element)), end
+    named = [(f"{k}", one.name) for k, one in enumerate(element.properties)]
+    if any((rows[f"{k} length"] != lengths[name]).any() for k, name in named if name in lengths):
+        return None
+    lists = {name: (rows[k].reshape(-1), np.full(element.rows, lengths[name])) for k, name in named if name in lengths}
+    scalars = {name: rows[k] for k, name in named if name not in lengths}
+    return Columns(scalars, lists, _whole(element)), end
 
 
 def _rows(file: InputFile, data: Array, at: int, element: Element, order: str) -> tuple[Columns, int]:
@@ -159,17 +182,17 @@ def _rows(file: InputFile, data: Array, at: int, element: Element, order: str) -
     ascii, swap = order == "", order == ">"
     nothing = np.zeros((0, 0)), np.zeros(0), np.zeros((0, 0), np.int64), np.zeros(0, np.int64)
     totals = np.zeros(len(layout), np.int64)
-    row, end = _walk(data, at, element.count, layout, ascii, swap, False, totals, *nothing)
-    if row < element.count:
+    row, end = _walk(data, at, element.rows, layout, ascii, swap, False, totals, *nothing)
+    if row < element.rows:
         found = "the file ends here" if end >= len(data) else "a list or value that can't be read"
-        raise InputError(file, f"{element.name} {row}", f"{found}, but announces {element.count} of them", AGAIN)
+        raise InputError(file, f"{element.name} {row}", f"{found}, but announces {element.rows} of them", AGAIN)
     if int(totals.sum()) > MOST:
         raise InputError(file, f"element {element.name}", f"its lists hold {int(totals.sum())} values", AGAIN)
     first = np.concatenate([[0], np.cumsum(totals)])
     columns = len(layout)
-    scalars, lengths = np.empty((columns, element.count)), np.empty((columns, element.count), np.int64)
+    scalars, lengths = np.empty((columns, element.rows)), np.empty((columns, element.rows), np.int64)
     values = np.empty(first[-1])
-    _walk(data, at, element.count, layout, ascii, swap, True, totals, scalars, values, lengths, first)
+    _walk(data, at, element.rows, layout, ascii, swap, True, totals, scalars, values, lengths, first)
     named = dict(enumerate(element.properties))
     return (
         Columns(
@@ -235,12 +258,13 @@ def _next(
         while True:
             if at >= len(data):
                 return 0.0, -1
-            at = skip_space(data, at)
+            at = signed(skip_space(data, at))
             if data[at] != NEWLINE:
                 break
             at += 1
-        value, after = read_number(data, at)
-        return (value, after) if after > at and data[after] <= 32 else (0.0, -2)
+        value, end = read_number(data, at)
+        after = signed(end)
+        return (value, after) if after > at and data[after] <= SPACE else (0.0, -2)
     size = SIZES[code]
     if at + size > len(data):
         return 0.0, -1

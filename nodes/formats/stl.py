@@ -4,7 +4,17 @@ from __future__ import annotations
 
 import numpy as np
 from numba import njit
-from tangentry.nodes.formats.scan import as_text, as_words, read_number, skip_line, skip_space
+from tangentry.nodes.formats.scan import (
+    MOST_FLOAT,
+    ONE,
+    as_text,
+    as_words,
+    read_number,
+    signed,
+    skip_line,
+    skip_space,
+    skip_word,
+)
 from tangentry.nodes.geometry.corners import distinct_values
 from tangentry.nodes.model import Asset, Part, Stream
 from tangentry.pipeline.errors import InputError
@@ -68,45 +78,42 @@ def _ascii(file: InputFile, text: Array) -> tuple[list[str], list[int], Array]:
 
 
 @njit(cache=True, nogil=True)
-def _starts(text: Array, i: int, word: Array) -> bool:
-    at = 0
-    while at < len(word) and i + at < len(text) and text[i + at] | 32 == word[at]:
-        at += 1
-    return at == len(word)
+def _starts(text: Array, i: np.uint64, word: Array) -> bool:
+    for letter in word:  # none of them is a newline, which ends every text
+        if text[i] | 32 != letter:
+            return False
+        i += ONE
+    return True
 
 
 @njit(cache=True, nogil=True)
 def _walk(text: Array, points: Array, where: Array, take: bool) -> tuple[int, int, int]:
     """Count or take vertices and solids; gives both counts, and the offset of the first bad line or -1."""
     vertices = solids = corners = 0
-    i = 0
-    while i < len(text):
-        i = skip_space(text, i)
-        if i >= len(text):
-            break
+    i = line = np.uint64(0)
+    while i < np.uint64(len(text)):
+        line = i = skip_space(text, i)
         if _starts(text, i, VERTEX):
-            j = i + 6
+            i = skip_word(text, i)
             for axis in range(3):
-                j = skip_space(text, j)
-                value, after = read_number(text, j)
-                if after == j or not np.isfinite(value):
-                    return vertices, solids, i
+                i = skip_space(text, i)
+                value, after = read_number(text, i)
+                if after == i or not abs(value) <= MOST_FLOAT:
+                    return vertices, solids, signed(line)
                 if take:
                     points[vertices, axis] = value
-                    if not np.isfinite(points[vertices, axis]):
-                        return vertices, solids, i
-                j = after
+                i = after
             vertices += 1
             corners += 1
         elif _starts(text, i, OUTER):
             corners = 0
         elif _starts(text, i, ENDLOOP):
             if corners != 3:
-                return vertices, solids, i
+                return vertices, solids, signed(line)
             corners = 0
         elif _starts(text, i, SOLID):
             if take:
-                where[solids, 0], where[solids, 1] = vertices, i
+                where[solids, 0], where[solids, 1] = vertices, line
             solids += 1
         i = skip_line(text, i)
-    return vertices, solids, i - 1 if corners else -1
+    return vertices, solids, signed(line) if corners else -1
