@@ -27,20 +27,21 @@ def _squared(part: Part, method: str) -> Part:
     if part.frames is None or part.normals is None:
         return part
     from tangentry.nodes.geometry.corners import distinct_rows
-    from tangentry.nodes.geometry.vectors import axis_across, dot, reject, unit
+    from tangentry.nodes.geometry.vectors import axis_across, dot, reject, unit, unit_or_up
 
     index, first = distinct_rows(part.frames.index, part.normals.index)
     row = part.frames.index[first]
-    normal = part.normals.values[part.normals.index[first]]
+    normal = unit_or_up(part.normals.values[part.normals.index[first]])
     tangent, side = part.frames.tangents[row], part.frames.sides[row]
     if method == "polar":
         tangent = _middle(part.frames, row, normal, tangent, side)
     # Twice: one pass leaves rounding behind when the tangent leans on the normal.
     across = reject(unit(reject(tangent, normal)), normal)
-    lost = ~(dot(across, across) > 0.5)
+    lost = ~(dot(across, across) > 0.5) | (side == 0)
     squared = np.where(lost[:, None], axis_across(normal), unit(across)).astype(np.float32)
     fallback = part.frames.fallback[row] | lost
-    if len(first) == len(part.frames.tangents) and np.array_equal(squared, part.frames.tangents):
+    side = np.where(side == 0, np.int8(1), side)
+    if len(first) == len(part.frames.tangents) and not lost.any() and np.array_equal(squared, part.frames.tangents):
         return part if part.frames.bitangents is None else replace(part, frames=replace(part.frames, bitangents=None))
     return replace(
         part,

@@ -2,16 +2,17 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 from tangentry.nodes.geometry import averaging, mikktspace
 from tangentry.nodes.geometry.corners import distinct_corners, distinct_rows, distinct_values, divided
 from tangentry.nodes.geometry.directions import triangle_directions
 from tangentry.nodes.geometry.triangles import triangulate
-from tangentry.nodes.geometry.vectors import axis_across, dot, reject, unit
+from tangentry.nodes.geometry.vectors import axis_across, dot, reject, unit, unit_or_up
 from tangentry.nodes.model import Frames, Part, Stream
 from tangentry.pipeline.flow import Array
 
-UP = np.array([0.0, 0.0, 1.0])
 FLATTEST = 1e-6  # a tangent of which less than this is left across its normal points along it, and is no tangent
 
 
@@ -29,7 +30,10 @@ def solve_frames(part: Part, uv: Stream, uv_set: int, v_down: bool, method: str)
     cut = triangulate(part)
     solve = _by_scheme if method == "mikktspace" else _by_sums
     frames = solve(part, part.normals, uv, uv_set, v_down, method, *cut)
-    return frames if (frames.sides != 0).all() else _defined(part, part.normals, uv, v_down, frames, *cut)
+    if (frames.sides != 0).all():
+        return frames
+    with np.errstate(all="ignore"):  # values that are not finite are no offers
+        return _defined(part, part.normals, uv, v_down, _used(frames), *cut)
 
 
 def _by_scheme(
@@ -70,10 +74,25 @@ def _owner(part: Part) -> Array:
 
 def _mean_normals(normals: Stream, index: Array) -> Array:
     """(rows, 3) float32: the mean normal, unit, of the corners that have each row of an index."""
-    at_corners = normals.values[normals.index]
+    at_corners = unit(normals.values.astype(np.float64))[normals.index]
     total = np.stack([np.bincount(index, at_corners[:, axis]) for axis in range(3)], axis=1)
-    total[~(dot(total, total) > 0)] = UP
-    return unit(total).astype(np.float32)
+    return unit_or_up(total.astype(np.float64)).astype(np.float32)
+
+
+def _used(frames: Frames) -> Frames:
+    """The frames that corners have."""
+    used = np.zeros(len(frames.sides), bool)
+    used[frames.index] = True
+    if used.all():
+        return frames
+    return replace(
+        frames,
+        tangents=frames.tangents[used],
+        bitangents=None if frames.bitangents is None else frames.bitangents[used],
+        sides=frames.sides[used],
+        fallback=frames.fallback[used],
+        index=(np.cumsum(used, dtype=np.int32) - 1)[frames.index],
+    )
 
 
 def _defined(
@@ -106,7 +125,7 @@ def _face_tangents(
     owner = _owner(part)
     by_face = [np.bincount(face, column, part.face_count)[owner] for column in columns]
     total = np.stack([np.bincount(frames.index, column, len(frames.tangents)) for column in by_face], axis=1)
-    return unit(total[:, :3]), np.sign(total[:, 3]).astype(np.int8)
+    return unit(total[:, :3].astype(np.float64)), np.sign(total[:, 3]).astype(np.int8)
 
 
 def _lent(part: Part, frames: Frames, lost: Array) -> tuple[Array, Array]:

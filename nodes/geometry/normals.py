@@ -14,13 +14,12 @@ from numba import njit
 from tangentry.nodes.geometry.corners import distinct_rows, distinct_values
 from tangentry.nodes.geometry.triangles import triangulate
 from tangentry.nodes.geometry.unions import number, union
-from tangentry.nodes.geometry.vectors import dot, unit
+from tangentry.nodes.geometry.vectors import dot, unit, unit_or_up
 from tangentry.nodes.model import Part, Stream
 from tangentry.pipeline.flow import Array
 
-UP = np.array([0.0, 0.0, 1.0], np.float32)
 
-
+@np.errstate(all="ignore")  # positions that are not finite give no normal
 def build_normals(part: Part, method: str, crease: float = 30.0) -> Stream:
     """A part's normals; `crease` in degrees. A corner whose faces have no area gets (0, 0, 1)."""
     triangles, face = triangulate(part)
@@ -45,8 +44,8 @@ def build_normals(part: Part, method: str, crease: float = 30.0) -> Stream:
 
 def _sums(rows: Array, index: Array, count: int = 0) -> Array:
     """(n, 3) the sums of rows that have one index."""
-    total: Array = np.stack([np.bincount(index, rows[:, axis], count) for axis in range(3)], axis=1)
-    return total
+    total = np.stack([np.bincount(index, rows[:, axis], count) for axis in range(3)], axis=1)
+    return total.astype(np.float64)
 
 
 def _points_of(part: Part, corners: Array) -> Array:
@@ -54,8 +53,7 @@ def _points_of(part: Part, corners: Array) -> Array:
 
 
 def _finish(total: Array) -> Array:
-    normals = unit(total).astype(np.float32)
-    normals[~normals.any(axis=1)] = UP
+    normals: Array = unit_or_up(total).astype(np.float32)
     return normals
 
 

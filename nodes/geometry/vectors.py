@@ -13,9 +13,16 @@ def dot(a: Array, b: Array) -> Array:
 
 
 def unit(rows: Array) -> Array:
-    """(n, 3) rows of length one; rows without length stay zero."""
+    """(n, 3) rows of length one; rows without a length, or without a finite one, are zero."""
     length = np.sqrt(dot(rows, rows))[:, None]
-    out: Array = np.divide(rows, length, out=np.zeros_like(rows), where=length > 0)
+    out: Array = np.divide(rows, length, out=np.zeros_like(rows), where=(length > 0) & (length < np.inf))
+    return out
+
+
+def unit_or_up(rows: Array) -> Array:
+    """(n, 3) rows of length one; (0, 0, 1) for rows that have no direction."""
+    out = unit(rows)
+    out[~out.any(axis=1)] = (0, 0, 1)
     return out
 
 

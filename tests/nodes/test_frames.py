@@ -8,6 +8,7 @@ import numpy as np
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
+from hypothesis.extra.numpy import arrays
 from numpy.testing import assert_allclose
 from shapes import (
     asset,
@@ -25,6 +26,7 @@ from shapes import (
 from tangentry.nodes.frames import frames
 from tangentry.nodes.geometry.vectors import angle_between
 from tangentry.nodes.model import Asset, Frames, MapUse, Material, Morph, Part, Stream
+from tangentry.nodes.normals import normals
 from tangentry.nodes.orthogonalise import orthogonalise
 from tangentry.nodes.split import split
 from tangentry.pipeline.errors import InputError
@@ -280,3 +282,34 @@ def test_hard_edges_keep_frames_apart():
     made = orthogonalise(frames(asset(box_part()))).parts[0].frames
 
     assert len(made.tangents) == 24
+
+
+JUNK = st.sampled_from([0.0, -0.0, 1.0, 0.5, 1e-30, 1e-44, -3e38, 3e38, np.nan, np.inf, -np.inf])
+
+
+def junk(draw) -> Part:
+    """Faces of any size on points, normals and UVs that may be anything, many of them alike."""
+    sizes = draw(st.lists(st.integers(0, 7), min_size=1, max_size=6))
+    corners = sum(sizes)
+
+    def stream(width: int) -> Stream:
+        values = draw(arrays(np.float32, (5, width), elements=st.one_of(JUNK, st.floats(-2, 2, width=32))))
+        return Stream(values, draw(arrays(np.int32, corners, elements=st.integers(0, 4))))
+
+    points, normal, uv = stream(3), stream(3), stream(2)
+    return Part("junk", -1, np.cumsum([0, *sizes]).astype(np.int32), points, normal, (uv,))
+
+
+@settings(max_examples=150, deadline=None)
+@given(data=st.data(), method=st.sampled_from(METHODS), how=st.sampled_from(["gram-schmidt", "polar"]))
+def test_whatever_comes_in_no_frame_that_goes_out_is_undefined(data, method, how):
+    part = junk(data.draw)
+
+    for one in (asset(part), split(asset(part)), normals(asset(replace(part, normals=None)), method="angle")):
+        made = frames(one, method=method)
+        for framed in (made, orthogonalise(made, method=how)):
+            found = framed.parts[0].frames
+            assert_allclose(np.linalg.norm(found.tangents, axis=1), 1, atol=1e-5)
+            assert found.bitangents is None or np.isfinite(found.bitangents).all()
+            assert set(found.sides.tolist()) <= {-1, 1}
+            assert len(found.index) == part.corner_count
