@@ -40,13 +40,13 @@ def find_members(graph: Graph, written: Collection[str] = (), only: str | None =
     found: dict[str, Member] = {}
     for pattern in graph.library:
         for one in unfold(pattern):
-            fixed = _fixed_part(one)
+            fixed = graph.folder / _fixed_part(one)
             for path in _matches(graph.folder, one):
                 if os.path.isfile(graph.folder / path) and os.path.abspath(graph.folder / path) not in written:
                     name = relative_name(path, graph.folder)
                     if not _is_text(name):
                         raise GraphError(f"{graph.library_mark}: {ascii(name)} is no text in UTF-8; rename the file")
-                    found.setdefault(name, Member(name, Path(os.path.relpath(path, fixed or ".")).as_posix()))
+                    found.setdefault(name, Member(name, Path(os.path.relpath(graph.folder / path, fixed)).as_posix()))
     if not found:
         raise GraphError(
             f"{graph.library_mark}: no file matches {', '.join(graph.library)} (looked in {graph.folder.resolve()})"
