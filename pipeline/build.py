@@ -250,7 +250,7 @@ class _Build:
         """Every file and folder that this build depended on or made."""
         yield from self.graph.files
         for entry in [*self.graph.per_asset.values(), *self.graph.whole_library.values()]:
-            yield from entry.kind.files
+            yield from entry.kind.source.files
         yield from looked_into(self.graph)
         for id, parts in self.parts.items():
             step = self.step_of(id)

@@ -22,11 +22,25 @@ from pathlib import Path
 from typing import Any
 
 from tangentry.pipeline.errors import GraphError
-from tangentry.pipeline.sources import reached, source_digest
+from tangentry.pipeline.sources import digest_files, reached, versions_of
 from tangentry.pipeline.values import digest_text
 
 GROUP = "tangentry.nodes"
 PROJECT = "tangentry_project_"  # names of the packages that projects' folders become
+
+
+@dataclasses.dataclass(frozen=True)
+class Source:
+    """The source that a kind depends on, as it was when its digest was taken."""
+
+    digest: str
+    files: tuple[Path, ...]
+    versions: tuple[object, ...]
+
+    @property
+    def is_current(self) -> bool:
+        """Is it as it was? If not, what a function imports only when it is called may be newer than the digest."""
+        return self.versions == versions_of(self.files)
 
 
 @dataclasses.dataclass(frozen=True)
@@ -57,20 +71,25 @@ class Home:
                 found[path.stem] = path
         return found
 
-    def source(self, path: Path) -> tuple[str, tuple[Path, ...]]:
-        """Digest of the source that a file depends on, and the files of it."""
+    def source(self, path: Path) -> Source:
+        """The source that a file depends on."""
         package, folder = self._outermost
-        return source_digest(folder, path, package), tuple(sorted(reached(folder, path, package)))
+        files = tuple(sorted(reached(folder, path, package)))
+        versions = versions_of(files)  # before they are read: a change from now on is noticed
+        return Source(digest_files(folder, files), files, versions)
 
-    def load(self, path: Path) -> Callable[..., Any]:
-        """The function of a file, imported anew where anything in its package has changed since it was last imported."""
+    def refresh(self) -> None:
+        """Let everything be imported anew if anything in the package has changed since it was last imported."""
         _, folder = self._outermost
-        now = source_digest(folder, None)
+        now = digest_files(folder, sorted(folder.glob("**/*.py")))
         if _IMPORTED.setdefault(folder, now) != now:
             for name in [self.package, *(name for name, _ in _modules_below(folder))]:
                 sys.modules.pop(name, None)
             _PUT_AWAY.pop(folder, None)
             _IMPORTED[folder] = now
+
+    def load(self, path: Path) -> Callable[..., Any]:
+        """The function of a file."""
         if not self._is_project:
             function: Callable[..., Any] = getattr(importlib.import_module(f"{self.package}.{path.stem}"), path.stem)
             return function

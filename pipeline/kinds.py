@@ -21,7 +21,7 @@ from typing import Any
 
 from tangentry.pipeline.errors import GraphError, nearest, one_line
 from tangentry.pipeline.flow import InputFile, OutputFile
-from tangentry.pipeline.homes import Home, installed_homes, project_home
+from tangentry.pipeline.homes import Home, Source, installed_homes, project_home
 
 REQUIRED: Any = inspect.Parameter.empty
 
@@ -109,9 +109,8 @@ class Kind:
     settings: dict[str, Setting]
     outputs: dict[str, type]  # by name; a lone output is called ""
     may_skip: frozenset[str]  # the outputs that may be left out (None)
-    source: str  # digest of the source it depends on
-    home: Path
-    files: tuple[Path, ...] = ()  # the source it depends on
+    source: Source
+    home: Path  # the file it lives in
 
     @property
     def line(self) -> str:
@@ -120,12 +119,13 @@ class Kind:
 
 
 class Kinds:
-    """Every kind at hand, by name."""
+    """Every kind at hand, by name. Its modules are of one time: changes of source count from the next Kinds on."""
 
     def __init__(self, project: Path | None = None) -> None:
         self._where: dict[str, tuple[Home, Path]] = {}
         self._loaded: dict[str, Kind] = {}
         for home in [*installed_homes(), *([] if project is None else [project_home(project)])]:
+            home.refresh()
             for name, path in home.files().items():
                 if name in self._where:
                     raise GraphError(
@@ -151,15 +151,16 @@ class Kinds:
 
 
 def _read_kind(name: str, home: Home, path: Path) -> Kind:
+    source = home.source(path)
     try:
         function = home.load(path)
     except (Exception, SystemExit) as error:  # whatever a stranger's module does on import, the graph can't use it
         raise GraphError(f"{path}: can't be imported: {one_line(error)}") from error
-    return kind_of(function, path, *home.source(path))
+    return kind_of(function, path, source)
 
 
-def kind_of(function: Callable[..., Any], home: Path = Path(), source: str = "", files: tuple[Path, ...] = ()) -> Kind:
-    """The kind that a function is, with the file it lives in and the digest of its source. Raises GraphError where its signature can't be a schema."""
+def kind_of(function: Callable[..., Any], home: Path, source: Source) -> Kind:
+    """The kind that a function is; `home` is the file it lives in. Raises GraphError where it can't be a schema."""
     try:
         hints = typing.get_type_hints(function, include_extras=True)
     except Exception as error:  # an annotation may be any expression
@@ -177,9 +178,8 @@ def kind_of(function: Callable[..., Any], home: Path = Path(), source: str = "",
             settings[name] = Setting(name, annotation, parameter.default, _about(about, name), file)
         else:
             inputs[name] = _input(name, annotation, parameter)
-    return Kind(
-        function.__name__, about, function, inputs, settings, *_outputs(function, hints, home), source, home, files
-    )
+    outputs, may_skip = _outputs(function, hints, home)
+    return Kind(function.__name__, about, function, inputs, settings, outputs, may_skip, source, home)
 
 
 def _about(docstring: str, name: str) -> str:

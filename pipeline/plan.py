@@ -229,7 +229,7 @@ def decide(
         inputs[name] = outcome[source[1]]
     parts: Parts = {
         "kind": step.kind.name,
-        "source": step.kind.source,
+        "source": step.kind.source.digest,
         "settings": {
             name: step.kind.settings[name].plain(value)
             for name, value in step.settings.items()

@@ -9,16 +9,21 @@ from __future__ import annotations
 import ast
 import glob
 import os
+from collections.abc import Iterable
 from functools import lru_cache
 from pathlib import Path
 
 from tangentry.pipeline.values import digest_text
 
 
-def source_digest(folder: Path, file: Path | None, package: str = "") -> str:
-    """Digest of a file of a package's folder and of everything it imports from there; of the whole folder for None."""
-    files = sorted(folder.glob("**/*.py")) if file is None else sorted(reached(folder, file, package))
+def digest_files(folder: Path, files: Iterable[Path]) -> str:
+    """Digest of the names and the text of source files in a folder."""
     return digest_text("".join(f"{path.relative_to(folder).as_posix()}\n{_text(*_version(path))}\n" for path in files))
+
+
+def versions_of(files: Iterable[Path]) -> tuple[object, ...]:
+    """What changes when a file does: name, size, modification time."""
+    return tuple(_version(path) if path.exists() else None for path in files)
 
 
 def reached(folder: Path, file: Path, package: str = "") -> set[Path]:

@@ -134,7 +134,9 @@ class Bench:
         reads = self._side_reads(step, files)
         result = dataclasses.replace(result, reads=reads, error=error or None)
         parts = {**self._as_read(decision.parts, files), "reads": reads}
-        if not detail:  # a fault of the input is as repeatable as a value; a fault of the node may not be
+        # A fault of the input is as repeatable as a value, a fault of the node may not be; and a key must not vouch for
+        # what newer source made.
+        if not detail and step.kind.source.is_current:
             self.store.keep_result(_key(parts), result)
         self._warm.update({result.outputs[name]: value for name, value in values.items() if value is not None})
         return Done(

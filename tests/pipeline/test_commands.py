@@ -85,8 +85,10 @@ def test_a_nothing_changed_build_is_told_from_stats_alone(project, capsys, monke
     before = capsys.readouterr().out
 
     monkeypatch.setattr("tangentry.pipeline.build.run_build", None)  # not reached
-    assert main(["build", str(project.graph)]) == 1
+    assert main(["build", str(project.graph), "--record", str(project.folder / "record.json")]) == 1
 
+    record = json.loads(project.read("record.json"))
+    assert (record["ran"], record["reused"]) == (0, 13) and record["assets"][1]["state"] == "faulty"
     assert capsys.readouterr().out.splitlines()[-1] == before.splitlines()[-1]
 
 

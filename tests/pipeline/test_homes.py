@@ -116,3 +116,16 @@ def test_a_kinds_folder_may_import_its_neighbours_either_way(project):
     project.edit("kinds/helper.py", "upper()", "title()")
 
     assert project.build().count("ran") == 3 * 3 + 1 and project.read("made/a.out") == "Hello A\nHello A\n"
+
+
+def test_what_newer_source_made_is_not_kept_under_the_key_of_the_older(project):
+    mark = project.folder / "kinds/deep/mark.py"
+    saved = f"open({str(mark)!r}, 'a').write('#')\n    from deep import mark"  # as somebody does while a build runs
+    project.edit("kinds/loud.py", "from deep import mark", saved)
+    before = mark.read_text()
+    project.build()
+
+    mark.write_text(before)
+    project.build()
+
+    assert project.calls == ["loud"] * 3
