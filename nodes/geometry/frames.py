@@ -5,8 +5,9 @@ from __future__ import annotations
 from dataclasses import replace
 
 import numpy as np
+from numba import njit
 from tangentry.nodes.geometry import averaging, mikktspace
-from tangentry.nodes.geometry.corners import distinct_corners, distinct_rows, distinct_values, divided
+from tangentry.nodes.geometry.corners import distinct_corners, distinct_values, divided
 from tangentry.nodes.geometry.directions import triangle_directions
 from tangentry.nodes.geometry.triangles import triangulate
 from tangentry.nodes.geometry.vectors import axis_across, dot, reject, unit, unit_or_up
@@ -61,7 +62,7 @@ def _by_sums(
         vertices = distinct_corners(part.points, normals, uv)
         index, normal = vertices.label, normals.values[vertices.rows[1]]
     else:
-        index, _ = distinct_rows(_owner(part) if part.vertices is None or method == "face" else part.vertices)
+        index = _owner(part) if part.vertices is None or method == "face" else part.vertices
         normal = _mean_normals(normals, index)
     tangent, bitangent, side = averaging.average(part, triangles, uv, v_down, index, normal, method)
     return Frames(tangent, bitangent, side, np.zeros(len(side), bool), index, uv_set, method)
@@ -74,9 +75,16 @@ def _owner(part: Part) -> Array:
 
 def _mean_normals(normals: Stream, index: Array) -> Array:
     """(rows, 3) float32: the mean normal, unit, of the corners that have each row of an index."""
-    at_corners = unit(normals.values.astype(np.float64))[normals.index]
-    total = np.stack([np.bincount(index, at_corners[:, axis]) for axis in range(3)], axis=1)
-    return unit_or_up(total.astype(np.float64)).astype(np.float32)
+    total = np.zeros((int(index.max(initial=-1)) + 1, 3))
+    _add_up(unit(normals.values), normals.index, index, total)
+    return unit_or_up(total).astype(np.float32)
+
+
+@njit(cache=True, nogil=True)
+def _add_up(values: Array, at: Array, index: Array, total: Array) -> None:
+    for c in range(len(index)):
+        for axis in range(3):
+            total[index[c], axis] += values[at[c], axis]
 
 
 def _used(frames: Frames) -> Frames:

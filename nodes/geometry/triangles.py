@@ -77,22 +77,20 @@ def _cut_quad(start: int, points: Array, at: Array, uvs: Array, uv_at: Array, tr
 
 
 @njit(cache=True, nogil=True)
-def _key(corner: int, points: Array, at: Array, uvs: Array, uv_at: Array, key: Array) -> None:
-    """What orders corners by their values alone: u, v, then x, y, z."""
-    key[:2] = uvs[uv_at[corner]]
-    key[2:] = points[at[corner]]
+def _least(start: int, points: Array, at: Array, uvs: Array, uv_at: Array) -> int:
+    """Which of a quad's corners comes first by its values alone: u, v, then x, y, z."""
+    best = 0
+    for k in range(1, 4):
+        a, b = uv_at[start + k], uv_at[start + best]
+        u, v = uvs[a, 0] - uvs[b, 0], uvs[a, 1] - uvs[b, 1]
+        if u < 0 or (u == 0 and v < 0) or (u == 0 and v == 0 and _less(points, at[start + k], at[start + best])):
+            best = k
+    return best
 
 
 @njit(cache=True, nogil=True)
-def _least(start: int, points: Array, at: Array, uvs: Array, uv_at: Array) -> int:
-    """Which of a quad's corners has the least key."""
-    best, least, key = 0, np.empty(5), np.empty(5)
-    _key(start, points, at, uvs, uv_at, least)
-    for k in range(1, 4):
-        _key(start + k, points, at, uvs, uv_at, key)
-        for place in range(5):
-            if key[place] != least[place]:
-                if key[place] < least[place]:
-                    best, least, key = k, key, least
-                break
-    return best
+def _less(rows: Array, a: int, b: int) -> bool:
+    for k in range(rows.shape[1]):
+        if rows[a, k] != rows[b, k]:
+            return rows[a, k] < rows[b, k]
+    return False
