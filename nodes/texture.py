@@ -22,7 +22,7 @@ def texture(
 
     file        the image; or give an asset instead
     holds       what its texels are; from an asset, which of its materials' maps are wanted
-    green       of normals: does green grow up the image or down; measure: as the texels tell, "undecided" where they don't
+    green       of normals: does green grow up the image or down; measure: as the texels tell, else "undecided"
     encoding    of normals: how directions are stored
     if_missing  skip: leave the map out where there is none
 
@@ -37,11 +37,13 @@ def texture(
     if not found and asset is not None:
         raise InputError(asset.name, "", f"no material names a {holds} map", "name one, or set if_missing: skip")
     if holds != "normal":
-        return Map(tuple(Sheet(material, texels, holds, name=name) for material, texels, name in found))
-    return Map(tuple(_normals(material, texels, name, green, encoding) for material, texels, name in found))
+        return Map(
+            tuple(Sheet(material, texels, holds, name=name, tagged=tag) for material, texels, name, tag in found)
+        )
+    return Map(tuple(_normals(*one, green, encoding) for one in found))
 
 
-def _normals(material: str, texels: Array, name: str, green: str, encoding: str) -> Sheet:
+def _normals(material: str, texels: Array, name: str, tag: str, green: str, encoding: str) -> Sheet:
     from tangentry.nodes.maps.conventions import measure_green
 
     if texels.shape[2] < (2 if encoding in ("xy", "octahedral") else 3):
@@ -49,21 +51,23 @@ def _normals(material: str, texels: Array, name: str, green: str, encoding: str)
             name, "", f"{texels.shape[2]} channels can't hold normals", "is it a height map? then holds: height"
         )
     verdict = measure_green(texels).verdict if green == "measure" else green
-    return Sheet(material, texels, "normal", "tangent", verdict, encoding, name)
+    return Sheet(material, texels, "normal", "tangent", verdict, encoding, name, tag)
 
 
-def _of_file(file: InputFile, if_missing: str) -> list[tuple[str, Array, str]]:
+def _of_file(file: InputFile, if_missing: str) -> list[tuple[str, Array, str, str]]:
+    from tangentry.nodes.formats.image_headers import tag_of
     from tangentry.nodes.formats.images import read_image
 
     if if_missing == "skip" and not file.exists:
         return []
-    return [("", read_image(file.bytes(), file.path), file.path)]
+    return [("", read_image(file.bytes(), file.path), file.path, tag_of(file.bytes()))]
 
 
-def _of_asset(asset: Asset, holds: str) -> list[tuple[str, Array, str]]:
+def _of_asset(asset: Asset, holds: str) -> list[tuple[str, Array, str, str]]:
+    from tangentry.nodes.formats.image_headers import tag_of
     from tangentry.nodes.formats.images import read_image
 
-    found: list[tuple[str, Array, str]] = []
+    found: list[tuple[str, Array, str, str]] = []
     read: dict[int, Array] = {}
     for material in asset.materials:
         use = next((one for one in material.maps if one.role == holds), None)
@@ -79,5 +83,5 @@ def _of_asset(asset: Asset, holds: str) -> list[tuple[str, Array, str]]:
             )
         if use.image not in read:
             read[use.image] = read_image(image.content, f"{asset.name}: {image.name}")
-        found.append((material.name, read[use.image], image.name))
+        found.append((material.name, read[use.image], image.name, tag_of(image.content)))
     return found

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 
 from tangentry.pipeline.errors import InputError, nearest
 
@@ -48,13 +48,13 @@ IDS = (
 )
 
 
-def refuse_unknown(name: str, setting: str, given: Iterable[str]) -> None:
-    """Raise InputError for an id that no finding has; `name` is the asset's."""
+def refuse_unknown(name: str, setting: str, given: Iterable[str], ids: Sequence[str] = IDS) -> None:
+    """Raise InputError for an id that no finding has; `name` is the asset's or the map's."""
     for id in given:
-        if id not in IDS:
+        if id not in ids:
             raise InputError(
                 name,
                 f"setting {setting}",
                 f'no finding is called "{id}"',
-                f"the ids are {', '.join(IDS)}.{nearest(id, IDS)}",
+                f"the ids are {', '.join(ids)}.{nearest(id, ids)}",
             )

@@ -10,6 +10,7 @@ from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array
 
 READ = "PNG, JPEG, WebP, TIFF and EXR are read"
+GAMMA_ONE = struct.pack(">I", 100000)
 HEADER = 1 << 20  # bytes in which an EXR header must end
 BAD = "the file is damaged or cut off: export it again"
 
@@ -97,3 +98,20 @@ def is_image(content: Array) -> bool:
     return head.startswith((b"\x89PNG", b"\xff\xd8", b"II*\0", b"MM\0*", MAGIC)) or (
         head[:4] == b"RIFF" and head[8:12] == b"WEBP"
     )
+
+
+def tag_of(content: Array) -> str:
+    """What an image file says of its texels: "lossy" for JPEG and WebP's lossy form, "sRGB" for a colour profile or a
+    gamma chunk in a PNG file (PNG specification, 11.3.2); else ""."""
+    head = content[:64].tobytes()
+    if head.startswith(b"\xff\xd8") or (head[8:12] == b"WEBP" and b"VP8 " in head[12:]):
+        return "lossy"
+    at = 8
+    while head.startswith(b"\x89PNG") and at + 8 <= len(content):
+        size, kind = struct.unpack(">I4s", content[at : at + 8].tobytes())
+        if kind in (b"sRGB", b"iCCP") or (kind == b"gAMA" and content[at + 8 : at + 12].tobytes() != GAMMA_ONE):
+            return "sRGB"
+        if kind in (b"IDAT", b"IEND"):
+            break
+        at += 12 + size
+    return ""

@@ -18,6 +18,7 @@ class Sheet:
         "unorm"  # "unorm": -1..1 over the code range; "snorm"; "xy": z rebuilt; "octahedral"; "float": as is
     )
     name: str = ""  # where it came from, for messages
+    tagged: str = ""  # what its file says of itself: "sRGB" (a colour profile), "lossy", or nothing
     level: int = 0  # of a mip chain: 0 is the map itself
 
 

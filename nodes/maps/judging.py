@@ -1,0 +1,250 @@
+"""What is wrong with a normal map, as its own texels tell.
+
+All of it is common practice, no source, but for the green test (see conventions.py). Shares are of all texels.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+from tangentry.nodes.maps.conventions import measure_green
+from tangentry.nodes.model import Sheet
+from tangentry.pipeline.flow import Array, Finding
+
+MAP_IDS = (
+    "map-two-channel",
+    "map-height",
+    "map-object-space",
+    "map-negative-z",
+    "map-unnormalised",
+    "map-srgb",
+    "map-tagged-srgb",
+    "map-lossy",
+    "map-blocky",
+    "map-flat-offset",
+    "map-green-contradicted",
+    "map-green-undecided",
+    "map-error",
+)
+GREY = 2 / 255  # by which the channels of a grey texel may differ
+OFF = 0.1  # by which a vector's length may differ from 1
+SRGB_FLAT = (0.735, 0.216)  # what 0.5 becomes when it is taken for linear, and for sRGB, by mistake (IEC 61966-2-1)
+
+
+@dataclass(frozen=True)
+class Judged:
+    """A sheet of unorm or float normals under judgement."""
+
+    sheet: Sheet
+
+    @cached_property
+    def codes(self) -> Array:
+        """(height, width, 3) float32: channels as 0..1."""
+        texels = self.sheet.texels[..., :3]
+        if texels.dtype.kind == "f":
+            return np.asarray((texels + 1) / 2, np.float32)
+        return texels.astype(np.float32) / np.float32(np.iinfo(texels.dtype).max)
+
+    @cached_property
+    def vectors(self) -> Array:
+        """(height, width, 3) float32, as they are."""
+        return self.codes * 2 - 1
+
+    @cached_property
+    def length(self) -> Array:
+        """(height, width) float32."""
+        return np.asarray(np.sqrt(np.einsum("...i,...i->...", self.vectors, self.vectors)))
+
+    @cached_property
+    def varies(self) -> Array:
+        """(3,) float64: the standard deviation of each channel, in 0..1."""
+        return self.codes.std(axis=(0, 1), dtype=np.float64)
+
+    @cached_property
+    def flat(self) -> Array:
+        """(2,): the value of red and green that most texels have."""
+        steps = np.rint(self.codes[..., :2] * 255).astype(np.uint8).reshape(-1, 2)
+        return np.array([np.bincount(steps[:, k], minlength=256).argmax() for k in (0, 1)]) / 255
+
+
+def map_findings(sheet: Sheet) -> Iterator[Finding]:
+    """Findings on a sheet of tangent-space normals; one that is no such thing at all gives that finding alone."""
+    yield from _of_the_file(sheet)
+    if sheet.encoding not in ("unorm", "float") or sheet.space == "object" or sheet.texels.shape[2] < 3:
+        return
+    judged = Judged(sheet)
+    kind = next(_other_kinds(judged), None)
+    if kind is not None:
+        yield kind
+        return
+    yield from _vectors(judged)
+    yield from _codes(judged)
+    yield from _green(judged)
+
+
+def _of_the_file(sheet: Sheet) -> Iterator[Finding]:
+    if sheet.tagged == "sRGB":
+        advice = "save it without a colour profile: it holds no colours"
+        yield _finding(sheet, "map-tagged-srgb", "note", "the file says that its texels are sRGB colours", advice)
+    if sheet.tagged == "lossy":
+        yield _finding(
+            sheet, "map-lossy", "warning", "the file was compressed with losses", "export it as PNG, TIFF or EXR"
+        )
+
+
+def _other_kinds(judged: Judged) -> Iterator[Finding]:
+    sheet, codes = judged.sheet, judged.codes
+    spread = np.abs(codes.max(axis=2) - codes.min(axis=2))
+    grey = float((spread <= GREY).mean())
+    if grey > 0.98:
+        yield _finding(
+            sheet,
+            "map-height",
+            "fault",
+            f"{grey:.0%} of the texels are grey: it is a height map",
+            "turn it into normals: relief",
+            grey,
+            0.98,
+        )
+    if judged.varies[2] < 0.004 < judged.varies[:2].min() and _share(np.abs(judged.length - 1) > OFF) > 0.05:
+        yield _finding(
+            sheet,
+            "map-two-channel",
+            "fault",
+            "blue is the same everywhere: directions lie in red and green",
+            "state it: texture, encoding: xy",
+        )
+    behind = _share(judged.vectors[..., 2] < -0.05)
+    if behind > 0.1 and _share(np.abs(judged.length - 1) > OFF) < 0.5:
+        yield _finding(
+            sheet,
+            "map-object-space",
+            "fault",
+            f"{behind:.0%} of the normals point backward: they are those of the mesh itself, not of its frames",
+            "re-encode it: reencode, made_for: object",
+            behind,
+            0.1,
+        )
+
+
+def _vectors(judged: Judged) -> Iterator[Finding]:
+    sheet = judged.sheet
+    behind = _share(judged.vectors[..., 2] < -0.02)
+    if behind > 0:
+        yield _finding(
+            sheet,
+            "map-negative-z",
+            "warning",
+            f"{behind:.2%} of the normals point into the surface",
+            "bake it again, or clamp them",
+            behind,
+            0.0,
+        )
+    off = _share(np.abs(judged.length - 1) > OFF)
+    if off > 0.02 and not _srgb(judged):
+        middle = float(np.median(judged.length))
+        yield _finding(
+            sheet,
+            "map-unnormalised",
+            "warning",
+            f"{off:.1%} of the normals are more than {OFF:g} away from length 1 (median {middle:.3f})",
+            "make them unit: decode, then encode",
+            off,
+            0.02,
+        )
+
+
+def _codes(judged: Judged) -> Iterator[Finding]:
+    sheet = judged.sheet
+    if _srgb(judged):
+        yield _finding(
+            sheet,
+            "map-srgb",
+            "fault",
+            f"flat is ({judged.flat[0]:.3f}, {judged.flat[1]:.3f}), not 0.5: sRGB was taken for linear, or the reverse",
+            "export it as linear data",
+        )
+    elif sheet.texels.dtype == np.uint8 and (np.abs(judged.flat * 255 - 127.5) < 4).all():
+        flat = np.rint(judged.flat * 255).astype(int)
+        if (flat != 128).any() and _share((sheet.texels[..., :2] == flat).all(axis=2)) > 0.05:
+            yield _finding(
+                sheet,
+                "map-flat-offset",
+                "note",
+                f"flat is ({flat[0]}, {flat[1]}) where 128 is usual",
+                "round codes when exporting",
+            )
+    ratio, size = _blocks(judged.codes)
+    if ratio > 1.6:
+        yield _finding(
+            sheet,
+            "map-blocky",
+            "warning",
+            f"steps between blocks of {size} x {size} are {ratio:.2f} times those within them",
+            "export it from its source without compression",
+            ratio,
+            1.6,
+        )
+
+
+def _srgb(judged: Judged) -> bool:
+    return any((np.abs(judged.flat - value) < 0.02).all() for value in SRGB_FLAT) and (
+        _share((np.abs(judged.codes[..., :2] - judged.flat) < 0.01).all(axis=2)) > 0.05
+    )
+
+
+def _blocks(codes: Array) -> tuple[float, int]:
+    """How much larger steps are across borders of blocks than elsewhere, along both axes; for the worst size."""
+    worst = (0.0, 0)
+    for size in (4, 8):
+        ratios = []
+        for axis in (0, 1):
+            steps = np.abs(np.diff(codes, axis=axis)).mean(axis=(1 - axis, 2), dtype=np.float64)
+            border = (np.arange(len(steps)) + 1) % size == 0
+            if border.sum() < 4 or not steps[~border].mean() > 0:
+                return 0.0, 0
+            ratios.append(steps[border].mean() / steps[~border].mean())
+        worst = max(worst, (float(min(ratios)), size))
+    return worst
+
+
+def _green(judged: Judged) -> Iterator[Finding]:
+    sheet, measured = judged.sheet, measure_green(judged.sheet.texels)
+    if sheet.green == "undecided":
+        yield _finding(
+            sheet,
+            "map-green-undecided",
+            "warning",
+            f"its texels do not tell which way green points ({measured.correlation:.2f})",
+            "state it: texture, green: up or down",
+        )
+    elif measured.verdict != "undecided" and measured.verdict != sheet.green:
+        yield _finding(
+            sheet,
+            "map-green-contradicted",
+            "fault",
+            f"green is said to point {sheet.green}, its texels say {measured.verdict} ({measured.correlation:.2f})",
+            f"state it: texture, green: {measured.verdict}",
+            measured.correlation,
+        )
+
+
+def _share(chosen: Array) -> float:
+    return float(chosen.mean())
+
+
+def _finding(
+    sheet: Sheet,
+    id: str,
+    severity: str,
+    what: str,
+    advice: str,
+    measured: float | None = None,
+    limit: float | None = None,
+) -> Finding:
+    figures = np.array([] if measured is None else [measured], np.float32)
+    none = np.zeros(len(figures), np.int32)
+    return Finding(id, severity, 1, what, advice, sheet.name, sheet.material, "", none, figures, limit)
