@@ -1,9 +1,9 @@
 """Where the nodes of a graph stand in a picture: in columns, every line from left to right and none behind a box.
 
-A node stands one column right of the last of its inputs; one without inputs, just left of the first that it feeds. A line
-that passes a column has a waypoint there, which keeps its distance from boxes as they do from one another; lines from one
-node share their waypoints (Sugiyama, Tagawa and Toda 1981, with bundled edges). Within a column everything is drawn
-towards the mean place of what it is joined to, swept back and forth, so that few lines cross.
+A node stands one column right of the last of its inputs; one without inputs, just left of the first that it feeds. A
+line that passes a column has a waypoint there, which keeps its distance from boxes as they do from one another; lines
+from one node share their waypoints (Sugiyama, Tagawa and Toda 1981, with bundled edges). Within a column everything
+is drawn towards the mean place of what it is joined to, swept back and forth, so that few lines cross.
 """
 
 from __future__ import annotations
@@ -29,7 +29,7 @@ class Arrangement:
 
 
 def arrange(inputs: Mapping[str, Sequence[str]], last: frozenset[str] = frozenset()) -> Arrangement:
-    """An arrangement of nodes, which stand in an order in which they can run; those in `last` stand right of all others."""
+    """An arrangement of nodes, given in an order in which they can run; those in `last` stand right of all others."""
     column: dict[Spot, int] = {}
     for name, sources in inputs.items():
         column[name] = 1 + max((column[source] for source in sources), default=-1)

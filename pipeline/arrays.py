@@ -18,7 +18,8 @@ from blake3 import blake3
 from tangentry.pipeline.flow import Array
 
 HEADER = re.compile(
-    rb"\x93NUMPY\x01\x00..\{'descr': '([<>|][a-zA-Z][0-9]{0,9}(?:\[\w{1,9}\])?)', 'fortran_order': False, 'shape': \(([\d, ]*)\), \} *\n",
+    rb"\x93NUMPY\x01\x00..\{'descr': '([<>|][a-zA-Z][0-9]{0,9}(?:\[\w{1,9}\])?)', "
+    rb"'fortran_order': False, 'shape': \(([\d, ]*)\), \} *\n",
     re.S,
 )
 ALIGNED = 64  # bytes: where the body begins

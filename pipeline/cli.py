@@ -17,7 +17,10 @@ if TYPE_CHECKING:
     from tangentry.pipeline.graph import Graph
     from tangentry.pipeline.record import Record
 
-CAUTION = "Building a graph runs the code of its node kinds, those of its own `kinds:` folder included: build graphs you trust."
+CAUTION = (
+    "Building a graph runs the code of its node kinds, those of its own `kinds:` folder included: "
+    "build graphs you trust."
+)
 MOST_PROBLEMS = 30  # that are printed
 
 
@@ -53,7 +56,8 @@ def _print_problems(problems: tuple[str, ...]) -> None:
 def _parser() -> argparse.ArgumentParser:
     parser = argparse.ArgumentParser(
         prog="tangentry",
-        description="Takes a library of normal-mapped meshes from authoring export to delivered file, and rebuilds only what changed.",
+        description="Takes a library of normal-mapped meshes from authoring export to delivered file, and rebuilds "
+        "only what changed.",
         epilog=CAUTION,
     )
     parser.add_argument("--version", action="version", version=_Version())
@@ -335,11 +339,9 @@ def _store_size(chosen: argparse.Namespace) -> int:
     from tangentry.pipeline.terminal import bytes_text
 
     sizes = _open_store(chosen).size()
-    for room, (count, size) in sizes.items():
+    whole = (sum(count for count, _ in sizes.values()), sum(size for _, size in sizes.values()))
+    for room, (count, size) in {**sizes, "in all": whole}.items():
         print(f"{room:8} {count:9,}  {bytes_text(size):>9}")
-    print(
-        f"{'in all':8} {sum(count for count, _ in sizes.values()):9,}  {bytes_text(sum(size for _, size in sizes.values())):>9}"
-    )
     return 0
 
 

@@ -252,7 +252,8 @@ def _graph_as_node(name: str, named: Node, entry: Node, mark: Mark, scope: Scope
             possible = [*inputs, *options]
             reading.wrong(
                 entry.keys[key],
-                f'node "{name}" has no input or option "{key}"; {root.mark.file} takes {", ".join(possible)}.{nearest(key, possible)}',
+                f'node "{name}" has no input or option "{key}"; {root.mark.file} takes {", ".join(possible)}.'
+                + nearest(key, possible),
             )
     inner = Scope(path.parent, options, (*scope.chain, path.resolve()), f"{scope.prefix}{name}/", inputs)
     drafts = read_section(root, "per_asset", inner, reading)

@@ -29,8 +29,8 @@ class GraphError(TangentryError):
 class InputError(TangentryError):
     """An input file can't be used: which file, where in it, what was found, what to do.
 
-    >>> str(InputError("props/crate.obj", "line 12", "vertex index 99, but the file has 8 positions", "export it again"))
-    'props/crate.obj: line 12: vertex index 99, but the file has 8 positions; export it again'
+    >>> str(InputError("props/crate.obj", "line 12", "vertex index 99, but the file has 8 positions", "export it
+    again")) 'props/crate.obj: line 12: vertex index 99, but the file has 8 positions; export it again'
     """
 
     def __init__(self, file: object, element: str, found: str, advice: str = "") -> None:

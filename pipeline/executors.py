@@ -89,7 +89,7 @@ class _Worker:
 
 
 class Workers:
-    """Carries tasks out in `count` processes, started afresh (spawn). One that dies costs the step it was running, no more."""
+    """Carries tasks out in `count` processes, started afresh (spawn). One that dies costs the step it was running."""
 
     def __init__(self, count: int, orders: Orders) -> None:
         self._count, self._orders = count, orders

@@ -13,7 +13,9 @@ PLACEHOLDER = re.compile(r"\{([A-Za-z_]\w*)\}")
 
 
 def fill(value: Any, known: Mapping[str, Any], later: Iterable[str], wrong: Any) -> Any:
-    """A value with its placeholders filled from `known`; those in `later` stay. A value that is one placeholder keeps its type.
+    """A value with its placeholders filled from `known`; those in `later` stay.
+
+    What is one placeholder and nothing else takes its value's type.
 
     >>> fill(["{a}", "x-{a}", "{stem}"], {"a": 1.5}, ["stem"], print)
     [1.5, 'x-1.5', '{stem}']

@@ -93,9 +93,13 @@ class InputFile:
     @property
     def exists(self) -> bool:
         """Is there such a file? Looking counts as reading: a file that appears later makes the node run again."""
-        if self.real.is_file():
-            return True
-        self.reads[self._key] = None
+        try:
+            if self.real.is_file():
+                return True
+        except OSError:  # no file can have such a name (too long), so none will appear
+            return False
+        if "\0" not in self.path:
+            self.reads[self._key] = None
         return False
 
     def bytes(self) -> Array:

@@ -4,8 +4,9 @@
         per_asset      what runs once for each file of the library    framed: frames(asset=cut, method="mikktspace")
         whole_library  what runs once over the values of all assets   tally: tally(findings=verdict of every asset)
 
-A graph used as a node (`node: ./finish.yaml`) is laid open (drafts.py): its nodes become `finish/solved`, `finish/squared`, so
-nothing further on knows of nesting. Options are filled in; `{file}`, `{stem}`, `{folder}` and `{below}` wait for an asset.
+A graph used as a node (`node: ./finish.yaml`) is laid open (drafts.py): its nodes become `finish/solved`,
+`finish/squared`, so nothing further on knows of nesting. Options are filled in; `{file}`, `{stem}`, `{folder}` and
+`{below}` wait for an asset.
 """
 
 from __future__ import annotations

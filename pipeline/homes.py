@@ -1,8 +1,9 @@
 """Where node kinds live: installed packages, and the folder that a graph file names in `kinds:`; treated alike.
 
-Packages are found through the entry-point group `tangentry.nodes`, this package's own nodes among them. The modules of a
-project's folder may import their neighbours plainly (`import helper`) or as `from . import helper`, at their top or inside
-a function. Two projects in one process may have neighbours of the same name, so only one project's are at hand at a time.
+Packages are found through the entry-point group `tangentry.nodes`, this package's own nodes among them. The modules
+of a project's folder may import their neighbours plainly (`import helper`) or as `from . import helper`, at their top
+or inside a function. Two projects in one process may have neighbours of the same name, so only one project's are at
+hand at a time.
 """
 
 from __future__ import annotations
@@ -144,7 +145,7 @@ def project_home(folder: Path) -> Home:
 
 def _bring_to_hand(folder: Path) -> None:
     """Let plain imports find a project's modules, last of all; those of another project are put away."""
-    if _AT_HAND == [folder]:
+    if [folder] == _AT_HAND:
         return
     for other in _AT_HAND:
         with contextlib.suppress(ValueError):

@@ -24,7 +24,7 @@ EXIT_CODE = 130
 
 @contextlib.contextmanager
 def heard_at_once() -> Iterator[None]:
-    """While open, an interrupt ends this process within about `GRACE` seconds; in a thread of its own it does nothing."""
+    """While open, an interrupt ends this process within about `GRACE` seconds. Does nothing outside the main thread."""
     if threading.current_thread() is not threading.main_thread():
         yield
         return

@@ -1,6 +1,7 @@
 """What this machine remembers between builds, in one SQLite file: digests of files, what was made of what, outputs.
 
-Losing it costs time, never results: files are hashed again, reasons read "first build", outputs are compared by content.
+Losing it costs time, never results: files are hashed again, reasons read "first build", outputs are compared by
+content.
 """
 
 from __future__ import annotations
@@ -21,7 +22,8 @@ from tangentry.pipeline.store import unwritable
 
 SETTLED_NS = 2_000_000_000  # a file that changed this shortly before its digest was taken may change again unseen
 TABLES = """
-create table if not exists files (path text primary key, size integer, mtime integer, inode integer, noted integer, digest text);
+create table if not exists files
+    (path text primary key, size integer, mtime integer, inode integer, noted integer, digest text);
 create table if not exists made (graph text, asset text, node text, parts text, primary key (graph, asset, node));
 create table if not exists outputs (path text primary key, graph text, asset text, node text, digest text);
 """
@@ -78,7 +80,7 @@ class Ledger:
             self._files = {row[0]: ((row[1], row[2], row[3]), row[4], row[5]) for row in rows}
 
     def digest_of(self, path: str | os.PathLike[str]) -> str | None:
-        """Digest of a file as it is now, from memory where its size, time and inode are unchanged; None: no such file."""
+        """Digest of a file as it is, remembered while its size, time and inode stay; None: no such file."""
         name, now = os.path.abspath(path), stat_of(path)
         if now is None:
             return None

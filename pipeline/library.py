@@ -33,7 +33,9 @@ class Member:
 
 
 def find_members(graph: Graph, written: Collection[str] = (), only: str | None = None) -> list[Member]:
-    """The files of a graph's library in name order, less those in `written` (absolute paths) and those `only` does not match.
+    """The files of a graph's library in name order, less those in `written` (absolute paths).
+
+    only   a pattern for the names or stems of those that are wanted
 
     Raises GraphError where no file matches.
     """
@@ -45,7 +47,7 @@ def find_members(graph: Graph, written: Collection[str] = (), only: str | None =
                 if os.path.isfile(graph.folder / path) and os.path.abspath(graph.folder / path) not in written:
                     name = relative_name(path, graph.folder)
                     if not _is_text(name):
-                        raise GraphError(f"{graph.library_mark}: {ascii(name)} is no text in UTF-8; rename the file")
+                        raise GraphError(f"{graph.library_mark}: {name!a} is no text in UTF-8; rename the file")
                     found.setdefault(name, Member(name, Path(os.path.relpath(graph.folder / path, fixed)).as_posix()))
     if not found:
         raise GraphError(
@@ -71,7 +73,7 @@ def _is_text(name: str) -> bool:
 
 
 def looked_into(graph: Graph) -> list[str]:
-    """The folders that a library's patterns look into: none changes unless a file or folder comes, goes or is renamed."""
+    """The folders that a library's patterns look into: none changes but when something comes, goes or is renamed."""
     folders: list[str] = []
     for pattern in [one for written in graph.library for one in unfold(written)]:
         top = os.path.join(graph.folder, _fixed_part(pattern))

@@ -110,7 +110,8 @@ def _find(
         possible = [*by_name, *outer]
         reading.wrong(
             reference.mark,
-            f'there is no node "{reference.text}" for input "{key}" of "{draft.name}".{nearest(reference.text, possible)}',
+            f'there is no node "{reference.text}" for input "{key}" of "{draft.name}".'
+            + nearest(reference.text, possible),
         )
         return None
     if output not in kind.outputs and not (output == "" and len(kind.outputs) == 1):
@@ -125,7 +126,8 @@ def _find(
     if not issubclass(given, wanted.flow):
         reading.wrong(
             reference.mark,
-            f'input "{key}" of node "{draft.name}" takes {wanted.flow.__name__}; "{reference.text}" gives {given.__name__}',
+            f'input "{key}" of node "{draft.name}" takes {wanted.flow.__name__}; '
+            f'"{reference.text}" gives {given.__name__}',
         )
     elif every != (wanted.many is not None):
         one_many = (
@@ -133,6 +135,7 @@ def _find(
         )
         reading.wrong(
             reference.mark,
-            f'input "{key}" of node "{draft.name}" {one_many}; "{reference.text}" is {"one per asset" if every else "one value"}',
+            f'input "{key}" of node "{draft.name}" {one_many}; '
+            f'"{reference.text}" is {"one per asset" if every else "one value"}',
         )
     return Source(node, output if output in kind.outputs else next(iter(kind.outputs)), every)

@@ -85,7 +85,7 @@ class Reason:
 
 @dataclasses.dataclass(frozen=True)
 class Decision:
-    """What becomes of a step: "reuse", "run", "skip" (an input it needs was left out), "blocked" (one failed), "wait"."""
+    """What becomes of a step: "reuse", "run", "wait", "skip" (an input is left out), "blocked" (one failed)."""
 
     state: str
     key: str = ""
@@ -119,7 +119,8 @@ def lay_out(graph: Graph, members: Sequence[Member]) -> nx.DiGraph[StepId]:
             one = os.path.normpath(path)
             if one in made:
                 problems.append(
-                    f"{path} would be made twice: by {made[one]} and by {where}; put {{stem}} or {{below}} into its name"
+                    f"{path} would be made twice: by {made[one]} and by {where}; "
+                    "put {stem} or {below} into its name"
                 )
             made[one] = where
     problems += [
@@ -194,7 +195,8 @@ def _inside(graph: Graph, path: str, entry: Entry) -> str:
             continue
         return path
     raise GraphError(
-        f'{entry.mark}: node "{entry.name}" would write {path}, outside the folder of the graph file; write below it, or open the place from the command line: --set OPTION=FOLDER'
+        f'{entry.mark}: node "{entry.name}" would write {path}, outside the folder of the graph file; write below it, '
+        "or open the place from the command line: --set OPTION=FOLDER"
     )
 
 
@@ -214,7 +216,7 @@ def decide(
     digest_of: Callable[[str], str | None],
     last: Parts | None = None,
 ) -> Decision:
-    """What becomes of a step whose inputs are `known`; `digest_of` gives the digest of a file relative to the graph's folder."""
+    """What becomes of a step whose inputs are `known`; `digest_of` gives the digest of a file of the graph's folder."""
     inputs: dict[str, Any] = {}
     for name, source in step.inputs.items():
         if isinstance(source, list):
@@ -302,7 +304,7 @@ def plan(
     digest_of: Callable[[str], str | None],
     last: dict[StepId, Parts],
 ) -> list[Planned]:
-    """What a build would do with every step. Steps behind one that runs wait: they run only if its value turns out changed."""
+    """What a build would do with every step. Those behind one that runs wait: it may give the same value."""
     known: dict[StepId, Outcome] = {}
     waiting: set[StepId] = set()
     planned = []

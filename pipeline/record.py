@@ -1,32 +1,32 @@
 """What happened in a build, as data: one JSON object, version 1. Within a version, keys are only added.
 
-    tangentry_record   1
-    graph              the graph file, as it was named
-    ran, reused, skipped, blocked, failed
-                       how many steps ended so: its function ran; what it made before was taken; an input that it needs was
-                       left out; one that it needs failed; it failed itself
-    states             how many assets ended in each state
-    assets             what happened to each asset, in name order
-        name           its file, relative to the graph file
-        state          "failed" where a step failed or a file could not be put in its place, else "faulty" where a finding
-                       is a fault, else "made" where a step ran, else "unchanged"
-        error          what failed, in words; null where nothing did
-        findings       of all its steps; see `work.findings_in`
-        outputs        its files, relative to the graph file
-        steps          in the order in which they ran
-            node       its name in the graph
-            state      "ran", "reused", "skipped", "blocked" or "failed"
-            reasons    why it ran: what ("first", "setting", "file", "input", "source", "kind", "lost"), name, before, after,
-                       and the same as text; not there where it did not run
-            because    the node on whose account it was skipped or blocked; only there
-            seconds    how long it ran; only where it did
-            faulty     true; only where its findings hold a fault
-            error      what failed, in words; only where it failed
-            detail     the traceback; only where the node itself is at fault
-    library            what happened to the steps of `whole_library`, alike; its name is ""
-    restored           files put back: those that were gone or altered while nothing that makes them ran
-    left_over          files that the graph made once and makes no longer; removed with --tidy
-    stopped            why the build ended before all was done; null where it did not
+tangentry_record   1
+graph              the graph file, as it was named
+ran, reused, skipped, blocked, failed
+                   how many steps ended so: its function ran; what it made before was taken; an input that it
+                   needs was left out; one that it needs failed; it failed itself
+states             how many assets ended in each state
+assets             what happened to each asset, in name order
+    name           its file, relative to the graph file
+    state          "failed" where a step failed or a file could not be put in its place, else "faulty" where a finding
+                   is a fault, else "made" where a step ran, else "unchanged"
+    error          what failed, in words; null where nothing did
+    findings       of all its steps; see `work.findings_in`
+    outputs        its files, relative to the graph file
+    steps          in the order in which they ran
+        node       its name in the graph
+        state      "ran", "reused", "skipped", "blocked" or "failed"
+        reasons    why it ran: what ("first", "setting", "file", "input", "source", "kind", "lost"), name, before,
+                   after, and the same as text; not there where it did not run
+        because    the node on whose account it was skipped or blocked; only there
+        seconds    how long it ran; only where it did
+        faulty     true; only where its findings hold a fault
+        error      what failed, in words; only where it failed
+        detail     the traceback; only where the node itself is at fault
+library            what happened to the steps of `whole_library`, alike; its name is ""
+restored           files put back: those that were gone or altered while nothing that makes them ran
+left_over          files that the graph made once and makes no longer; removed with --tidy
+stopped            why the build ended before all was done; null where it did not
 """
 
 from __future__ import annotations
@@ -86,7 +86,7 @@ class AssetRecord:
 
     @property
     def lasting(self) -> bool:
-        """Would building again, with nothing changed, end alike? A node's own fault and a blocked output may not last."""
+        """Would building again, with nothing changed, end alike? A node's own fault and a refused file may not last."""
         failed = [step for step in self.steps if step["state"] == "failed"]
         return len(failed) == len(self.errors) and not any("detail" in step for step in failed)
 

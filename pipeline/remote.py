@@ -1,4 +1,4 @@
-"""A store that many machines share through an fsspec URL (the extra `tangentry[cluster]`), with a local copy of what was used.
+"""A store that machines share through an fsspec URL (the extra `tangentry[cluster]`), with local copies.
 
 Arrays and values never change, so a local copy is as good as the shared one. Results may grow elsewhere, so they are
 looked up there each time.

@@ -32,7 +32,7 @@ class Word(NamedTuple):
 
 
 def store_place(graph: Path, store: str | os.PathLike[str] | None) -> tuple[Path, str]:
-    """The store's folder, and the URL behind it if it is a shared one: `.tangentry` beside the graph unless another is named."""
+    """The store's folder, `.tangentry` beside the graph unless another is named, and the URL behind it, if any."""
     own = graph.parent / ".tangentry"
     if store is None:
         return own, ""

@@ -60,7 +60,7 @@ class Turns:
         if self._file is None:
             with contextlib.suppress(OSError):
                 self._path.parent.mkdir(parents=True, exist_ok=True)
-                self._file = open(self._path, "ab")
+                self._file = open(self._path, "ab")  # noqa: SIM115 (held until `close`)
         if self._file is None:
             yield
             return
@@ -83,7 +83,7 @@ class Running:
         path = self._folder / secrets.token_hex(8)
         try:
             self._folder.mkdir(parents=True, exist_ok=True)
-            file = open(path, "wb")
+            file = open(path, "wb")  # noqa: SIM115 (entered below)
         except OSError:
             yield  # whatever keeps us from writing here is told when something is to be kept
             return

@@ -13,7 +13,7 @@ STARTER = "tangentry.graphs.start"
 
 
 def start(folder: Path) -> list[Path]:
-    """Write the starter project; gives the files. Raises GraphError where one is there already: nothing is written then."""
+    """Write the starter project; gives the files. Raises GraphError where one is there already, and writes nothing."""
     found = list(_files(files(STARTER), Path()))
     there = [folder / path for path, _ in found if (folder / path).exists()]
     if there:

@@ -166,10 +166,10 @@ class Store:
         return bad
 
     def trim(self, keep_days: float | None = None, max_size: int | None = None) -> tuple[int, int]:
-        """Remove results not used for `keep_days`, and the oldest until `max_size` bytes are left; then what no result needs.
+        """Remove results not used for `keep_days`, the oldest until `max_size` bytes are left, what none needs.
 
-        Gives how many objects went, and their bytes. What was used within the last hour, or since the oldest build that is
-        still under way began, stays.
+        Gives how many objects went, and their bytes. What was used within the last hour, or since the oldest build
+        that is still under way began, stays.
         """
         now = time.time()
         spared_from = min(now - USED_WITHIN, self.running.since())

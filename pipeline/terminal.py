@@ -1,4 +1,4 @@
-"""What people read: progress while building, plans, the node reference, facts. Plain lines, with a bar on a terminal."""
+"""What people read: progress, plans, the node reference, facts. Plain lines, with a bar on a terminal."""
 
 from __future__ import annotations
 
@@ -92,9 +92,8 @@ def closing_lines(record: Record) -> list[str]:
     if record.stopped:
         lines.append(record.stopped)
     states = ", ".join(f"{count} {state}" for state, count in record.states.items())
-    lines.append(
-        f"{_many(len(record.assets), 'asset')}: {states} ({_many(record.count('ran'), 'step')} ran, {record.count('reused')} reused)"
-    )
+    steps = f"{_many(record.count('ran'), 'step')} ran, {record.count('reused')} reused"
+    lines.append(f"{_many(len(record.assets), 'asset')}: {states} ({steps})")
     return lines
 
 
@@ -143,8 +142,8 @@ def plan_json(planned: list[Planned]) -> str:
 
     tangentry_plan   1
     steps            every step: its asset ("" for those of `whole_library`), node and kind
-        state        "run", "reuse", "wait" (runs if what it waits for turns out changed), "skip" (an input that it needs
-                     is left out) or "blocked" (one that it needs failed)
+        state        "run", "reuse", "wait" (runs if what it waits for turns out changed), "skip" (an input that it
+                     needs is left out) or "blocked" (one that it needs failed)
         reasons      as in the record; of "wait", the node that it waits for
     """
     steps = [
@@ -200,10 +199,9 @@ def kind_lines(kind: Kind) -> list[str]:
     lines = [f"{kind.name}: {_takes(kind)} -> {_gives(kind)}", ""]
     if kind.inputs:
         lines.append("inputs")
-        lines += [
-            f"  {one.name:14} {'the values of all assets, each ' if one.many else ''}{one.flow.__name__}{', may be left out' if one.optional else ''}"
-            for one in kind.inputs.values()
-        ]
+        for one in kind.inputs.values():
+            every = "the values of all assets, each " if one.many else ""
+            lines.append(f"  {one.name:14} {every}{one.flow.__name__}{', may be left out' if one.optional else ''}")
     if kind.settings:
         lines.append("settings")
         for setting in kind.settings.values():

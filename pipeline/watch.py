@@ -18,7 +18,7 @@ def wait_for_saves(
     """The files of the next burst: those that a build rests on, and new ones in the folders it looked into.
 
     outputs, store   what builds themselves write
-    began            when the build began (seconds since the epoch); what was saved while it ran counts as the next burst
+    began            when the build began (seconds since the epoch): what was saved while it ran is the next burst
 
     Raises TangentryError where `watchfiles` (the extra `tangentry[watch]`) is not installed.
     """

@@ -67,7 +67,7 @@ class Bench:
     def carry(
         self, steps: Iterable[Step], last: dict[StepId, Parts], refuse: dict[StepId, str] | None = None
     ) -> Iterator[Event]:
-        """Settle steps, which stand in an order in which they can run. Those in `refuse` fail with the message given."""
+        """Settle steps, given in an order in which they can run. Those in `refuse` fail with the message given."""
         for step in steps:
             if refuse and step.id in refuse:
                 done = Done(step.id, "failed", error=refuse[step.id])

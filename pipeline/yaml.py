@@ -1,7 +1,8 @@
 """YAML as data that knows where it stands: every key and value with its line and column.
 
-Scalars follow the core schema of YAML 1.2.2, chapter 10.3, not YAML 1.1: `1e-8` is a number, `no` is text, `012` is twelve.
-Anchors and aliases, tags, several documents and duplicate keys are refused, so a small file can't unfold into a huge one.
+Scalars follow the core schema of YAML 1.2.2, chapter 10.3, not YAML 1.1: `1e-8` is a number, `no` is text, `012` is
+twelve. Anchors and aliases, tags, several documents and duplicate keys are refused, so a small file can't unfold into
+a huge one.
 """
 
 from __future__ import annotations

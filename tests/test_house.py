@@ -15,6 +15,7 @@ import pytest
 ROOT = Path(__file__).parents[1]
 TOP = {"README.md", "DEVELOPERS.md", "pyproject.toml", "pipeline", "nodes", "graphs", "tests", "LICENSE"}
 SOURCES = sorted([*ROOT.glob("pipeline/**/*.py"), *ROOT.glob("nodes/**/*.py")])
+KINDS = sorted(path for path in ROOT.glob("nodes/*.py") if path.stem != "__init__")
 
 
 def name_of(path: Path) -> str:
@@ -76,6 +77,11 @@ def test_no_import_runs_in_a_circle():
     assert list(nx.simple_cycles(arrows)) == []
 
 
+@pytest.mark.parametrize("kind", KINDS, ids=lambda path: path.stem)
+def test_every_kind_has_its_test(kind):
+    assert (ROOT / "tests" / "nodes" / f"test_{kind.stem}.py").is_file()
+
+
 @pytest.mark.parametrize("path", SOURCES, ids=name_of)
 def test_everything_public_is_documented(path):
     tree = ast.parse(path.read_text())
@@ -98,8 +104,27 @@ def _inner(tree: ast.Module, node: ast.AST) -> bool:
     return False
 
 
+PICKLERS = {"pickle", "_pickle", "cPickle", "cloudpickle", "dill", "joblib", "marshal", "shelve"}
+
+
+@pytest.mark.parametrize("path", SOURCES, ids=name_of)
+def test_nothing_is_pickled(path):
+    for node in ast.walk(ast.parse(path.read_text())):
+        names = [alias.name for alias in node.names] if isinstance(node, (ast.Import, ast.ImportFrom)) else []
+        names += [node.module or ""] if isinstance(node, ast.ImportFrom) else []
+        assert not PICKLERS & {name.split(".")[0] for name in names}
+        if isinstance(node, ast.Call) and isinstance(node.func, ast.Attribute):
+            called, words = node.func.attr, {word.arg: ast.unparse(word.value) for word in node.keywords}
+            owner = ast.unparse(node.func.value)
+            if owner in ("np", "numpy") and called in ("load", "save", "savez", "savez_compressed"):
+                assert words.get("allow_pickle") == "False", f"{owner}.{called}, line {node.lineno}"
+
+
 def test_listing_kinds_imports_nothing_heavy():
-    code = "import sys; from tangentry.pipeline.cli import main; main(['nodes']); print(sorted(sys.modules), file=sys.stderr)"
+    code = (
+        "import sys; from tangentry.pipeline.cli import main; main(['nodes']); "
+        "print(sorted(sys.modules), file=sys.stderr)"
+    )
     told = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True).stderr
 
     assert not {"numba", "trimesh", "scipy", "imagecodecs", "networkx", "PIL"} & set(re.findall(r"'(\w+)'", told))

@@ -118,7 +118,9 @@ from text import Text, note
 VERSION = 1
 
 
-def put(text: Text, unless_faulty: Findings | None = None, *, file: OutputFile | str, log: str = "calls") -> Files | None:
+def put(
+    text: Text, unless_faulty: Findings | None = None, *, file: OutputFile | str, log: str = "calls"
+) -> Files | None:
     """The words as a file."""
     judged = None if unless_faulty is None else (unless_faulty.faulty, unless_faulty.facts)
     note(log, "put", VERSION, text.words, judged, file)

@@ -190,7 +190,10 @@ def test_start_writes_a_project_that_builds_at_once(tmp_path, capsys):
 
 
 def test_help_imports_nothing_heavy():
-    code = "import sys; from tangentry.pipeline.cli import main\ntry: main(['--help'])\nexcept SystemExit: print(sorted(sys.modules), file=sys.stderr)"
+    code = (
+        "import sys; from tangentry.pipeline.cli import main\n"
+        "try: main(['--help'])\nexcept SystemExit: print(sorted(sys.modules), file=sys.stderr)"
+    )
     told = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True).stderr
 
     assert not HEAVY & set(re.findall(r"'(\w+)'", told))

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import random
 import re
 from collections import defaultdict
@@ -32,7 +33,7 @@ def test_boxes_and_lines_keep_apart_and_lines_run_to_the_right(seed):
         spots[column].append((arranged.place[spot], BOX if isinstance(spot, str) else WAYPOINT))
     for column in spots.values():
         column.sort()
-        for (above, high), (below, low) in zip(column, column[1:], strict=False):
+        for (above, high), (below, low) in itertools.pairwise(column):
             assert below - above > (high + low) / 2
 
 

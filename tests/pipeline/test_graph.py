@@ -26,22 +26,52 @@ REFUSED = {
     "no version": ("kinds: kinds\n" + RAW, "begin with `tangentry: 1`"),
     "another version": (HEAD.replace("1", "2") + RAW, ":1:12: version 2 of the format; this program reads version 1"),
     "an unknown kind": (HEAD + RAW + "  x: {node: laod}\n", ':6:13: there is no node kind "laod"'),
-    "an unknown setting": (HEAD + RAW + "  x: {node: loud, text: raw, tims: 2}\n", ':6:30: node "x" has no input or setting "tims"; loud takes text, other, times, log. Did you mean "times"?'),
-    "a wrong type": (HEAD + RAW + "  x: {node: loud, text: raw, times: often}\n", ':6:37: setting "times" of node "x" expects a whole number; found "often"'),
+    "an unknown setting": (
+        HEAD + RAW + "  x: {node: loud, text: raw, tims: 2}\n",
+        ':6:30: node "x" has no input or setting "tims"; loud takes text, other, times, log. Did you mean "times"?',
+    ),
+    "a wrong type": (
+        HEAD + RAW + "  x: {node: loud, text: raw, times: often}\n",
+        ':6:37: setting "times" of node "x" expects a whole number; found "often"',
+    ),
     "a fraction": (HEAD + RAW + "  x: {node: loud, text: raw, times: 1.5}\n", "expects a whole number; found 1.5"),
     "a boolean": (HEAD + RAW + "  x: {node: loud, text: raw, times: true}\n", "expects a whole number; found true"),
-    "a wrong choice": (HEAD + "per_asset:\n  raw: {node: take, file: a, if_missing: skp}\n", 'expects "fail" or "skip"; found "skp". Did you mean "skip"?'),
-    "a missing reference": (HEAD + RAW + "  x: {node: loud, text: rwa}\n", ':6:25: there is no node "rwa" for input "text" of "x". Did you mean "raw"?'),
+    "a wrong choice": (
+        HEAD + "per_asset:\n  raw: {node: take, file: a, if_missing: skp}\n",
+        'expects "fail" or "skip"; found "skp". Did you mean "skip"?',
+    ),
+    "a missing reference": (
+        HEAD + RAW + "  x: {node: loud, text: rwa}\n",
+        ':6:25: there is no node "rwa" for input "text" of "x". Did you mean "raw"?',
+    ),
     "a missing input": (HEAD + RAW + "  x: {node: loud}\n", ':6:3: node "x" lacks the input "text", which loud needs'),
     "a missing setting": (HEAD + RAW + "  x: {node: put, text: raw}\n", 'lacks the setting "file", which put needs'),
-    "a wrong flow type": (HEAD + RAW + "  v: {node: judge, text: raw}\n  x: {node: loud, text: v}\n", 'input "text" of node "x" takes Text; "v" gives Findings'),
-    "an unknown output": (HEAD + RAW + "  x: {node: loud, text: raw.best}\n", 'node "raw" has no output "best"; it gives one value, named "raw"'),
-    "a cycle": (HEAD + "per_asset:\n  a: {node: loud, text: b}\n  b: {node: loud, text: a}\n", "waits for itself: a -> b -> a"),
+    "a wrong flow type": (
+        HEAD + RAW + "  v: {node: judge, text: raw}\n  x: {node: loud, text: v}\n",
+        'input "text" of node "x" takes Text; "v" gives Findings',
+    ),
+    "an unknown output": (
+        HEAD + RAW + "  x: {node: loud, text: raw.best}\n",
+        'node "raw" has no output "best"; it gives one value, named "raw"',
+    ),
+    "a cycle": (
+        HEAD + "per_asset:\n  a: {node: loud, text: b}\n  b: {node: loud, text: a}\n",
+        "waits for itself: a -> b -> a",
+    ),
     "a duplicate key": (HEAD + RAW + "  raw: {node: take, file: b}\n", ':6:3: "raw" is given twice; first at line 5'),
-    "an unfilled placeholder": (HEAD + "per_asset:\n  raw: {node: take, file: '{fil}'}\n", '"{fil}" has nothing to fill it; there are file, stem, folder, below. Did you mean "file"?'),
+    "an unfilled placeholder": (
+        HEAD + "per_asset:\n  raw: {node: take, file: '{fil}'}\n",
+        '"{fil}" has nothing to fill it; there are file, stem, folder, below. Did you mean "file"?',
+    ),
     "an asset's field without a library": ("tangentry: 1\nkinds: kinds\n" + RAW, "it runs for no one asset"),
-    "an asset's field for the whole library": (HEAD + RAW + "whole_library:\n  j: {node: join, texts: raw, file: '{stem}.out'}\n", "it runs for no one asset"),
-    "many for one": (HEAD + RAW + "whole_library:\n  x: {node: loud, text: raw}\n", "takes one value; \"raw\" is one per asset"),
+    "an asset's field for the whole library": (
+        HEAD + RAW + "whole_library:\n  j: {node: join, texts: raw, file: '{stem}.out'}\n",
+        "it runs for no one asset",
+    ),
+    "many for one": (
+        HEAD + RAW + "whole_library:\n  x: {node: loud, text: raw}\n",
+        'takes one value; "raw" is one per asset',
+    ),
     "one for many": (HEAD + RAW + "  j: {node: join, texts: raw, file: a.out}\n", "takes the values of all assets"),
     "an alias": (HEAD + "about: &a words\n" + RAW, 'an anchor ("&a")'),
     "a tag": (HEAD + "about: !!python/name:os.system ''\n" + RAW, "a tag (tag:yaml.org,2002:python/name:os.system)"),
@@ -49,17 +79,29 @@ REFUSED = {
     "an empty file": ("", "the file is empty"),
     "a list": ("- a\n", "a graph file is a mapping"),
     "no nodes": (HEAD, "the graph has no nodes"),
-    "an input that is no name": (HEAD + RAW + "  x: {node: loud, text: [raw]}\n", 'input "text" of node "x" names another node'),
+    "an input that is no name": (
+        HEAD + RAW + "  x: {node: loud, text: [raw]}\n",
+        'input "text" of node "x" names another node',
+    ),
     "a node that is no mapping": (HEAD + RAW + "  x: loud\n", 'node "x" is a mapping that begins with `node: KIND`'),
     "a node without a kind": (HEAD + RAW + "  x: {text: raw}\n", "does not say its kind"),
     "a bad name": (HEAD + RAW + "  x.y: {node: loud, text: raw}\n", "a node's name is made of"),
     "deep nesting": (HEAD + "options: {a: " + "[" * 60 + "]" * 60 + "}\n", "nested deeper than"),
     "a huge value": (HEAD + "about: '" + "k" * 1_000_000 + "'\n", "1000000 characters in one value"),
     "a huge key": (HEAD + "'" + "k" * 1_000_000 + "': 1\n", "not YAML"),
-    "too many nodes": (HEAD + RAW + "".join(f"  n{k}: {{node: loud, text: raw}}\n" for k in range(20_100)), "more than 20000 nodes"),
-    "a kinds folder that is not there": ("tangentry: 1\nkinds: nowhere\n" + RAW, "there is no such folder of node kinds"),
-    "outputs in an outermost graph": (HEAD + RAW + "outputs: raw\n", "`outputs` belongs to a graph that is used as a node"),
-}  # fmt: skip
+    "too many nodes": (
+        HEAD + RAW + "".join(f"  n{k}: {{node: loud, text: raw}}\n" for k in range(20_100)),
+        "more than 20000 nodes",
+    ),
+    "a kinds folder that is not there": (
+        "tangentry: 1\nkinds: nowhere\n" + RAW,
+        "there is no such folder of node kinds",
+    ),
+    "outputs in an outermost graph": (
+        HEAD + RAW + "outputs: raw\n",
+        "`outputs` belongs to a graph that is used as a node",
+    ),
+}
 
 
 @pytest.mark.parametrize("case", REFUSED)
@@ -120,8 +162,24 @@ def test_all_errors_of_a_file_are_told_at_once(project):
 
 def test_scalars_follow_the_core_schema():
     """YAML 1.2.2, 10.3.2: tag resolution of the core schema, its own examples and the traps of YAML 1.1."""
-    known = {"1e-8": 1e-8, "no": "no", "yes": "yes", "012": 12, "0o14": 12, "0xC": 12, "1:30": "1:30", "~": None, "": None, "true": True,
-             ".inf": float("inf"), "-.5": -0.5, "1.": 1.0, "+12e03": 12000.0, "1_000": "1_000", "0.1.2": "0.1.2"}  # fmt: skip
+    known = {
+        "1e-8": 1e-8,
+        "no": "no",
+        "yes": "yes",
+        "012": 12,
+        "0o14": 12,
+        "0xC": 12,
+        "1:30": "1:30",
+        "~": None,
+        "": None,
+        "true": True,
+        ".inf": float("inf"),
+        "-.5": -0.5,
+        "1.": 1.0,
+        "+12e03": 12000.0,
+        "1_000": "1_000",
+        "0.1.2": "0.1.2",
+    }
 
     assert {text: scalar(text) for text in known} == known
 
@@ -155,7 +213,7 @@ def test_a_setting_that_is_one_option_keeps_its_type(project):
 
 
 def test_an_option_that_the_graph_does_not_have_is_refused(project):
-    with pytest.raises(GraphError, match='--set tims: .* has no such option; it has out, times. Did you mean "times"'):
+    with pytest.raises(GraphError, match=r'--set tims: .* has no such option; it has out, times. Did you mean "times"'):
         read_graph(project.graph, {"tims": 7})
 
 
@@ -179,8 +237,11 @@ def test_members_are_named_by_their_path_from_the_graph(project):
     members = find_members(read_graph(project.graph))
 
     assert [(one.name, one.below) for one in members] == [
-        ("props/a.txt", "a.txt"), ("props/b.txt", "b.txt"), ("props/c.txt", "c.txt"), ("props/deep/x.txt", "deep/x.txt"),
-    ]  # fmt: skip
+        ("props/a.txt", "a.txt"),
+        ("props/b.txt", "b.txt"),
+        ("props/c.txt", "c.txt"),
+        ("props/deep/x.txt", "deep/x.txt"),
+    ]
     assert members[3].fields == {"file": "props/deep/x.txt", "stem": "x", "folder": "props/deep", "below": "deep/x.txt"}
 
 

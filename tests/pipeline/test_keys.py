@@ -1,8 +1,8 @@
 """Keys are right: after any edits, exactly what is affected runs again, and everything else is reused.
 
-The nodes of the test project write down all they can see when they are called: their arguments, the files they read, the
-version of their own source and of what they import. So a build from scratch tells what an incremental build had to call,
-without asking any key: every call it made whose like was never made before.
+The nodes of the test project write down all they can see when they are called: their arguments, the files they read,
+the version of their own source and of what they import. So a build from scratch tells what an incremental build had
+to call, without asking any key: every call it made whose like was never made before.
 """
 
 from __future__ import annotations

@@ -51,7 +51,8 @@ def test_graphs_nest(project):
     nested(project)
     project.write(
         "outer.yaml",
-        "tangentry: 1\ninputs: {text: Text}\nper_asset:\n  in: {node: ./inner.yaml, words: text}\noutputs: {said: in.said, verdict: in.verdict}\n",
+        "tangentry: 1\ninputs: {text: Text}\nper_asset:\n  in: {node: ./inner.yaml, words: text}\n"
+        "outputs: {said: in.said, verdict: in.verdict}\n",
     )
     project.edit("graph.yaml", "{node: ./inner.yaml, words: raw, times: 3}", "{node: ./outer.yaml, text: raw}")
 
