@@ -15,7 +15,7 @@ from tangentry.pipeline.flow import Array
 NEWLINE, RETURN, SPACE, HASH, PLUS, MINUS, POINT, ZERO, BACKSLASH, SMALL_E, SMALL_I, SMALL_N = np.frombuffer(
     b"\n\r #+-.0\\ein", np.uint8
 )
-ONE = np.uint64(1)
+NONE, ONE = np.uint64(0), np.uint64(1)
 POWERS = 10.0 ** np.arange(23)  # each exact in float64, so one product or quotient rounds once
 FIRST = 1 << 16  # bytes in which a line most likely ends
 MOST_FLOAT = float(np.finfo(np.float32).max)
@@ -80,14 +80,13 @@ def skip_line(text: Array, i: np.uint64) -> np.uint64:
     """The offset after the line's end; a line's end after a backslash does not end it."""
     i = np.uint64(i)
     while True:
-        first = i
         while text[i] != NEWLINE:
             i += ONE
         before = i
         i += ONE
-        if before > first and text[before - ONE] == RETURN:
+        if before > NONE and text[before - ONE] == RETURN:
             before -= ONE
-        if before == first or text[before - ONE] != BACKSLASH or i >= np.uint64(len(text)):
+        if before == NONE or text[before - ONE] != BACKSLASH or i >= np.uint64(len(text)):
             return i
 
 

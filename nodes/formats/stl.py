@@ -106,7 +106,8 @@ def _walk(text: Array, points: Array, where: Array, take: bool) -> tuple[int, in
             vertices += 1
             corners += 1
         elif _starts(text, i, OUTER):
-            corners = 0
+            if corners != 0:
+                return vertices, solids, signed(line)
         elif _starts(text, i, ENDLOOP):
             if corners != 3:
                 return vertices, solids, signed(line)
