@@ -120,8 +120,8 @@ def test_a_kinds_folder_may_import_its_neighbours_either_way(project):
 
 def test_what_newer_source_made_is_not_kept_under_the_key_of_the_older(project):
     mark = project.folder / "kinds/deep/mark.py"
-    saved = f"open({str(mark)!r}, 'a').write('#')\n    from deep import mark"  # as somebody does while a build runs
-    project.edit("kinds/loud.py", "from deep import mark", saved)
+    saved = f"with open({str(mark)!r}, 'a') as file:\n        file.write('#')\n    from deep import mark"
+    project.edit("kinds/loud.py", "from deep import mark", saved)  # as somebody does while a build runs
     before = mark.read_text()
     project.build()
 
