@@ -306,7 +306,7 @@ def _store_words(parser: argparse.ArgumentParser) -> None:
         action.set_defaults(run=run)
         if name == "trim":
             action.add_argument(
-                "--keep-days", metavar="DAYS", type=float, help="remove what was not used for so many days"
+                "--keep-days", metavar="DAYS", type=_days, help="remove what was not used for so many days"
             )
             action.add_argument(
                 "--max-size", metavar="SIZE", type=_size, help="remove the oldest until so much is left: 500M, 20G"
@@ -317,9 +317,23 @@ def _size(text: str) -> int:
     units = {"K": 10**3, "M": 10**6, "G": 10**9, "T": 10**12}
     number, unit = (text[:-1], units[text[-1].upper()]) if text[-1:].upper() in units else (text, 1)
     try:
-        return int(float(number) * unit)
+        return int(_positive(number) * unit)
     except ValueError:
         raise argparse.ArgumentTypeError(f"{text!r} is not a size; write 500M or 20G") from None
+
+
+def _days(text: str) -> float:
+    try:
+        return _positive(text)
+    except ValueError:
+        raise argparse.ArgumentTypeError(f"{text!r} is not a number of days; write 30, or 0.5") from None
+
+
+def _positive(text: str) -> float:
+    number = float(text)
+    if not 0.0 <= number < float("inf"):
+        raise ValueError(text)
+    return number
 
 
 def _open_store(chosen: argparse.Namespace) -> Any:

@@ -6,7 +6,6 @@ import json
 import re
 import subprocess
 import sys
-import time
 
 import jsonschema
 import pytest
@@ -80,7 +79,7 @@ def test_the_record_is_the_contracts(project):
 def test_a_nothing_changed_build_is_told_from_stats_alone(project, capsys, monkeypatch):
     project.write("props/b.txt", "rude")
     main(["build", str(project.graph)])
-    time.sleep(2.1)
+    project.settle()
     main(["build", str(project.graph)])
     before = capsys.readouterr().out
 
@@ -97,7 +96,7 @@ def test_a_nothing_changed_build_is_told_from_stats_alone(project, capsys, monke
 )
 def test_any_change_breaks_the_seal(project, change, capsys):
     main(["build", str(project.graph)])
-    time.sleep(2.1)
+    project.settle()
     main(["build", str(project.graph)])
     more: list[str] = []
     if change == "a member added":
@@ -207,3 +206,32 @@ def test_store_commands(project, capsys):
 
     assert main(["store", "verify", str(project.graph)]) == 1 and "1 damaged" in capsys.readouterr().out
     assert main(["store", "trim", str(project.graph), "--max-size", "1K"]) == 0
+
+
+@pytest.mark.parametrize(
+    ("words", "told"),
+    [
+        ("build GRAPH --workers 0", "'0' is not a number of processes; write 1 or more"),
+        ("build GRAPH --set times", "--set times: write --set NAME=VALUE"),
+        ("build GRAPH --set tims=1", 'has no such option; it has out, times. Did you mean "times"?'),
+        ("build GRAPH --asset nobody", "--asset nobody: no asset of the library has such a name"),
+        ("build GRAPH --keep-going --stop-at-first", "not allowed with argument"),
+        ("build nowhere.yaml", "nowhere.yaml: can't be read: No such file or directory"),
+        ("store trim GRAPH", "say what may go: --keep-days DAYS or --max-size SIZE"),
+        ("store trim GRAPH --max-size inf", "'inf' is not a size; write 500M or 20G"),
+        ("store trim GRAPH --max-size much", "'much' is not a size; write 500M or 20G"),
+        ("store trim GRAPH --keep-days -3", "'-3' is not a number of days"),
+        ("store trim GRAPH --keep-days nan", "'nan' is not a number of days"),
+        ("store size --store s3://shelf", "a store behind a URL is looked after where it lies"),
+        ("nodes lood", 'there is no node kind "lood"; there are'),
+        ("bild GRAPH", "invalid choice: 'bild'"),
+    ],
+)
+def test_a_wrong_call_is_told_in_plain_words_with_exit_code_2(project, capsys, words, told):
+    (project.folder / ".tangentry").mkdir()
+    try:
+        code = main(words.replace("GRAPH", str(project.graph)).split())
+    except SystemExit as end:
+        code = end.code
+
+    assert code == 2 and told in capsys.readouterr().err
