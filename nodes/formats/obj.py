@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import replace
 
 import numpy as np
-from tangentry.nodes.formats.corner_streams import sound_normals, sound_uvs, used_rows
+from tangentry.nodes.formats.corner_streams import corners_of, grouped, sound_normals, sound_uvs, used_rows
 from tangentry.nodes.formats.obj_materials import Materials
 from tangentry.nodes.formats.obj_scan import Statements, read_statements
 from tangentry.nodes.model import Asset, Part
@@ -28,10 +28,8 @@ def read_obj(file: InputFile) -> Asset:
     owner, keys, smoothing = _owners(found, materials)
     notes = [f"{found.skipped} lines, curves or other statements passed over"] if found.skipped else []
     parts = []
-    for row, (name, material) in enumerate(keys):
-        faces = np.flatnonzero(owner == row).astype(np.int32)
-        if len(faces):
-            parts.append(_part(found, faces, name, material, smoothing, notes))
+    for row, faces in grouped(owner):
+        parts.append(_part(found, faces, *keys[row], smoothing, notes))
     return Asset(
         file.path, tuple(parts), materials.all(), tuple(materials.images), False, None, (*notes, *materials.notes)
     )
@@ -70,12 +68,10 @@ def _libraries(names: str, materials: Materials) -> None:
 
 
 def _part(found: Statements, faces: Array, name: str, material: int, smoothing: Array | None, notes: list[str]) -> Part:
-    whole = len(faces) == len(found.starts) - 1
-    sizes = np.diff(found.starts)[faces]
-    starts = np.concatenate([[0], np.cumsum(sizes)]).astype(np.int32)
-    corners = found.corners
-    if not whole:
-        corners = corners[:, np.repeat(found.starts[faces] - starts[:-1], sizes) + np.arange(starts[-1])]
+    starts, corners = found.starts, found.corners
+    if len(faces) < len(starts) - 1:
+        starts, taken = corners_of(starts, faces)
+        corners = corners[:, taken]
     points = used_rows(found.points, corners[0])
     colours = (used_rows(found.colours, corners[0]),) if len(found.colours) else ()
     groups = None if smoothing is None else smoothing[faces]

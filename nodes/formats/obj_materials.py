@@ -51,7 +51,8 @@ class Materials:
 
     def __init__(self, file: InputFile) -> None:
         self._file = file
-        self._maps: dict[str, tuple[MapUse, ...]] = {}
+        self._maps: dict[str, list[MapUse]] = {}
+        self._libraries: set[str] = set()
         self._rows: dict[str, int] = {}
         self._image_rows: dict[str, int] = {}
         self.images: list[Image] = []
@@ -59,20 +60,23 @@ class Materials:
 
     def library(self, name: str) -> None:
         """Read a library beside the file; one that is not there is noted."""
+        if name in self._libraries:
+            return
+        self._libraries.add(name)
         beside = self._file.beside(_beside(name))
         if not beside.exists:
             self.notes.append(f"material library {shown(name)} is not there")
             return
-        material, maps = "", {}  # type: str, dict[str, tuple[MapUse, ...]]
+        material, maps = "", {}  # type: str, dict[str, list[MapUse]]
         for line in as_words(beside.bytes().tobytes()).splitlines():
             keyword, _, rest = line.strip().replace("\t", " ").partition(" ")
             if keyword.lower() == "newmtl":
                 material = rest.strip()
-                maps.setdefault(material, ())
+                maps.setdefault(material, [])
             elif keyword.lower() in ROLES and material and rest.strip():
                 use = self._use(ROLES[keyword.lower()], rest.strip(), beside, material)
                 if use is not None:
-                    maps[material] = (*maps.get(material, ()), use)
+                    maps[material].append(use)
         self._maps = {**maps, **self._maps}
 
     def row(self, name: str) -> int:
@@ -81,7 +85,7 @@ class Materials:
 
     def all(self) -> tuple[Material, ...]:
         """The materials that were used."""
-        return tuple(Material(name, self._maps.get(name, ())) for name in self._rows)
+        return tuple(Material(name, tuple(self._maps.get(name, ()))) for name in self._rows)
 
     def _use(self, role: str, words: str, library: InputFile, material: str) -> MapUse | None:
         name, strength = _image_name(words)

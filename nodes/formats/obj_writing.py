@@ -132,13 +132,13 @@ def _maps(material: Material, images: list[str]) -> list[str]:
 
 def _names(names: list[str]) -> list[str]:
     """Names in one line each, none of them twice."""
-    out: list[str] = []
+    taken: dict[str, None] = {}
     for number, name in enumerate(names):
         plain = _plain(name) or f"material_{number}"
-        while plain in out:
+        while plain in taken:
             plain = f"{plain}_{number}"
-        out.append(plain)
-    return out
+        taken[plain] = None
+    return list(taken)
 
 
 def _plain(name: str) -> str:

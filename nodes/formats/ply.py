@@ -6,7 +6,7 @@ from dataclasses import replace
 from pathlib import PurePosixPath
 
 import numpy as np
-from tangentry.nodes.formats.corner_streams import sound_normals, sound_uvs, used_rows
+from tangentry.nodes.formats.corner_streams import grouped, sound_normals, sound_uvs, used_rows, with_faces
 from tangentry.nodes.formats.gltf_reading import sniff
 from tangentry.nodes.formats.ply_scan import AGAIN, NOTHING, Columns, read_elements, read_header
 from tangentry.nodes.formats.scan import shown
@@ -19,6 +19,7 @@ UV_NAMES = (("s", "t"), ("u", "v"), ("texture_u", "texture_v"))
 MORE_UVS = [(f"s{k}", f"t{k}") for k in range(1, 8)]  # as `write_ply` names further sets
 NORMAL, TANGENT = ("nx", "ny", "nz"), ("tx", "ty", "tz", "side")
 COLOUR = ("red", "green", "blue", "alpha")
+PASSED_OVER = -2  # owner of faces of fewer than three corners; -1: no material
 CORNERS, UVS, IMAGE = ("vertex_indices", "vertex_index"), "texcoord", "texnumber"
 
 
@@ -41,11 +42,14 @@ def read_ply(file: InputFile) -> Asset:
     if not keep.any():
         raise InputError(file, "", "there are no faces in it", "export the mesh with its faces")
     images = tuple(_image(file, name, notes) for name in header.textures)
+    whole = _part(file.stem, vertex, face, points, sizes, index, notes)
     owner = _owner(file, face, sizes, len(images))
-    parts = []
-    for material in np.unique(owner[keep]).tolist():
-        faces = np.flatnonzero(keep & (owner == material))
-        parts.append(_part(file.stem, vertex, face, points, sizes, index, faces, material, notes))
+    owned = grouped(np.where(keep, owner, PASSED_OVER))
+    parts = [
+        replace(whole if len(faces) == len(sizes) else with_faces(whole, faces), material=material)
+        for material, faces in owned
+        if material != PASSED_OVER
+    ]
     _tell_the_rest(read, notes)
     materials = tuple(
         Material(PurePosixPath(image.name).stem, (MapUse("colour", k),)) for k, image in enumerate(images)
@@ -120,50 +124,40 @@ def _owner(file: InputFile, face: Columns, sizes: Array, images: int) -> Array:
 
 
 def _part(
-    name: str,
-    vertex: Columns,
-    face: Columns,
-    points: Array,
-    sizes: Array,
-    index: Array,
-    faces: Array,
-    material: int,
-    notes: list[str],
+    name: str, vertex: Columns, face: Columns, points: Array, sizes: Array, index: Array, notes: list[str]
 ) -> Part:
-    first = np.cumsum(sizes) - sizes
-    starts = np.concatenate([[0], np.cumsum(sizes[faces])])
-    corner = np.repeat(first[faces] - starts[:-1], sizes[faces]) + np.arange(starts[-1])
-    at, of = index[corner], np.repeat(faces, sizes[faces])
-    part = Part(name, material, starts.astype(np.int32), used_rows(points, at))
-    part = replace(part, uvs=_uvs(vertex, face, sizes, corner, at, name, notes), colours=_colours(vertex, face, at, of))
+    starts = np.concatenate([[0], np.cumsum(sizes)]).astype(np.int32)
+    part = Part(name, -1, starts, used_rows(points, index))
+    part = replace(
+        part, uvs=_uvs(vertex, face, sizes, index, name, notes), colours=_colours(vertex, face, index, sizes)
+    )
     if vertex.has(*NORMAL):
-        part = replace(part, normals=sound_normals(vertex.table(*NORMAL), at, part, notes))
-    return replace(part, frames=_frames(vertex, at, part))
+        part = replace(part, normals=sound_normals(vertex.table(*NORMAL), index, part, notes))
+    return replace(part, frames=_frames(vertex, index, part))
 
 
-def _uvs(
-    vertex: Columns, face: Columns, sizes: Array, corner: Array, at: Array, name: str, notes: list[str]
-) -> tuple[Stream, ...]:
+def _uvs(vertex: Columns, face: Columns, sizes: Array, index: Array, name: str, notes: list[str]) -> tuple[Stream, ...]:
     found: list[Stream | None] = []
     values, lengths = face.lists.get(UVS, (np.zeros(0), np.zeros(0, np.int64)))
     if len(lengths) == len(sizes) and len(values):
         full = lengths == 2 * sizes
         own = np.repeat(full, sizes)
-        row = np.where(own, np.cumsum(own) - 1, -1)[corner]
         with np.errstate(over="ignore"):
             uvs = values[np.repeat(full, lengths)].reshape(-1, 2).astype(np.float32)
         label, first = distinct_values(uvs)
-        found.append(sound_uvs(uvs[first], np.append(label, -1)[row], name, notes))
+        row = np.full(len(index), -1, np.int32)
+        row[own] = label
+        found.append(sound_uvs(uvs[first], row, name, notes))
     else:
         names = next((names for names in UV_NAMES if vertex.has(*names)), None)
-        found += [sound_uvs(vertex.table(*names), at, name, notes)] if names else []
-    found += [sound_uvs(vertex.table(*names), at, name, notes) for names in MORE_UVS if vertex.has(*names)]
+        found += [sound_uvs(vertex.table(*names), index, name, notes)] if names else []
+    found += [sound_uvs(vertex.table(*names), index, name, notes) for names in MORE_UVS if vertex.has(*names)]
     return tuple(one for one in found if one is not None)
 
 
-def _colours(vertex: Columns, face: Columns, at: Array, of: Array) -> tuple[Stream, ...]:
+def _colours(vertex: Columns, face: Columns, at: Array, sizes: Array) -> tuple[Stream, ...]:
     """Colours of the vertices, or else of the faces; 0 to 1."""
-    for columns, index in ((vertex, at), (face, of)):
+    for columns, index in ((vertex, at), (face, np.repeat(np.arange(len(sizes)), sizes))):
         names = COLOUR if columns.has(*COLOUR) else COLOUR[:3]
         if columns.has(*names):
             values = columns.table(*names)
