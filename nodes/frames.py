@@ -22,8 +22,11 @@ def frames(
 ) -> Asset:
     """The asset with a tangent frame at every corner that needs one.
 
-    method   mikktspace: the scheme glTF 2.0 names as its default (Mikkelsen 2008); face: each face its own (Lengyel
-             2001); uniform, area, angle: averages over a vertex, skew kept for `orthogonalise` to deal with
+    method   mikktspace: the scheme glTF 2.0 names as its default (Mikkelsen 2008), for maps that others bake or decode;
+             face: each face its own (Lengyel 2001), for faceted shading and for looking at the UVs themselves;
+             angle: averages over a vertex by corner angle (Thuermer & Wuethrich 1998), however faces are cut; area: by
+             area (Max 1999), where small faces at bevels should not turn large ones; uniform: each triangle alike, as
+             plain loops do. All but mikktspace keep skew, for `orthogonalise` to deal with
     stored   tangents that the file brought: keep them, or replace them
     where    needed: parts whose material samples a tangent-space map, if the file names maps at all, else every part;
              all: every part that has UVs

@@ -7,22 +7,24 @@ from numba import njit
 
 
 @njit(cache=True, nogil=True)
-def angle_from(product: float, squares: float) -> float:
-    """The angle between vectors of this dot product and product of squared lengths: radians, within 3e-8; 0 of none.
+def angle_between_edges(across: float, along: float) -> float:
+    """The angle, 0 to pi, of a cross product's length and a dot product, within 3e-8; 0 where there are none.
 
-    The polynomial is 4.4.46 of Abramowitz & Stegun, Handbook of Mathematical Functions, 1964.
+    The polynomial is 4.4.49 of Abramowitz & Stegun, Handbook of Mathematical Functions, 1964.
     """
-    if not squares > 0:
+    small, large = min(across, abs(along)), max(across, abs(along))
+    if not 0 < large < np.inf:
         return 0.0
-    cosine = product / np.sqrt(squares)
-    x = min(abs(cosine), 1.0)
-    series = -0.0012624911
-    series = series * x + 0.0066700901
-    series = series * x - 0.0170881256
-    series = series * x + 0.0308918810
-    series = series * x - 0.0501743046
-    series = series * x + 0.0889789874
-    series = series * x - 0.2145988016
-    series = series * x + 1.5707963050
-    short_of_right = np.pi / 2 - np.sqrt(1.0 - x) * series
-    return np.pi / 2 - np.copysign(short_of_right, cosine)
+    x = small / large
+    square = x * x
+    series = 0.0028662257
+    series = series * square - 0.0161657367
+    series = series * square + 0.0429096138
+    series = series * square - 0.0752896400
+    series = series * square + 0.1065626393
+    series = series * square - 0.1420889944
+    series = series * square + 0.1999355085
+    series = series * square - 0.3333314528
+    angle = x + x * square * series
+    angle = np.pi / 2 - angle if across > abs(along) else angle
+    return np.pi - angle if along < 0 else angle

@@ -12,7 +12,7 @@ from typing import NamedTuple
 
 import numpy as np
 from numba import njit
-from tangentry.nodes.geometry.angles import angle_from
+from tangentry.nodes.geometry.angles import angle_between_edges
 from tangentry.nodes.geometry.directions import edge, laid
 from tangentry.nodes.model import Part, Stream
 from tangentry.pipeline.flow import Array
@@ -75,12 +75,12 @@ def _add_up(
         side, tx, ty, tz, bx, by, bz = laid(x1, y1, z1, x2, y2, z2, u1, v1, u2, v2)
         if side == 0:
             continue
-        if weighing == 1:
+        if weighing > 0:
             cx, cy, cz = y1 * z2 - z1 * y2, z1 * x2 - x1 * z2, x1 * y2 - y1 * x2
             w0 = w1 = w2 = np.sqrt(cx * cx + cy * cy + cz * cz)
-        elif weighing == 2:
-            one, two, both = x1 * x1 + y1 * y1 + z1 * z1, x2 * x2 + y2 * y2 + z2 * z2, x1 * x2 + y1 * y2 + z1 * z2
-            w0, w1 = angle_from(both, one * two), angle_from(one - both, one * (one + two - 2 * both))
+        if weighing == 2:
+            along = x1 * x2 + y1 * y2 + z1 * z2
+            w0, w1 = angle_between_edges(w0, along), angle_between_edges(w0, x1 * x1 + y1 * y1 + z1 * z1 - along)
             w2 = max(np.pi - w0 - w1, 0.0)
         for c, w in ((c0, w0), (c1, w1), (c2, w2)):
             v = vertex[c]

@@ -15,7 +15,7 @@ from typing import NamedTuple
 
 import numpy as np
 from numba import njit
-from tangentry.nodes.geometry.angles import angle_from
+from tangentry.nodes.geometry.angles import angle_between_edges
 from tangentry.nodes.geometry.cores import core_count, in_threads
 from tangentry.nodes.geometry.directions import Directions, edge
 from tangentry.nodes.geometry.rings import NEXT, PREVIOUS, join_ring, rings
@@ -170,8 +170,8 @@ def _angle_in_plane(points: Array, p: int, before: int, after: int, nx: float, n
     ax, ay, az = edge(points, p, before)
     bx, by, bz = edge(points, p, after)
     a_lean, b_lean = ax * nx + ay * ny + az * nz, bx * nx + by * ny + bz * nz
-    squares = (ax * ax + ay * ay + az * az - a_lean * a_lean) * (bx * bx + by * by + bz * bz - b_lean * b_lean)
-    return angle_from(ax * bx + ay * by + az * bz - a_lean * b_lean, squares)
+    across = nx * (ay * bz - az * by) + ny * (az * bx - ax * bz) + nz * (ax * by - ay * bx)
+    return angle_between_edges(abs(across), ax * bx + ay * by + az * bz - a_lean * b_lean)
 
 
 @njit(cache=True, nogil=True)
