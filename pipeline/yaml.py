@@ -17,6 +17,7 @@ from tangentry.pipeline.errors import GraphError
 DEEPEST = 40  # levels of nesting
 LONGEST = 10_000  # characters of one scalar
 LONGEST_KEY = 200
+MOST_ENTRIES = 20_000  # of one mapping
 LARGEST = 16_000_000  # bytes of a file
 
 INTEGER = re.compile(r"[-+]?[0-9]+")
@@ -160,6 +161,9 @@ def _mapping(mark: Mark, events: Any, file: str, problems: list[str], depth: int
             break
         key = _node(event, events, file, problems, depth + 1)
         value = _node(next(events), events, file, problems, depth + 1)
+        if len(entries) >= MOST_ENTRIES:
+            problem = f"more than {MOST_ENTRIES} entries; use a library pattern, or several graphs"
+            raise GraphError(*problems, f"{key.mark}: {problem}")
         name = key.value if isinstance(key.value, str) else event.value if isinstance(event, yaml.ScalarEvent) else None
         if name is None:
             problems.append(f"{key.mark}: a key must be plain text")

@@ -41,7 +41,7 @@ from text import Text, note
 VERSION = 1
 
 
-def take(file: InputFile | str, *, if_missing: Literal["fail", "skip"] = "fail", log: str = "calls") -> Text | None:
+def take(file: InputFile | str, *, if_missing: Literal["fail", "skip"] = "fail", log: str = "/dev/null") -> Text | None:
     """The words of a file, and those of the file beside it that its name and .side tell.
 
     if_missing  skip: leave it out
@@ -69,7 +69,7 @@ from text import Text, note
 VERSION = 1
 
 
-def loud(text: Text, other: Text | None = None, *, times: int = 1, log: str = "calls") -> Text:
+def loud(text: Text, other: Text | None = None, *, times: int = 1, log: str = "/dev/null") -> Text:
     """Louder words.
 
     times  how often they are said, at least 1
@@ -104,7 +104,7 @@ from text import Text, note
 VERSION = 1
 
 
-def judge(text: Text, *, log: str = "calls") -> Findings:
+def judge(text: Text, *, log: str = "/dev/null") -> Findings:
     """Rude words, if there are any."""
     note(log, "judge", VERSION, text.words)
     empty = np.zeros(0, np.int32)
@@ -121,7 +121,7 @@ VERSION = 1
 
 
 def put(
-    text: Text, unless_faulty: Findings | None = None, *, file: OutputFile | str, log: str = "calls"
+    text: Text, unless_faulty: Findings | None = None, *, file: OutputFile | str, log: str = "/dev/null"
 ) -> Files | None:
     """The words as a file."""
     judged = None if unless_faulty is None else (unless_faulty.faulty, unless_faulty.facts)
@@ -139,7 +139,7 @@ from text import Text, note
 VERSION = 1
 
 
-def join(texts: dict[str, Text], *, file: OutputFile | str, log: str = "calls") -> Files:
+def join(texts: dict[str, Text], *, file: OutputFile | str, log: str = "/dev/null") -> Files:
     """All words, in name order."""
     note(log, "join", VERSION, [(name, text.words) for name, text in texts.items()], file)
     said = "".join(f"{name}: {text.words}" for name, text in texts.items())

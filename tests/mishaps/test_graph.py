@@ -38,6 +38,16 @@ def test_a_hundred_thousand_nodes_are_refused(project, capsys):
     nodes = "".join(f"  n{number}: {{node: loud, text: raw}}\n" for number in range(100_000))
     project.write("graph.yaml", HEAD + RAW + nodes)
 
+    assert "more than 20000 entries; use a library pattern, or several graphs" in told(project, capsys)
+
+
+def test_graphs_as_nodes_that_multiply_are_refused(project, capsys):
+    """A thousand nodes used a thousand times would be a million."""
+    inner = "".join(f"  n{number}: {{node: loud, text: words}}\n" for number in range(1000))
+    project.write("inner.yaml", f"tangentry: 1\ninputs: [words]\nper_asset:\n{inner}outputs: n0\n")
+    outer = "".join(f"  m{number}: {{node: inner.yaml, words: raw}}\n" for number in range(1000))
+    project.write("graph.yaml", HEAD + RAW + outer)
+
     assert "more than 20000 nodes; use a library pattern, or several graphs" in told(project, capsys)
 
 

@@ -70,7 +70,7 @@ def test_draw_shows_every_node_with_its_kind_and_state(project):
 
 def test_words_stay_in_their_boxes(project):
     long = "a_name_that_is_much_too_long_for_any_box"
-    project.edit("graph.yaml", "  said:", f"  {long}: {{node: loud, text: raw, log: x}}\n  said:")
+    project.edit("graph.yaml", "  said:", f"  {long}: {{node: loud, text: raw}}\n  said:")
     graph = read_graph(project.graph)
 
     picture = ElementTree.fromstring(draw(graph))

@@ -90,8 +90,8 @@ REFUSED = {
     "a huge value": (HEAD + "about: '" + "k" * 1_000_000 + "'\n", "1000000 characters in one value"),
     "a huge key": (HEAD + "'" + "k" * 1_000_000 + "': 1\n", "not YAML"),
     "too many nodes": (
-        HEAD + RAW + "".join(f"  n{k}: {{node: loud, text: raw}}\n" for k in range(20_100)),
-        "more than 20000 nodes",
+        HEAD + RAW + "".join(f"  n{k}: {{node: loud, text: raw}}\n" for k in range(20_001)),
+        "more than 20000 entries",
     ),
     "a kinds folder that is not there": (
         "tangentry: 1\nkinds: nowhere\n" + RAW,

@@ -29,8 +29,7 @@ def record(project) -> Any:
     project.edit(
         "graph.yaml",
         "  all:",
-        "  more:    {node: loud, text: some, log: x}\n"
-        "  some:    {node: take, file: gone, if_missing: skip, log: x}\n  all:",
+        "  more:    {node: loud, text: some}\n  some:    {node: take, file: gone, if_missing: skip}\n  all:",
     )
     project.write("props/d.txt", "hello d")
     main(["build", str(project.graph)])
