@@ -128,12 +128,16 @@ def test_heights_come_in_8_and_16_bits():
     assert texels(TERMINAL / "props" / "quay_slab_height.png").dtype == np.uint16
 
 
-def test_the_detailed_twin_fits_its_prop_and_is_no_member_of_the_library():
-    coarse, fine = prop("cleat"), load(str(TERMINAL / "detail" / "cleat_detailed.obj"))
-    ends = [(a.parts[0].points.values.min(axis=0), a.parts[0].points.values.max(axis=0)) for a in (coarse, fine)]
+@pytest.mark.parametrize("row", [0, 1], ids=["foot", "horn"])
+def test_each_part_of_the_detailed_twin_fits_that_of_its_name(row):
+    coarse, fine = prop("cleat").parts[row], load(str(TERMINAL / "detail" / "cleat_detailed.obj")).parts[row]
+    ends = [(part.points.values.min(axis=0), part.points.values.max(axis=0)) for part in (coarse, fine)]
 
-    assert fine.parts[0].face_count > 20 * coarse.parts[0].face_count
+    assert coarse.name == fine.name and fine.face_count > 20 * coarse.face_count
     assert_allclose(*ends, atol=0.003)
+
+
+def test_the_detailed_twin_is_no_member_of_the_library():
     assert "cleat_detailed" not in {path.stem for path in PROPS}
 
 
