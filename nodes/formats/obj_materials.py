@@ -8,6 +8,7 @@ import ntpath
 import numpy as np
 from tangentry.nodes.formats.gltf_reading import sniff
 from tangentry.nodes.formats.image_headers import read_header
+from tangentry.nodes.formats.obj_bump import holds_normals
 from tangentry.nodes.formats.scan import as_words, shown
 from tangentry.nodes.model import Image, MapUse, Material
 from tangentry.pipeline.errors import InputError
@@ -28,6 +29,7 @@ ROLES = {
     "norm": "normal",
     "map_kn": "normal",
 }  # norm, map_kn, map_pr and map_pm: common practice, no source
+PLACING = ("-o", "-s", "-t")
 STATED = {".png", ".jpg", ".jpeg", ".webp", ".tif", ".tiff"}  # suffixes of what is held against its header
 OPTION_WORDS = {
     "-blendu": 1,
@@ -52,6 +54,7 @@ class Materials:
     def __init__(self, file: InputFile) -> None:
         self._file = file
         self._maps: dict[str, list[MapUse]] = {}
+        self._normal_maps: dict[int, bool] = {}
         self._libraries: set[str] = set()
         self._rows: dict[str, int] = {}
         self._image_rows: dict[str, int] = {}
@@ -88,13 +91,26 @@ class Materials:
         return tuple(Material(name, tuple(self._maps.get(name, ()))) for name in self._rows)
 
     def _use(self, role: str, words: str, library: InputFile, material: str) -> MapUse | None:
-        name, strength = _image_name(words)
+        name, strength, placed = _image_name(words)
         if not name:
             return None
+        if placed:
+            self.notes.append(f'material "{shown(material)}": how {shown(name)} is placed (-o, -s, -t) is passed over')
         if name not in self._image_rows:
             self._image_rows[name] = len(self.images)
             self.images.append(self._image(library.beside(_beside(name)), name, material))
-        return MapUse(role, self._image_rows[name], strength=strength)
+        row = self._image_rows[name]
+        if role == "height" and self._is_normal_map(row):
+            self.notes.append(
+                f'material "{shown(material)}": {shown(name)} holds normals, so it is no bump map of heights'
+            )
+            role = "normal"
+        return MapUse(role, row, strength=strength)
+
+    def _is_normal_map(self, row: int) -> bool:
+        if row not in self._normal_maps:
+            self._normal_maps[row] = holds_normals(self.images[row].content, self.images[row].name)
+        return self._normal_maps[row]
 
     def _image(self, beside: InputFile, name: str, material: str) -> Image:
         """The image as it is found; raises InputError for one that is no image, though its suffix says so."""
@@ -111,20 +127,21 @@ class Materials:
         return Image(beside.name, sniff(content), content)
 
 
-def _image_name(words: str) -> tuple[str, float]:
-    """The image that a map statement names after its options, and its bump multiplier."""
+def _image_name(words: str) -> tuple[str, float, bool]:
+    """The image that a map statement names after its options, its bump multiplier, and do options move or scale it?"""
     parts = words.split()
-    at, strength = 0, 1.0
+    at, strength, placed = 0, 1.0, False
     while at < len(parts) and parts[at].lower() in OPTION_WORDS:
         option = parts[at].lower()
         at += 1
+        placed |= option in PLACING
         for taken in range(OPTION_WORDS[option]):  # -o, -s and -t take one to three numbers
             if at >= len(parts) or (OPTION_WORDS[option] > 1 and not _is_number(parts[at])):
                 break
             if option == "-bm" and taken == 0 and _is_number(parts[at]):
                 strength = float(parts[at])
             at += 1
-    return (words.split(maxsplit=at)[at] if at < len(parts) else ""), strength
+    return (words.split(maxsplit=at)[at] if at < len(parts) else ""), strength, placed
 
 
 def _is_number(word: str) -> bool:

@@ -214,6 +214,34 @@ def test_names_are_read_as_utf_8_or_latin_1(read, encoding):
     assert asset.images[0].content.size
 
 
+@pytest.mark.parametrize(
+    ("texels", "role"),
+    [
+        (np.full((8, 8, 3), (128, 128, 255), np.uint8), "normal"),
+        (np.full((8, 8, 3), (40000, 30000, 62000), np.uint16), "normal"),
+        (np.full((8, 8, 3), 128, np.uint8), "height"),
+        (np.full((8, 8, 3), 201, np.uint8), "height"),  # a grey whose code is a unit vector
+        (np.full((8, 8, 1), 200, np.uint8), "height"),
+        (np.random.default_rng(0).integers(0, 256, (8, 8, 3), np.uint8), "height"),
+    ],
+)
+def test_a_bump_map_of_normals_is_a_normal_map(read, texels, role):
+    text = "mtllib pier.mtl\n" + SQUARE + "usemtl deck\nf 1 2 3\n"
+    image = write_png(texels).tobytes()
+    asset, _ = read(text, pier_dot_mtl="newmtl deck\nmap_Bump -bm 0.5 wood.png\n", wood_dot_png=image)
+
+    (use,) = asset.materials[0].maps
+    assert (use.role, use.strength) == (role, 0.5)
+    assert len(asset.notes) == (role == "normal")
+
+
+def test_options_that_place_an_image_are_noted(read):
+    text = "mtllib pier.mtl\n" + SQUARE + "usemtl deck\nf 1 2 3\n"
+    asset, _ = read(text, pier_dot_mtl="newmtl deck\nmap_Kd -s 2 2 1 wood.png\n", wood_dot_png=png())
+
+    assert asset.notes == ('material "deck": how wood.png is placed (-o, -s, -t) is passed over',)
+
+
 # Real files; the figures are those of the samples' manifest
 
 
@@ -248,3 +276,12 @@ def test_a_real_library_and_picture_with_spaces_in_their_names_are_read(samples)
     assert sorted(file.reads) == ["fuze uv.jpg", "fuze.obj", "fuze.obj.mtl"]
     assert all(content is not None for content in file.reads.values())
     assert [use.role for use in asset.materials[0].maps] == ["colour"]
+
+
+def test_real_maps_are_told_apart_by_their_texels(samples):
+    from tangentry.nodes.formats.obj_bump import holds_normals
+
+    told = {path.name: holds_normals(np.fromfile(path, np.uint8), path.name) for path in samples.glob("tex/*/*.png")}
+
+    assert {name for name, normals in told.items() if normals} == {name for name in told if "ormal" in name}
+    assert len(told) > 5
