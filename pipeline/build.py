@@ -58,7 +58,9 @@ class Site:
     def open(graph: Graph, store: str | os.PathLike[str] | None = None, read_only: bool = False) -> Site:
         """The graph's own store, `.tangentry` beside the graph file, unless another folder or a URL is named."""
         folder, url = store_place(graph.path, store)
-        return Site(graph, open_store(folder, url), Ledger(folder.absolute(), read_only), url)
+        opened = open_store(folder, url)
+        opened.read_only = read_only
+        return Site(graph, opened, Ledger(folder.absolute(), read_only), url)
 
     def close(self) -> None:
         """Write down what was learnt, and let go of both."""
@@ -260,7 +262,8 @@ class _Build:
             yield os.path.join(self.site.home, name)
 
     def _conclude(self, tidy: bool) -> Record:
-        self.record.assets = list(self.assets.values())
+        reached = [asset for asset in self.assets.values() if asset.steps or asset.errors or not self.record.stopped]
+        self.record.assets = reached
         self.record.restored.sort()
         if not self.record.stopped:
             left = self.outputs.left_over(None if self.only is None else self.assets)

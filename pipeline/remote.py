@@ -63,6 +63,8 @@ class RemoteStore(Store):
     def _set_aside(self, path: Path) -> None:
         """There, too: what is made again is sent again."""
         super()._set_aside(path)
+        if self.read_only:
+            return
         aside = f"{self._root}/aside"
         with contextlib.suppress(OSError):
             self._files.makedirs(aside, exist_ok=True)

@@ -76,6 +76,7 @@ class Store:
         self.folder = Path(folder)
         self.digest = ArrayDigests()
         self.written = 0  # arrays really written
+        self.read_only = False  # then damage is noticed, but nothing is set aside
         self.turns = Turns(self.folder)
         self.running = Running(self.folder)
         self._checked: set[str] = set()
@@ -226,6 +227,8 @@ class Store:
                 yield path
 
     def _set_aside(self, path: Path) -> None:
+        if self.read_only:
+            return
         with contextlib.suppress(OSError):
             aside = self.folder / "aside"
             aside.mkdir(parents=True, exist_ok=True)

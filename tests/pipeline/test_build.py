@@ -4,6 +4,9 @@ from __future__ import annotations
 
 from typing import Any
 
+from tangentry.pipeline.build import make_plan
+from tangentry.pipeline.graph import read_graph
+
 EVERY = sorted(["take", "loud", "judge", "put"] * 3 + ["join"])
 
 
@@ -171,3 +174,24 @@ def test_reasons_are_data(project):
         "after": 5,
         "text": "setting times changed 2 -> 5",
     }
+
+
+def test_stopping_at_the_first_failure_tells_only_of_what_was_reached(project):
+    project.write("props/b.txt", "broken\n")
+
+    record = project.build(stop_at_first=True)
+
+    assert states(record) == {"props/a.txt": "made", "props/b.txt": "failed"} and not record.sound
+    assert record.stopped == "stopped at the first failure: props/b.txt" and project.calls.count("join") == 0
+    project.write("props/b.txt", "hello b\n")
+    assert project.build(stop_at_first=True).sound and project.calls.count("take") == 2
+
+
+def test_planning_sets_nothing_aside(project):
+    project.build()
+    results = sorted((project.folder / ".tangentry/results").glob("*/*"))
+    results[0].write_text("spoilt")
+
+    make_plan(read_graph(project.graph))
+
+    assert results[0].exists() and not (project.folder / ".tangentry/aside").exists()
