@@ -46,8 +46,8 @@ def frame_findings(view: View, lean: float, explained: float) -> Iterator[Findin
 def _soundness(view: View, lean: float) -> Iterator[Finding]:
     frames, part = view.part.frames, view.part
     assert frames is not None
-    tangent = np.nan_to_num(frames.tangents[frames.index]).astype(np.float64)
-    length = np.sqrt(dot(tangent, tangent))
+    tangents = np.nan_to_num(frames.tangents).astype(np.float64)
+    length = np.sqrt(dot(tangents, tangents))[frames.index]
     zero = length < 1e-6
     if zero.any():
         yield view.finding(
@@ -72,8 +72,12 @@ def _soundness(view: View, lean: float) -> Iterator[Finding]:
         )
     if part.normals is None:
         return
-    off = np.abs(90 - angle_between(unit(tangent), unit(part.normals.values[part.normals.index].astype(np.float64))))
-    leaning = ~zero & (off > lean) & (frames.bitangents is None)
+    if frames.bitangents is not None:
+        return  # skew is kept on purpose
+    normals = unit(part.normals.values.astype(np.float64)).astype(np.float32)
+    tangent = unit(tangents).astype(np.float32)[frames.index]
+    off = np.abs(90 - angle_between(tangent, normals[part.normals.index]))
+    leaning = ~zero & (off > lean)
     if leaning.any():
         yield view.finding(
             "tangent-leaning",

@@ -69,9 +69,9 @@ def _normals(view: View, limit: float) -> Iterator[Finding]:
     if part.normals is None:
         return
     corner = view.triangles.ravel()
-    normal = part.normals.values[part.normals.index[corner]]
-    length = np.sqrt(dot(normal, normal))
-    unfit = np.abs(length - 1) > 0.01
+    row = part.normals.index[corner]
+    length = np.sqrt(dot(part.normals.values, part.normals.values))
+    unfit = (np.abs(length - 1) > 0.01)[row]
     if unfit.any():
         yield view.finding(
             "normal-non-unit",
@@ -83,13 +83,12 @@ def _normals(view: View, limit: float) -> Iterator[Finding]:
             None,
             0.01,
         )
-    face_normal = np.repeat(view.triangle_normal, 3, axis=0)
-    sound = ~unfit & (np.repeat(view.area, 3) > 0)
-    angle = np.zeros(len(corner))
-    angle[sound] = angle_between(normal[sound], face_normal[sound])
-    far = angle > limit
+    face_normal = np.repeat(view.triangle_normal.astype(np.float32), 3, axis=0)
+    area = np.repeat(view.area, 3)
+    angle = angle_between(part.normals.values[row], face_normal)
+    far = ~unfit & (area > 0) & (angle > limit)
     if far.any():
-        share = float(np.repeat(view.area, 3)[far].sum() / max(np.repeat(view.area, 3).sum(), 1e-300))
+        share = float(area[far].sum() / max(area.sum(), 1e-300))
         where, worst = _worst(corner[far], angle[far])
         inverted = share > 0.5
         yield view.finding(

@@ -122,9 +122,7 @@ def _green(view: View, defined: Array, opposite: Array) -> Iterator[Finding]:
 def mixed_findings(asset: Asset, found: list[Finding]) -> Iterator[Finding]:
     """Parts whose sides follow the rule beside parts whose sides are its opposite."""
     flipped = sum(one.id == "side-flipped" for one in found)  # one for each part; names may be common to several
-    stored = sum(
-        part.frames is not None and part.frames.method == "stored" and bool(part.uvs) for part in asset.parts
-    )
+    stored = sum(part.frames is not None and part.frames.method == "stored" and bool(part.uvs) for part in asset.parts)
     if 0 < flipped < stored:
         yield Finding(
             "convention-mixed",

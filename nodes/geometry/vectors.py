@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import numpy as np
+from numba import njit
 from tangentry.pipeline.flow import Array
 
 
@@ -43,7 +44,19 @@ def axis_across(normals: Array) -> Array:
 
 def angle_between(a: Array, b: Array) -> Array:
     """(n,) degrees between the rows of two (n, 3) arrays of unit vectors, exact near 0 and 180 (Kahan's formula)."""
-    a, b = a.astype(np.float64), b.astype(np.float64)
-    difference, total = a - b, a + b
-    angle: Array = np.degrees(2 * np.arctan2(np.sqrt(dot(difference, difference)), np.sqrt(dot(total, total))))
+    kind = np.float32 if a.dtype == b.dtype == np.float32 else np.float64
+    one, other = (np.ascontiguousarray(rows, kind).view() for rows in np.broadcast_arrays(a, b))
+    one.flags.writeable = other.flags.writeable = False  # so that one compiled kernel serves all
+    angle = np.empty(len(one))
+    _angles(one, other, angle)
     return angle
+
+
+@njit(cache=True, nogil=True)
+def _angles(one: Array, other: Array, angle: Array) -> None:
+    for row in range(len(one)):
+        apart = together = 0.0
+        for k in range(3):
+            apart += (np.float64(one[row, k]) - np.float64(other[row, k])) ** 2
+            together += (np.float64(one[row, k]) + np.float64(other[row, k])) ** 2
+        angle[row] = np.degrees(2 * np.arctan2(np.sqrt(apart), np.sqrt(together)))
