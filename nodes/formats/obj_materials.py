@@ -5,13 +5,9 @@ from __future__ import annotations
 import math
 import ntpath
 
-import numpy as np
-from tangentry.nodes.formats.gltf_reading import sniff
-from tangentry.nodes.formats.image_headers import read_header
 from tangentry.nodes.formats.obj_bump import holds_normals
 from tangentry.nodes.formats.scan import as_words, shown
 from tangentry.nodes.model import Image, MapUse, Material
-from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import InputFile
 
 ROLES = {
@@ -30,7 +26,6 @@ ROLES = {
     "map_kn": "normal",
 }  # norm, map_kn, map_pr and map_pm: common practice, no source
 PLACING = ("-o", "-s", "-t")
-STATED = {".png", ".jpg", ".jpeg", ".webp", ".tif", ".tiff"}  # suffixes of what is held against its header
 OPTION_WORDS = {
     "-blendu": 1,
     "-blendv": 1,
@@ -98,7 +93,8 @@ class Materials:
             self.notes.append(f'material "{shown(material)}": how {shown(name)} is placed (-o, -s, -t) is passed over')
         if name not in self._image_rows:
             self._image_rows[name] = len(self.images)
-            self.images.append(self._image(library.beside(_beside(name)), name, material))
+            beside, place = library.beside(_beside(name)), f'material "{shown(material)}", '
+            self.images.append(image_beside(self._file, beside, name, place, self.notes))
         row = self._image_rows[name]
         if role == "height" and self._is_normal_map(row):
             self.notes.append(
@@ -111,20 +107,6 @@ class Materials:
         if row not in self._normal_maps:
             self._normal_maps[row] = holds_normals(self.images[row].content, self.images[row].name)
         return self._normal_maps[row]
-
-    def _image(self, beside: InputFile, name: str, material: str) -> Image:
-        """The image as it is found; raises InputError for one that is no image, though its suffix says so."""
-        if not beside.exists:
-            self.notes.append(f"image {shown(name)} is not there")
-            return Image(beside.name, "", np.zeros(0, np.uint8))
-        content = beside.bytes()
-        if beside.suffix in STATED:
-            try:
-                read_header(content, beside.path)
-            except InputError as error:
-                place = f'material "{shown(material)}", image {shown(name)}'
-                raise InputError(self._file, place, error.found, error.advice) from None
-        return Image(beside.name, sniff(content), content)
 
 
 def _image_name(words: str) -> tuple[str, float, bool]:

@@ -7,7 +7,6 @@ from pathlib import PurePosixPath
 
 import numpy as np
 from tangentry.nodes.formats.corner_streams import grouped, sound_normals, sound_uvs, used_rows, with_faces
-from tangentry.nodes.formats.gltf_reading import sniff
 from tangentry.nodes.formats.ply_scan import AGAIN, NOTHING, Columns, read_elements, read_header
 from tangentry.nodes.formats.scan import shown
 from tangentry.nodes.geometry.corners import distinct_values
@@ -103,11 +102,7 @@ def _unstripped(values: Array, lengths: Array) -> Array:
 
 def _image(file: InputFile, texture: str, notes: list[str]) -> Image:
     beside = file.beside(texture.replace("\\", "/").split("/")[-1])
-    if not beside.exists:
-        notes.append(f"image {shown(texture)} is not there")
-        return Image(beside.name, "", np.zeros(0, np.uint8))
-    content = beside.bytes()
-    return Image(beside.name, sniff(content), content)
+    return image_beside(file, beside, texture, "", notes)
 
 
 def _owner(file: InputFile, face: Columns, sizes: Array, images: int) -> Array:

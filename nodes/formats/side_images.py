@@ -1,4 +1,4 @@
-"""Images that go beside a mesh file, under names that no other file there has."""
+"""Images beside a mesh file: those it names, and those that go along with it, under names no other file there has."""
 
 from __future__ import annotations
 
@@ -7,11 +7,35 @@ from dataclasses import replace
 from pathlib import PurePosixPath
 
 import numpy as np
+from tangentry.nodes.formats.gltf_reading import sniff
+from tangentry.nodes.formats.image_headers import read_header
+from tangentry.nodes.formats.scan import shown
 from tangentry.nodes.model import Asset, Image, Map, MapUse, Material, Sheet
 from tangentry.pipeline.errors import InputError
-from tangentry.pipeline.flow import OutFile
+from tangentry.pipeline.flow import InputFile, OutFile
 
+STATED = {".png", ".jpg", ".jpeg", ".webp", ".tif", ".tiff"}  # suffixes of what is held against its header
 SUFFIXES = {"image/png": ".png", "image/jpeg": ".jpg", "image/webp": ".webp", "image/ktx2": ".ktx2"}
+
+
+def image_beside(file: InputFile, beside: InputFile, written: str, place: str, notes: list[str]) -> Image:
+    """The image that a mesh file names, byte for byte; one that is not there is empty, and noted.
+
+    written   the name as it stands in the mesh file
+    place     where it stands, for messages
+
+    Raises InputError for one that can't be read, or whose suffix says PNG, JPEG, WebP or TIFF and whose header does not.
+    """
+    if not beside.exists:
+        notes.append(f"image {shown(written)} is not there")
+        return Image(beside.name, "", np.zeros(0, np.uint8))
+    try:
+        content = beside.bytes()
+        if beside.suffix in STATED:
+            read_header(content, beside.path)
+    except InputError as error:
+        raise InputError(file, f"{place}image {shown(written)}", error.found, error.advice) from None
+    return Image(beside.name, sniff(content), content)
 
 
 def images_beside(images: tuple[Image, ...], *taken: str) -> tuple[list[str], list[OutFile]]:
@@ -39,7 +63,7 @@ def _name(image: Image, number: int, taken: set[str]) -> str:
 def with_maps(asset: Asset, maps: Map | None, stem: str) -> Asset:
     """The asset, its materials using these normal maps as PNG images; a sheet's material "" serves all.
 
-    Raises InputError for maps that hold no tangent-space normals.
+    Raises InputError for maps that hold no tangent-space normals, or whose green is undecided.
     """
     if maps is None:
         return asset
@@ -64,10 +88,7 @@ def _image(sheet: Sheet, asset: str, name: str) -> Image:
     from tangentry.nodes.formats.images import write_png
     from tangentry.nodes.maps.encodings import as_gltf_texels
 
-    if sheet.holds != "normal" or sheet.space not in ("tangent", ""):
-        found = f"it holds {sheet.space} {sheet.holds}, not tangent-space normals"
-        raise InputError(asset, f"map {sheet.name or name}", found, "turn it into them first: `relief`, `reencode`")
-    return Image(f"{name}.png", "image/png", np.asarray(write_png(as_gltf_texels(sheet))))
+    return Image(f"{name}.png", "image/png", np.asarray(write_png(as_gltf_texels(sheet, asset, name))))
 
 
 def _using(material: Material, made: dict[str, int]) -> Material:

@@ -153,6 +153,14 @@ def test_any_damage_ends_in_an_asset_or_a_clear_error(tmp_path_factory, data):
         assert all(part.points.index.max() < len(part.points.values) for part in asset.parts)
 
 
+def test_an_image_that_is_none_is_told(tmp_path):
+    (tmp_path / "wood.png").write_bytes(b"no picture")
+    content = ply("ascii").replace(b"element vertex", b"comment TextureFile wood.png\nelement vertex")
+
+    with pytest.raises(InputError, match=r"^buoy\.ply: image wood\.png: not an image that can be read"):
+        read(tmp_path, content)
+
+
 # STL
 
 
