@@ -7,6 +7,7 @@ import ntpath
 
 from tangentry.nodes.formats.obj_bump import holds_normals
 from tangentry.nodes.formats.scan import as_words, shown
+from tangentry.nodes.formats.side_images import image_beside
 from tangentry.nodes.model import Image, MapUse, Material
 from tangentry.pipeline.flow import InputFile
 

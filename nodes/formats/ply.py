@@ -9,6 +9,7 @@ import numpy as np
 from tangentry.nodes.formats.corner_streams import grouped, sound_normals, sound_uvs, used_rows, with_faces
 from tangentry.nodes.formats.ply_scan import AGAIN, NOTHING, Columns, read_elements, read_header
 from tangentry.nodes.formats.scan import shown
+from tangentry.nodes.formats.side_images import image_beside
 from tangentry.nodes.geometry.corners import distinct_values
 from tangentry.nodes.model import Asset, Frames, Image, MapUse, Material, Part, Stream
 from tangentry.pipeline.errors import InputError

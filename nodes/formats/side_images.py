@@ -24,7 +24,7 @@ def image_beside(file: InputFile, beside: InputFile, written: str, place: str, n
     written   the name as it stands in the mesh file
     place     where it stands, for messages
 
-    Raises InputError for one that can't be read, or whose suffix says PNG, JPEG, WebP or TIFF and whose header does not.
+    Raises InputError for one that can't be read, or whose suffix says PNG, JPEG, WebP or TIFF but not its header.
     """
     if not beside.exists:
         notes.append(f"image {shown(written)} is not there")
@@ -69,11 +69,10 @@ def with_maps(asset: Asset, maps: Map | None, stem: str) -> Asset:
         return asset
     first, made = len(asset.images), {}  # type: int, dict[str, int]
     images = list(asset.images)
-    for number, sheet in enumerate(maps.sheets):
+    sheets = [sheet for sheet in maps.sheets if sheet.level == 0]
+    for number, sheet in enumerate(sheets):
         made[sheet.material] = first + number
-        images.append(
-            _image(sheet, asset.name, f"{stem}_normal_{number}" if len(maps.sheets) > 1 else f"{stem}_normal")
-        )
+        images.append(_image(sheet, asset.name, f"{stem}_normal_{number}" if len(sheets) > 1 else f"{stem}_normal"))
     bare = any(part.material < 0 for part in asset.parts) and "" in made
     parts = tuple(
         replace(part, material=len(asset.materials)) if bare and part.material < 0 else part for part in asset.parts
