@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import shutil
 import subprocess
 import sys
 from pathlib import Path
@@ -142,10 +141,9 @@ def test_the_detailed_twin_is_no_member_of_the_library():
 
 
 def made_in(folder: Path) -> Path:
-    """A folder in which the script was run."""
+    """A folder that the script filled."""
     folder.mkdir()
-    shutil.copy(TERMINAL / "make_props.py", folder)
-    subprocess.run([sys.executable, folder / "make_props.py"], check=True)
+    subprocess.run([sys.executable, TERMINAL / "make_props.py", folder], check=True)
     return folder
 
 

@@ -1,0 +1,1 @@
+"""What makes the props of the ferry terminal."""
