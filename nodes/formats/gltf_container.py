@@ -17,6 +17,8 @@ from tangentry.pipeline.flow import Array, InputFile
 
 MAGIC, JSON_CHUNK, BIN_CHUNK = 0x46546C67, 0x4E4F534A, 0x004E4942
 DATA_URI = re.compile(r"data:([^;,]*)((?:;[^;,]*)*?)(;base64)?,", re.I)
+LONE_SURROGATE = re.compile(rb"\\u[dD][89a-fA-F]")  # or one of a pair
+DEEPEST = 256  # levels of JSON: what is walked or written needs as many calls
 SCHEME = re.compile(r"[A-Za-z][A-Za-z0-9+.-]+:")
 EXPORT_AGAIN = "export the file again"
 
@@ -78,7 +80,29 @@ def _json(file: InputFile, text: Array) -> dict[str, Any]:
         raise InputError(file, "", "JSON nested too deeply", EXPORT_AGAIN) from None
     if not isinstance(document, dict):
         raise InputError(file, "", "JSON, but no object: this is no glTF file", EXPORT_AGAIN)
+    _check_depth(file, document)
+    if LONE_SURROGATE.search(text.tobytes()):
+        _check_characters(file, document)
     return document
+
+
+def _check_depth(file: InputFile, document: dict[str, Any]) -> None:
+    level: list[Any] = [document]
+    for _ in range(DEEPEST):
+        members = (one.values() if isinstance(one, dict) else one for one in level)
+        level = [member for some in members for member in some if isinstance(member, (dict, list))]
+    if level:
+        raise InputError(file, "", f"JSON nested too deeply, more than {DEEPEST} levels", EXPORT_AGAIN)
+
+
+def _check_characters(file: InputFile, document: dict[str, Any]) -> None:
+    try:
+        json.dumps(document, ensure_ascii=False).encode()
+    except UnicodeEncodeError as error:
+        code = ord(error.object[error.start])
+        raise InputError(
+            file, "", f"the escape \\u{code:04x} stands alone in a text: half a character", "correct the text"
+        ) from None
 
 
 def _finite(text: str) -> float:
@@ -115,7 +139,10 @@ def resolve(file: InputFile, place: str, uri: str) -> tuple[Array, str]:
         except (binascii.Error, ValueError):
             raise InputError(file, place, "its data uri is not base64", EXPORT_AGAIN) from None
         return np.frombuffer(content, np.uint8), data[1]
-    return side_file(file, place, uri).bytes(), ""
+    beside = side_file(file, place, uri)
+    if not beside.exists:
+        raise InputError(file, place, f"there is no file {uri[:80]!r}, which it names", "put it beside this one")
+    return beside.bytes(), ""
 
 
 def side_file(file: InputFile, place: str, uri: str) -> InputFile:

@@ -13,7 +13,6 @@ from tangentry.nodes.formats.gltf_making import new_document
 from tangentry.nodes.formats.images import write_png
 from tangentry.nodes.maps.encodings import as_gltf_texels
 from tangentry.nodes.model import Asset, Map
-from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array, OutFile
 
 SUFFIXES = {
@@ -60,7 +59,6 @@ def _place_images(builder: Builder, taken: set[str], binary: bool) -> list[OutFi
         name = _file_name(image.name, SUFFIXES.get(image.mime, ""), number, taken)
         entry.pop("bufferView", None)
         entry["uri"] = quote(name)
-        entry.pop("mimeType", None)
         files.append(OutFile(name, image.content))
     return files
 
@@ -80,23 +78,17 @@ def _place_maps(builder: Builder, maps: Map, stem: str, binary: bool, asset: Ass
     """Each normal map as the normalTexture of its material; one without its own sheet takes that which serves all."""
     files: list[OutFile] = []
     textures: dict[int, int] = {}
-    by_name = {sheet.material: number for number, sheet in enumerate(maps.sheets) if sheet.level == 0}
-    for number, sheet in enumerate(maps.sheets):
-        if sheet.holds != "normal" or sheet.space not in ("tangent", ""):
-            raise InputError(
-                asset.name,
-                f"map {sheet.name or number}",
-                f"it holds {sheet.space} {sheet.holds}, not tangent-space normals",
-                "turn it into them first: `relief`, `reencode`",
-            )
+    sheets = [sheet for sheet in maps.sheets if sheet.level == 0]
+    names = [f"{stem}_normal_{number}" if len(sheets) > 1 else f"{stem}_normal" for number in range(len(sheets))]
+    texels = [as_gltf_texels(sheet, asset.name, name) for sheet, name in zip(sheets, names, strict=True)]
+    by_name = {sheet.material: number for number, sheet in enumerate(sheets)}
     for material in _materials(builder, asset):
         chosen = by_name.get(str(material.get("name", "")), by_name.get(""))
         if chosen is None:
             continue
         if chosen not in textures:
-            content = write_png(as_gltf_texels(maps.sheets[chosen]))
-            name = f"{stem}_normal_{chosen}" if len(maps.sheets) > 1 else f"{stem}_normal"
-            textures[chosen] = _texture(builder, content, name, binary, files, taken)
+            content = write_png(texels[chosen])
+            textures[chosen] = _texture(builder, content, names[chosen], binary, files, taken)
         info = material.get("normalTexture", {})
         material["normalTexture"] = {
             "index": textures[chosen],

@@ -17,9 +17,11 @@ import numpy as np
 from numba import njit
 from tangentry.nodes.geometry.octahedron import octahedral_codes, octahedral_directions
 from tangentry.nodes.model import Sheet
+from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array
 
 ENCODINGS = ("unorm", "snorm", "xy", "octahedral", "float")
+BAND = 256  # rows worked on at a time, an even number: every other row is diffused backward
 DOWN = np.array([1, -1, 1], np.float32)
 AHEAD = np.array([0, 0, 1], np.float32)
 
@@ -29,10 +31,11 @@ def most(bits: int) -> int:
     return (1 << bits) - 1
 
 
-def encode_normals(normals: Array, encoding: str, bits: int, green: str, diffuse: bool = False) -> Array:
+def encode_normals(normals: Array, encoding: str, bits: int, green: str, lost: Array | None = None) -> Array:
     """Codes, (height, width, 2 or 3) uint8 or uint16, float32 for "float", of unit normals (height, width, 3) float32.
 
-    diffuse   hand what rounding loses on to the texels that follow (Floyd & Steinberg 1976); not for octahedral codes
+    lost   (width, 2 or 3) float64: what rounding lost above these rows and hands on to them, replaced by what is lost
+           below them (Floyd & Steinberg 1976); None: plain rounding. Not for octahedral codes
     """
     if green == "down":
         normals = normals * DOWN
@@ -42,34 +45,41 @@ def encode_normals(normals: Array, encoding: str, bits: int, green: str, diffuse
     if encoding == "octahedral":
         codes = octahedral_codes(normals.reshape(-1, 3), top).reshape(*normals.shape[:2], 2)
     else:
-        components = normals[..., : 2 if encoding == "xy" else 3].astype(np.float64)
+        components = normals[..., : channels_of(encoding)].astype(np.float64)
         codes = components * (top // 2) + top // 2 + 1 if encoding == "snorm" else (components + 1) / 2 * top
-        if diffuse:
-            _diffuse(codes, float(top))
+        if lost is not None:
+            _diffuse(codes, float(top), lost)
     return np.clip(np.rint(codes), 0, top).astype(np.uint8 if bits == 8 else np.uint16)
 
 
+def channels_of(encoding: str) -> int:
+    """How many channels an encoding takes."""
+    return 2 if encoding in ("xy", "octahedral") else 3
+
+
 @njit(cache=True, nogil=True)
-def _diffuse(codes: Array, top: float) -> None:
-    """Round (height, width, channels) in place, row by row, every other one backward."""
+def _diffuse(codes: Array, top: float, lost: Array) -> None:
+    """Round (height, width, channels) in place, every other row backward."""
     height, width, channels = codes.shape
+    below = np.zeros_like(lost)
     for r in range(height):
         step = 1 if r % 2 == 0 else -1
-        for k in range(width):
-            c = k if step == 1 else width - 1 - k
-            for channel in range(channels):
-                wanted = codes[r, c, channel]
+        for channel in range(channels):
+            ahead = 0.0
+            for k in range(width):
+                c = k if step == 1 else width - 1 - k
+                wanted = codes[r, c, channel] + lost[c, channel] + ahead
                 given = min(max(np.rint(wanted), 0.0), top)
                 codes[r, c, channel] = given
-                lost = wanted - given
+                error = wanted - given
+                ahead = error * 7 / 16
+                below[c, channel] += error * 5 / 16
+                if 0 <= c - step < width:
+                    below[c - step, channel] += error * 3 / 16
                 if 0 <= c + step < width:
-                    codes[r, c + step, channel] += lost * 7 / 16
-                    if r + 1 < height:
-                        codes[r + 1, c + step, channel] += lost / 16
-                if r + 1 < height:
-                    codes[r + 1, c, channel] += lost * 5 / 16
-                    if 0 <= c - step < width:
-                        codes[r + 1, c - step, channel] += lost * 3 / 16
+                    below[c + step, channel] += error / 16
+        lost[:] = below
+        below[:] = 0
 
 
 def decode_texels(texels: Array, encoding: str, green: str) -> Array:
@@ -100,27 +110,50 @@ def _directions(texels: Array, encoding: str, top: int) -> Array:
 
 def decoded(sheet: Sheet) -> Array:
     """(height, width, 3) float32: the unit normals that a sheet holds, y up."""
-    return decode_texels(sheet.texels, sheet.encoding, sheet.green)
+    out = np.empty((*sheet.texels.shape[:2], 3), np.float32)
+    for rows in _bands(sheet):
+        out[rows] = decode_texels(sheet.texels[rows], sheet.encoding, sheet.green)
+    return out
 
 
 def encoded(sheet: Sheet, encoding: str, bits: int, green: str, diffuse: bool = False) -> Sheet:
-    """A sheet's normals in another encoding. Codes that only change the side of green are flipped exactly."""
-    wanted = np.uint8 if bits == 8 else np.uint16
-    if (
-        sheet.encoding == encoding == "unorm"
-        and sheet.texels.dtype == wanted
-        and "undecided" not in (sheet.green, green)
-    ):
+    """A sheet's normals in another encoding. Codes that only change the side of green are flipped exactly.
+
+    Besides the two sheets, memory is taken for a band of rows only.
+    """
+    kind = np.float32 if encoding == "float" else np.uint8 if bits == 8 else np.uint16
+    if sheet.encoding == encoding == "unorm" and sheet.texels.dtype == kind and "undecided" not in (sheet.green, green):
         texels = sheet.texels
         if sheet.green != green:
             texels = texels.copy()
             texels[..., 1] = most(bits) - texels[..., 1]
         return replace(sheet, texels=texels, green=green)
-    texels = encode_normals(decoded(sheet), encoding, bits, green, diffuse)
-    return replace(sheet, texels=texels, encoding=encoding, green=green)
+    height, width = sheet.texels.shape[:2]
+    out = np.empty((height, width, channels_of(encoding)), kind)
+    lost = np.zeros((width, channels_of(encoding))) if diffuse else None
+    for rows in _bands(sheet):
+        normals = decode_texels(sheet.texels[rows], sheet.encoding, sheet.green)
+        out[rows] = encode_normals(normals, encoding, bits, green, lost)
+    return replace(sheet, texels=out, encoding=encoding, green=green)
 
 
-def as_gltf_texels(sheet: Sheet) -> Array:
-    """Codes as glTF wants them: three unorm channels, green up (specification, 3.9.3)."""
+def _bands(sheet: Sheet) -> list[slice]:
+    return [slice(first, first + BAND) for first in range(0, len(sheet.texels), BAND)]
+
+
+def as_gltf_texels(sheet: Sheet, file: str, name: str) -> Array:
+    """Codes as glTF wants them: three unorm channels, green up (specification, 3.9.3).
+
+    file  the asset that takes the map, and `name` the map's, for messages
+
+    Raises InputError where the sheet holds other than tangent-space normals, or nobody knows which way green points.
+    """
+    place = f"map {sheet.name or name}"
+    if sheet.holds != "normal" or sheet.space not in ("tangent", ""):
+        found = f"it holds {sheet.space} {sheet.holds}, not tangent-space normals"
+        raise InputError(file, place, found, "turn it into them first: `relief`, `reencode`")
+    if sheet.green not in ("up", "down"):
+        found = f"which way its green points is {sheet.green or 'not said'}"
+        raise InputError(file, place, found, "say it where the map comes in: `texture` with green: up or down")
     bits = 16 if sheet.texels.dtype == np.uint16 else 8
     return encoded(sheet, "unorm", bits, "up").texels[..., :3]
