@@ -6,10 +6,12 @@ import struct
 from typing import NamedTuple
 
 from tangentry.nodes.formats.exr import MAGIC, exr_size
+from tangentry.nodes.formats.tiff_directory import read_directory
 from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array
 
 READ = "PNG, JPEG, WebP, TIFF and EXR are read"
+TIFF = (b"II*\0", b"MM\0*", b"II+\0", b"MM\0+")  # "+" is BigTIFF
 GAMMA_ONE = struct.pack(">I", 100000)
 HEADER = 1 << 20  # bytes in which an EXR header must end
 BAD = "the file is damaged or cut off: export it again"
@@ -33,8 +35,8 @@ def read_header(content: Array, name: str) -> ImageHeader:
             return _checked(_jpeg(content.tobytes(), name), name)
         if head[:4] == b"RIFF" and head[8:12] == b"WEBP":
             return _checked(_webp(head), name)
-        if head[:4] in (b"II*\0", b"MM\0*"):
-            return _checked(_tiff(content.tobytes(), "<" if head[:2] == b"II" else ">"), name)
+        if head[:4] in TIFF:
+            return _checked(ImageHeader("TIFF", *read_directory(content.tobytes())[:2]), name)
         if head.startswith(MAGIC):
             return _checked(ImageHeader("EXR", *exr_size(content[:HEADER].tobytes(), name)), name)
     except (struct.error, IndexError, ValueError):
@@ -78,34 +80,21 @@ def _webp(head: bytes) -> ImageHeader:
     return ImageHeader("WebP", width & 0x3FFF, height & 0x3FFF)
 
 
-def _tiff(data: bytes, order: str) -> ImageHeader:
-    """From the first directory (TIFF 6.0, section 2)."""
-    at = struct.unpack(order + "I", data[4:8])[0]
-    size = {}
-    for entry in range(struct.unpack(order + "H", data[at : at + 2])[0]):
-        place = at + 2 + 12 * entry
-        tag, kind = struct.unpack(order + "HH", data[place : place + 4])
-        if tag in (256, 257):
-            size[tag] = struct.unpack(
-                order + ("H" if kind == 3 else "I"), data[place + 8 : place + (10 if kind == 3 else 12)]
-            )[0]
-    return ImageHeader("TIFF", int(size.get(256, 0)), int(size.get(257, 0)))
-
-
 def is_image(content: Array) -> bool:
     """Does a file begin like an image that can be read?"""
     head = content[:12].tobytes()
-    return head.startswith((b"\x89PNG", b"\xff\xd8", b"II*\0", b"MM\0*", MAGIC)) or (
-        head[:4] == b"RIFF" and head[8:12] == b"WEBP"
-    )
+    return head.startswith((b"\x89PNG", b"\xff\xd8", *TIFF, MAGIC)) or (head[:4] == b"RIFF" and head[8:12] == b"WEBP")
 
 
 def tag_of(content: Array) -> str:
-    """What an image file says of its texels: "lossy" for JPEG and WebP's lossy form, "sRGB" for a colour profile or a
-    gamma chunk in a PNG file (PNG specification, 11.3.2); else ""."""
+    """What an image file says of its texels: "lossy" for JPEG, in a TIFF file too, and WebP's lossy form; "sRGB" for a
+    colour profile in a TIFF or PNG file, or a gamma chunk (PNG specification, 11.3.2); else ""."""
     head = content[:64].tobytes()
     if head.startswith(b"\xff\xd8") or (head[8:12] == b"WEBP" and b"VP8 " in head[12:]):
         return "lossy"
+    if head.startswith(TIFF):
+        directory = read_directory(content.tobytes())
+        return "lossy" if directory.lossy else "sRGB" if directory.profile else ""
     at = 8
     while head.startswith(b"\x89PNG") and at + 8 <= len(content):
         size, kind = struct.unpack(">I4s", content[at : at + 8].tobytes())

@@ -10,6 +10,7 @@ from typing import Any
 
 import numpy as np
 from tangentry.nodes.formats.image_headers import ImageHeader, read_header
+from tangentry.nodes.formats.tiff_directory import plain_tiff, read_directory, refuse_unplain
 from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array
 
@@ -23,7 +24,7 @@ def read_image(content: Array, name: str, pixels: int = MOST_PIXELS) -> Array:
     name     of the file, for messages
     pixels   the most that is decoded
 
-    Palettes are looked up and 1-, 2- and 4-bit greys spread over 8 bits. Raises InputError naming the file and the
+    Palettes are looked up and greys of fewer bits spread over 8 or 16. Raises InputError naming the file and the
     reason where it is no image, is cut off, is larger than the limit, or of a kind that holds no plain channels (CMYK).
     """
     if not len(content):
@@ -64,6 +65,9 @@ def _decode(content: Array, header: ImageHeader, name: str) -> Array:
     }
     decode, trouble = decoders[header.format]
     data = content.tobytes()
+    directory = read_directory(data) if header.format == "TIFF" else None
+    if directory is not None:
+        refuse_unplain(directory, name)
     # The decoder makes up what is missing; entropy-coded data holds no marker but the end (ITU-T T.81, B.1.1.2).
     if header.format == "JPEG" and data.rfind(b"\xff\xd9") < data.rfind(b"\xff\xda"):
         raise InputError(name, "", "JPEG data without an end", "the file is damaged or cut off: export it again")
@@ -76,7 +80,7 @@ def _decode(content: Array, header: ImageHeader, name: str) -> Array:
             f"{header.format} data can't be decoded: {error}",
             "the file is damaged or cut off: export it again",
         ) from None
-    return texels
+    return texels if directory is None else plain_tiff(texels, directory, name)
 
 
 def _plain(texels: Array, name: str) -> Array:

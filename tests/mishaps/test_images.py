@@ -10,6 +10,7 @@ import imagecodecs
 import numpy as np
 import pytest
 from PIL import Image
+from tangentry.nodes.formats.image_headers import tag_of
 from tangentry.nodes.formats.images import read_image, write_png, write_tiff
 from tangentry.pipeline.errors import InputError
 
@@ -31,6 +32,18 @@ def png(width: int, height: int, bits: int, colour: int, rows: bytes) -> np.ndar
     head = chunk(b"IHDR", struct.pack(">IIBBBBB", width, height, bits, colour, 0, 0, 0))
     body = b"\x89PNG\r\n\x1a\n" + head + chunk(b"IDAT", zlib.compress(rows)) + chunk(b"IEND", b"")
     return np.frombuffer(body, np.uint8)
+
+
+def tiff(data: bytes, bits: int = 8, kind: int = 1, colours: tuple[int, ...] = (), **fields: int) -> np.ndarray:
+    """A TIFF of one row of four texels (TIFF 6.0, section 2), with fields of other values, or given twice."""
+    at = 8 + 2 + 12 * (9 + len(colours[:1]) + len(fields)) + 4
+    entries = [(int(tag[1:]), 4, 1, value) for tag, value in fields.items()]
+    entries += [(256, 4, 1, 4), (257, 4, 1, 1), (258, 3, 1, bits), (259, 3, 1, 1), (262, 3, 1, kind)]
+    entries += [(273, 4, 1, at), (277, 3, 1, 1), (278, 4, 1, 1), (279, 4, 1, len(data))]
+    entries += [(320, 3, len(colours), at + len(data))] if colours else []
+    table = b"".join(struct.pack("<HHII", *entry) for entry in sorted(entries, key=lambda entry: entry[0]))
+    head = b"II*\0" + struct.pack("<IH", 8, len(entries)) + table + bytes(4)
+    return np.frombuffer(head + data + struct.pack(f"<{len(colours)}H", *colours), np.uint8)
 
 
 @pytest.mark.parametrize("shape", [(1, 1, 3), (1, 31, 1), (7, 1, 4), (33, 17, 3)])
@@ -69,6 +82,48 @@ def test_few_bits_are_spread_over_eight(bits, row, expected):
     assert read_image(png(4, 1, bits, 0, row), "a.png")[0, :, 0].tolist() == expected
 
 
+@pytest.mark.parametrize(
+    ("bits", "data", "expected"),
+    [
+        (1, b"\xb0", [255, 0, 255, 255]),
+        (2, b"\xe4", [255, 170, 85, 0]),
+        (4, b"\xf0\x8c", [255, 0, 136, 204]),
+        (8, b"\xff\0\x01\x80", [255, 0, 1, 128]),
+        (16, b"\xff\xff\0\0\x01\0\0\x80", [65535, 0, 1, 32768]),
+    ],
+)
+@pytest.mark.parametrize("kind", [0, 1])
+def test_greys_of_tiff_are_spread_and_black_is_zero(bits, data, expected, kind):
+    """TIFF 6.0, PhotometricInterpretation: 0 white is zero; 1 black is zero."""
+    found = read_image(tiff(data, bits, kind), "a.tif")
+
+    most = 255 if bits <= 8 else 65535
+    assert found[0, :, 0].tolist() == (expected if kind else [most - one for one in expected])
+
+
+@pytest.mark.parametrize(("bits", "data"), [(1, b"\x50"), (2, b"\x11"), (4, b"\x01\x01"), (8, b"\0\1\0\1")])
+def test_palettes_of_tiff_are_looked_up(bits, data):
+    size = 1 << bits
+    colours = tuple(256 * (10 * channel + k % 2) for channel in (1, 2, 3) for k in range(size))
+
+    found = read_image(tiff(data, bits, 3, colours), "a.tif")
+
+    assert found.tolist() == [[[10, 20, 30], [11, 21, 31]] * 2]
+
+
+@pytest.mark.parametrize("how", [{"big_tiff": True}, {"compression": "tiff_lzw"}, {"compression": "packbits"}])
+def test_tiff_of_all_sorts_is_read(how):
+    assert (read_image(saved(Image.fromarray(COLOURS), "TIFF", **how), "a.tif") == COLOURS).all()
+
+
+def test_tiff_tells_of_losses_and_profiles():
+    image = Image.fromarray(COLOURS)
+
+    assert tag_of(saved(image, "TIFF", compression="jpeg")) == "lossy"
+    assert tag_of(saved(image, "TIFF", icc_profile=b"a profile")) == "sRGB"
+    assert tag_of(saved(image, "TIFF")) == tag_of(saved(image, "TIFF", big_tiff=True)) == ""
+
+
 def test_interlaced_images_are_read():
     assert (read_image(saved(Image.fromarray(COLOURS), "PNG", interlace=1), "a.png") == COLOURS).all()
 
@@ -82,9 +137,29 @@ def test_jpeg_and_webp_are_read():
     assert (read_image(saved(Image.fromarray(COLOURS), "WEBP", lossless=True), "a.webp") == COLOURS).all()
 
 
-def test_cmyk_is_refused():
-    with pytest.raises(InputError, match=r"a\.jpg: .*CMYK"):
-        read_image(saved(Image.fromarray(COLOURS).convert("CMYK"), "JPEG"), "a.jpg")
+@pytest.mark.parametrize("format", ["JPEG", "TIFF"])
+def test_cmyk_is_refused(format):
+    with pytest.raises(InputError, match=r"a\.img: .*CMYK"):
+        read_image(saved(Image.fromarray(COLOURS).convert("CMYK"), format), "a.img")
+
+
+@pytest.mark.parametrize(
+    ("content", "found"),
+    [
+        (saved(Image.fromarray(COLOURS).convert("LAB"), "TIFF"), "colours of kind 8"),
+        (tiff(bytes(4), t277=60_000), "60000 samples a pixel"),
+        (tiff(bytes(4), t258=0), "samples of 0 bits"),
+        (tiff(bytes(4), t258=60_000), "samples of 60000 bits"),
+        (tiff(bytes(4), kind=3), "colour 0 of a palette of 0"),
+        (tiff(b"\0\1\2\3", kind=3, colours=(0, 1, 2)), "(colour 3 of a palette of 1|decoded)"),
+        (tiff(bytes(4), t256=60_000, t257=60_000), "60000 x 60000 pixels, more than"),
+        (tiff(bytes(4), t322=2**30, t323=2**30), "can't be decoded"),
+    ],
+    ids=["Lab", "samples", "no bits", "bits", "no palette", "short palette", "size", "tile"],
+)
+def test_tiff_of_no_plain_channels_and_hostile_tiff_is_refused(content, found):
+    with pytest.raises(InputError, match=rf"a\.tif: .*{found}"):
+        read_image(content, "a.tif")
 
 
 @pytest.mark.parametrize(
@@ -110,9 +185,10 @@ def test_what_is_cut_off_is_refused(format, share):
         read_image(whole[: int(len(whole) * share)], "a.img")
 
 
-@pytest.mark.parametrize("format", ["PNG", "JPEG", "WEBP", "TIFF"])
+@pytest.mark.parametrize("format", ["PNG", "JPEG", "WEBP", "TIFF", "TIFF palette"])
 def test_any_byte_may_be_wrong(format):
-    whole = saved(Image.fromarray(COLOURS), format)
+    image = Image.fromarray(COLOURS).convert("P" if "palette" in format else "RGB")
+    whole = saved(image, format.split()[0])
     for at in range(len(whole)):
         content = whole.copy()
         content[at] ^= 0x5A
