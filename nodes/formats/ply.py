@@ -108,7 +108,7 @@ def _image(file: InputFile, texture: str, notes: list[str]) -> Image:
 
 def _owner(file: InputFile, face: Columns, sizes: Array, images: int) -> Array:
     """(faces,) int64: the material of each face."""
-    if images > 1 and face.has(IMAGE) and len(face.scalars[IMAGE]) == len(sizes):
+    if images and face.has(IMAGE) and len(face.scalars[IMAGE]) == len(sizes):
         numbers = face.scalars[IMAGE]
         wrong = ~((numbers >= -1) & (numbers < images))
         if wrong.any():
@@ -129,7 +129,7 @@ def _part(
     )
     if vertex.has(*NORMAL):
         part = replace(part, normals=sound_normals(vertex.table(*NORMAL), index, part, notes))
-    return replace(part, frames=_frames(vertex, index, part))
+    return replace(part, frames=_frames(vertex, index, part, notes))
 
 
 def _uvs(vertex: Columns, face: Columns, sizes: Array, index: Array, name: str, notes: list[str]) -> tuple[Stream, ...]:
@@ -161,13 +161,17 @@ def _colours(vertex: Columns, face: Columns, at: Array, sizes: Array) -> tuple[S
     return ()
 
 
-def _frames(vertex: Columns, at: Array, part: Part) -> Frames | None:
+def _frames(vertex: Columns, at: Array, part: Part, notes: list[str]) -> Frames | None:
     if part.normals is None or not vertex.has(*TANGENT):
         return None
     stored = used_rows(vertex.table(*TANGENT), at)
-    sides = np.where(stored.values[:, 3] < 0, -1, 1).astype(np.int8)
+    side = stored.values[:, 3]
+    if not (np.abs(side) == 1).all():  # as `write_ply` leaves parts without frames
+        notes.append("not every vertex has a tangent with a side of 1 or -1: they are all passed over")
+        return None
+    none = np.zeros(len(side), bool)
     tangents = np.ascontiguousarray(stored.values[:, :3])
-    return Frames(tangents, None, sides, np.zeros(len(sides), bool), stored.index, len(part.uvs[:1]) - 1, "stored")
+    return Frames(tangents, None, side.astype(np.int8), none, stored.index, len(part.uvs[:1]) - 1, "stored")
 
 
 def _tell_the_rest(read: dict[str, Columns], notes: list[str]) -> None:

@@ -8,51 +8,56 @@ from tangentry.nodes.formats.vertices import Vertices, vertices_of
 from tangentry.nodes.model import Asset
 from tangentry.pipeline.flow import Array, OutFile
 
+NORMAL, COLOUR, TANGENT = ("nx", "ny", "nz"), ("red", "green", "blue", "alpha"), ("tx", "ty", "tz", "side")
+
 
 def write_ply(asset: Asset, stem: str) -> tuple[OutFile, ...]:
     """A binary PLY file of triangles, and the colour images of its materials beside it; v grows upward.
 
-    Vertices have x y z, and where every part has them: nx ny nz, s t (further UV sets s1 t1 ...), red green blue alpha,
-    tx ty tz side (bitangent = cross(normal, tangent) * side). Comments `TextureFile` name the images, and each face's
-    `texnumber` counts them where there are several, -1 for none.
+    Vertices have x y z and, if any part has them, nx ny nz, s t (further UV sets s1 t1 ...), red green blue alpha and
+    tx ty tz side (bitangent = cross(normal, tangent) * side): white or 0 in parts that have none. Comments
+    `TextureFile` name the images; each face's `texnumber` counts them where not all show the same, -1 for none.
     """
     found = [vertices_of(part) for part in asset.parts]
     names, images = images_beside(asset.images, f"{stem}.ply")
-    colour_maps = [next((use.image for use in one.maps if use.role == "colour"), -1) for one in asset.materials]
-    shown = sorted(set(colour_maps) - {-1})
+    maps = [next((use.image for use in one.maps if use.role == "colour"), -1) for one in asset.materials]
+    shown = [maps[part.material] if part.material >= 0 else -1 for part in asset.parts]
+    textures = sorted(set(shown) - {-1})
     layout = _layout(found)
     vertices = np.concatenate([_vertices(one, layout, asset.v_down) for one in found])
-    numbered = len(shown) > 1
     faces, before = [], 0
-    for part, one in zip(asset.parts, found, strict=True):
-        image = colour_maps[part.material] if part.material >= 0 else -1
-        faces.append(_faces(one.triangles + before, (shown.index(image) if image >= 0 else -1) if numbered else None))
+    for image, one in zip(shown, found, strict=True):
+        number = textures.index(image) if image >= 0 else -1
+        faces.append(_faces(one.triangles + before, number if len(set(shown)) > 1 else None))
         before += len(one.points)
-    header = ["ply", "format binary_little_endian 1.0", "comment tangentry"]
-    header += [f"comment TextureFile {names[row]}" for row in shown]
-    header += [f"element vertex {before}"]
-    header += [f"property {'uchar' if kind == 'u1' else 'float'} {name}" for name, kind in layout]
-    header += [f"element face {sum(map(len, faces))}", "property list uchar int vertex_indices"]
-    header += ["property int texnumber"] if numbered else []
-    head = np.frombuffer(("\n".join([*header, "end_header"]) + "\n").encode(), np.uint8)
+    head = _header([names[image] for image in textures], layout, before, np.concatenate(faces))
     body = [np.ascontiguousarray(table).view(np.uint8).reshape(-1) for table in (vertices, *faces)]
-    placed = {names[row] for row in shown}
+    placed = {names[image] for image in textures}
     return (OutFile(f"{stem}.ply", np.concatenate([head, *body])), *(one for one in images if one.name in placed))
 
 
+def _header(textures: list[str], layout: list[tuple[str, str]], vertices: int, faces: Array) -> Array:
+    lines = ["ply", "format binary_little_endian 1.0", "comment tangentry"]
+    lines += [f"comment TextureFile {name}" for name in textures]
+    lines += [f"element vertex {vertices}"]
+    lines += [f"property {'uchar' if kind == 'u1' else 'float'} {name}" for name, kind in layout]
+    lines += [f"element face {len(faces)}", "property list uchar int vertex_indices"]
+    lines += ["property int texnumber"] if "image" in (faces.dtype.names or ()) else []
+    return np.frombuffer(("\n".join([*lines, "end_header"]) + "\n").encode(), np.uint8)
+
+
 def _layout(found: list[Vertices]) -> list[tuple[str, str]]:
-    """Names and types of the vertices' properties: what every part has."""
-    names = [*"xyz"]
-    names += ["nx", "ny", "nz"] if all(one.normals is not None for one in found) else []
-    for k in range(min(len(one.uvs) for one in found)):
+    """Names and types of the vertices' properties."""
+    names = [*"xyz", *(NORMAL if any(one.normals is not None for one in found) else ())]
+    for k in range(max(len(one.uvs) for one in found)):
         names += [f"s{k or ''}", f"t{k or ''}"]
     layout = [(name, "<f4") for name in names]
-    if all(one.colours for one in found):
+    colours = [one.colours[0] for one in found if one.colours]
+    if colours:
         # Bytes where they say it all, as most programs want colours.
-        kind = "u1" if all(_are_bytes(one.colours[0]) for one in found) else "<f4"
-        layout += [(name, kind) for name in ("red", "green", "blue", "alpha")]
-    if all(one.tangents is not None for one in found):
-        layout += [(name, "<f4") for name in ("tx", "ty", "tz", "side")]
+        layout += [(name, "u1" if all(map(_are_bytes, colours)) else "<f4") for name in COLOUR]
+    if any(one.tangents is not None for one in found):
+        layout += [(name, "<f4") for name in TANGENT]
     return layout
 
 
@@ -65,17 +70,17 @@ def _vertices(one: Vertices, layout: list[tuple[str, str]], v_down: bool) -> Arr
     """(vertices,) rows of the layout."""
     columns: dict[str, Array] = dict(zip("xyz", one.points.T, strict=True))
     if one.normals is not None:
-        columns |= dict(zip(("nx", "ny", "nz"), one.normals.T, strict=True))
+        columns |= dict(zip(NORMAL, one.normals.T, strict=True))
     for k, uv in enumerate(one.uvs):
         columns |= {f"s{k or ''}": uv[:, 0], f"t{k or ''}": 1 - uv[:, 1] if v_down else uv[:, 1]}
-    if one.colours:
-        opaque = np.ones((len(one.points), 4 - one.colours[0].shape[1]), np.float32)
-        columns |= dict(zip(("red", "green", "blue", "alpha"), np.hstack([one.colours[0], opaque]).T, strict=True))
+    for colours in one.colours[:1]:
+        columns |= dict(zip(COLOUR, colours.T, strict=False))
     if one.tangents is not None:
-        columns |= dict(zip(("tx", "ty", "tz", "side"), one.tangents.T, strict=True))
-    rows = np.empty(len(one.points), layout)
+        columns |= dict(zip(TANGENT, one.tangents.T, strict=True))
+    rows = np.zeros(len(one.points), layout)
     for name, kind in layout:
-        rows[name] = np.rint(columns[name] * 255) if kind == "u1" else columns[name]
+        column = columns.get(name, np.float32(name in COLOUR))
+        rows[name] = np.rint(column * 255) if kind == "u1" else column
     return rows
 
 

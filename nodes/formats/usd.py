@@ -76,36 +76,42 @@ def _identifier(name: str, taken: set[str]) -> str:
 
 
 def _mesh(mesh: Any, part: Part, v_down: bool) -> None:
-    from pxr import Sdf, UsdGeom, Vt
+    from pxr import Sdf, UsdGeom
 
-    corner = UsdGeom.Tokens.faceVarying
-    points = np.ascontiguousarray(part.points.values)
-    mesh.CreatePointsAttr(Vt.Vec3fArray.FromNumpy(points))
-    mesh.CreateFaceVertexCountsAttr(Vt.IntArray.FromNumpy(np.diff(part.starts).astype(np.int32)))
-    mesh.CreateFaceVertexIndicesAttr(Vt.IntArray.FromNumpy(np.ascontiguousarray(part.points.index)))
+    corner, types = UsdGeom.Tokens.faceVarying, Sdf.ValueTypeNames
+    points = part.points.values
+    mesh.CreatePointsAttr(_array(points))
+    mesh.CreateFaceVertexCountsAttr(_array(np.diff(part.starts)))
+    mesh.CreateFaceVertexIndicesAttr(_array(part.points.index))
     mesh.CreateSubdivisionSchemeAttr(UsdGeom.Tokens.none)
-    mesh.CreateExtentAttr(Vt.Vec3fArray.FromNumpy(np.stack([points.min(axis=0), points.max(axis=0)])))
+    mesh.CreateExtentAttr(_array(np.stack([points.min(axis=0), points.max(axis=0)])))
     if part.normals is not None:
-        mesh.CreateNormalsAttr(Vt.Vec3fArray.FromNumpy(part.normals.values[part.normals.index]))
+        mesh.CreateNormalsAttr(_array(part.normals.values[part.normals.index]))
         mesh.SetNormalsInterpolation(corner)
     primvars = UsdGeom.PrimvarsAPI(mesh)
 
-    def add(name: str, kind: Any, values: Any, index: Array) -> None:
+    def add(name: str, kind: Any, values: Array, index: Array) -> None:
         primvar = primvars.CreatePrimvar(name, kind, corner)
-        primvar.Set(values)
-        primvar.SetIndices(Vt.IntArray.FromNumpy(np.ascontiguousarray(index, np.int32)))
+        primvar.Set(_array(values))
+        primvar.SetIndices(_array(index))
 
     for k, uv in enumerate(part.uvs):
-        values = uv.values * (1, -1) + (0, 1) if v_down else uv.values
-        kind = Sdf.ValueTypeNames.TexCoord2fArray
-        add(f"st{k or ''}", kind, Vt.Vec2fArray.FromNumpy(np.ascontiguousarray(values, np.float32)), uv.index)
+        add(f"st{k or ''}", types.TexCoord2fArray, uv.values * (1, -1) + (0, 1) if v_down else uv.values, uv.index)
     for colour in part.colours[:1]:
-        rgb = np.ascontiguousarray(colour.values[:, :3])
-        add("displayColor", Sdf.ValueTypeNames.Color3fArray, Vt.Vec3fArray.FromNumpy(rgb), colour.index)
+        add("displayColor", types.Color3fArray, colour.values[:, :3], colour.index)
     if part.frames is not None and part.normals is not None:
         tangents, bitangents, index = _frames(part)
-        for name, vectors in (("tangents", tangents), ("bitangents", bitangents)):
-            add(name, Sdf.ValueTypeNames.Vector3fArray, Vt.Vec3fArray.FromNumpy(vectors), index)
+        add("tangents", types.Vector3fArray, tangents, index)
+        add("bitangents", types.Vector3fArray, bitangents, index)
+
+
+def _array(values: Array) -> Any:
+    """The library's own array of (n,) int or (n, 2 or 3) float numbers."""
+    from pxr import Vt
+
+    kind = {1: Vt.IntArray, 2: Vt.Vec2fArray, 3: Vt.Vec3fArray}[values.shape[1] if values.ndim == 2 else 1]
+    # A file's bytes may lie at any place; the library wants numbers where the machine does.
+    return kind.FromNumpy(np.require(values, np.int32 if values.ndim == 1 else np.float32, ["C", "A"]))
 
 
 def _frames(part: Part) -> tuple[Array, Array, Array]:
@@ -118,7 +124,7 @@ def _frames(part: Part) -> tuple[Array, Array, Array]:
         return tangents, part.frames.bitangents[row], index
     normals = part.normals.values[part.normals.index[corner]]
     across = np.cross(normals, tangents) * part.frames.sides[row, None]
-    return tangents, np.ascontiguousarray(across, np.float32), index
+    return tangents, across, index
 
 
 def _bind(mesh: Any, material: Any) -> None:

@@ -273,6 +273,28 @@ def test_each_material_keeps_its_image(tmp_path):
     assert [part.material for part in after.parts] == [-1, 0, 1]
 
 
+def test_what_only_some_parts_have_is_written_for_all(tmp_path):
+    framed = frames(asset(grid_part(1, 1)), where="all").parts[0]
+    coloured = replace(framed, colours=(Stream(np.full((1, 3), 0.25, np.float32), np.zeros(4, np.int32)),))
+    bare = replace(grid_part(1, 1, 2.0), normals=None, uvs=())
+
+    after = back(asset(coloured, bare), tmp_path)
+    (part,) = after.parts
+
+    assert_array_equal(at(part.normals), [[0, 0, 1]] * 12)
+    assert_array_equal(at(part.uvs[0])[6:], [[0, 0]] * 6)
+    assert_array_equal(at(part.colours[0]), [[0.25] * 3 + [1]] * 6 + [[1] * 4] * 6)
+    assert part.frames is None and "not every vertex has a tangent" in after.notes[-1]
+
+
+@pytest.mark.parametrize(("bare", "materials"), [(True, [-1, 0]), (False, [0])])
+def test_a_lone_image_covers_only_what_shows_it(tmp_path, bare, materials):
+    parts = tuple(replace(grid_part(1, 1), material=k) for k in ((0, -1) if bare else (0, 0)))
+    before = Asset("pier", parts, (Material("deck", (MapUse("colour", 0),)), Material("unused")), (picture(1),))
+
+    assert [part.material for part in back(before, tmp_path).parts] == materials
+
+
 def test_the_same_asset_makes_the_same_bytes():
     one, other = (write_ply(asset(torus_part(6, 4)), "a")[0].content for _ in range(2))
 

@@ -124,6 +124,16 @@ def test_materials_show_their_images(opened, tmp_path):
     assert reader.GetInput("varname").Get() == "st1"
 
 
+def test_arrays_that_lie_anywhere_in_memory_are_written(opened):
+    part = grid_part(2, 2)
+    moved = np.frombuffer(b"x" + part.points.values.tobytes(), np.float32, offset=1).reshape(-1, 3)
+
+    (mesh,) = meshes(opened(asset(replace(part, points=Stream(moved, part.points.index))), ".usda"))
+
+    assert not moved.flags.aligned
+    assert_array_equal(mesh.GetPointsAttr().Get(), part.points.values)
+
+
 def test_names_become_identifiers_and_stay_apart(opened):
     named = [replace(grid_part(), name=name) for name in ("3 of a kind", "torus", "torus", "Materials")]
 
