@@ -55,17 +55,21 @@ class Making:
 
     def write(self, path: Path, buffer: str = "") -> Path:
         """Write .glb, or .gltf whose buffer is a data URI, or a file where it is given a name."""
-        document = dict(self.json)
+        first, *others = self.json.get("buffers", [{}])
+        document = {**self.json, "buffers": [{"byteLength": len(self.data), **first}, *others]}
         if path.suffix == ".glb":
-            document["buffers"] = [*document.get("buffers", [{"byteLength": len(self.data)}])]
             path.write_bytes(glb(document, self.data))
             return path
-        uri = quote(buffer) or "data:application/octet-stream;base64," + base64.b64encode(self.data).decode()
-        document["buffers"] = [{"byteLength": len(self.data), "uri": uri}]
+        document["buffers"][0]["uri"] = quote(buffer) or data_uri(self.data)
         if buffer:
             (path.parent / buffer).write_bytes(self.data)
         path.write_text(json.dumps(document))
         return path
+
+
+def data_uri(content: bytes) -> str:
+    """Bytes in a text (RFC 2397)."""
+    return "data:application/octet-stream;base64," + base64.b64encode(content).decode()
 
 
 def glb(document: dict[str, Any], data: bytes) -> bytes:
@@ -84,8 +88,12 @@ def meaning(path: Path) -> dict[str, Any]:
     """
     document, buffers = _read(path)
     views = document.pop("bufferViews", [])
-    document.pop("buffers", None)
+    told = [_told(buffer) for buffer in document.pop("buffers", [])]
     for accessor in document.get("accessors", []):
+        if "bufferView" in accessor:
+            view = views[accessor["bufferView"]]
+            accessor |= {"of view": _told(view)} if _told(view) else {}
+            accessor |= {"of buffer": told[view["buffer"]]} if told[view["buffer"]] else {}
         accessor["values"] = _values(accessor, views, buffers).tobytes()
         for name in ("bufferView", "byteOffset", "sparse"):
             accessor.pop(name, None)
@@ -98,6 +106,10 @@ def meaning(path: Path) -> dict[str, Any]:
             image["bytes"] = (path.parent / unquote(image.pop("uri"))).read_bytes()
         image.pop("mimeType", None)
     return {name: value for name, value in document.items() if value != []}
+
+
+def _told(entry: dict[str, Any]) -> dict[str, Any]:
+    return {name: value for name, value in entry.items() if name in ("name", "extras", "extensions")}
 
 
 def _read(path: Path) -> tuple[dict[str, Any], list[np.ndarray]]:

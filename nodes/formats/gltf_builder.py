@@ -1,13 +1,14 @@
-"""A glTF document under construction: JSON and the contents of its buffer views, packed into one buffer at the end."""
+"""A glTF document under construction: JSON and the contents of its buffer views, packed into buffers at the end."""
 
 from __future__ import annotations
 
+import base64
 import json
 from typing import Any
 from urllib.parse import quote
 
 import numpy as np
-from tangentry.nodes.formats.gltf_accessors import WIDTHS
+from tangentry.nodes.formats.gltf_buffers import ALIGN, joined
 from tangentry.nodes.geometry.packing import BYTE, SHORT, pack_vectors
 from tangentry.nodes.model import Image
 from tangentry.pipeline.flow import Array, OutFile
@@ -24,7 +25,6 @@ TYPE_CODES = {
 VECTORS = {1: "SCALAR", 2: "VEC2", 3: "VEC3", 4: "VEC4"}
 QUANTISED = "KHR_mesh_quantization"
 VERTICES, INDICES = 34962, 34963  # buffer view targets
-ALIGN = 4
 
 
 class Builder:
@@ -101,40 +101,24 @@ class Builder:
         accessors[replaces] = kept | entry
         return replaces
 
-    def files(self, name: str, buffer: str) -> tuple[OutFile, ...]:
-        """The document as a file of that name: GLB, or, where `buffer` names a file, JSON with its buffer in that."""
+    def files(self, name: str, binary: bool) -> tuple[OutFile, ...]:
+        """The document as a file of that name: GLB, or JSON with its buffers in files beside it, `stem.bin` first."""
         self._drop_unused_views()
-        packed, offsets, at = [], [], 0
-        for content in self._views:
-            padding = -len(content) % ALIGN
-            packed += [content, np.zeros(padding, np.uint8)]
-            offsets.append(at)
-            at += len(content) + padding
-        for view, offset in zip(self.document.get("bufferViews", ()), offsets, strict=True):
-            view["buffer"] = 0
-            view.pop("byteOffset", None)
-            if offset:
-                view["byteOffset"] = offset
-        body = np.concatenate(packed) if packed else np.zeros(0, np.uint8)
-        self._only_buffer(len(body), quote(buffer))
+        bodies = joined(self.document, self._views)
+        beside = []
+        for number, body in enumerate(bodies):
+            if not binary:
+                beside.append(OutFile(buffer_name(name, number), body))
+                self.document["buffers"][number]["uri"] = quote(beside[-1].name)
+            elif number > 0:  # a GLB file has room for the first one only
+                coded = base64.b64encode(body.tobytes()).decode()
+                self.document["buffers"][number]["uri"] = f"data:application/octet-stream;base64,{coded}"
         for empty in [name for name, value in self.document.items() if value == [] and name != "scenes"]:
             del self.document[empty]
         text = json.dumps(self.document, ensure_ascii=False, separators=(",", ":")).encode()
-        if not buffer:
-            return (OutFile(name, _glb(text, body)),)
-        files = [OutFile(name, np.frombuffer(text, np.uint8))]
-        return (*files, OutFile(buffer, body)) if len(body) else tuple(files)
-
-    def _only_buffer(self, size: int, uri: str) -> None:
-        """One buffer in place of all; what the first one carried besides its data stays."""
-        kept = {
-            name: value
-            for name, value in next(iter(self.document.get("buffers", [])), {}).items()
-            if name not in ("uri", "byteLength")
-        }
-        self.document.pop("buffers", None)
-        if size:
-            self.document["buffers"] = [{**kept, "byteLength": size, **({"uri": uri} if uri else {})}]
+        if binary:
+            return (OutFile(name, _glb(text, bodies[0] if bodies else np.zeros(0, np.uint8))),)
+        return (OutFile(name, np.frombuffer(text, np.uint8)), *beside)
 
     def _drop_unused_views(self) -> None:
         """Leave out the views that nothing names; whatever names a view in glTF and its extensions says bufferView."""
@@ -155,6 +139,12 @@ class Builder:
             self.document["bufferViews"] = [views[old] for old in used]
 
 
+def buffer_name(name: str, number: int) -> str:
+    """The file of a buffer beside the document of that name."""
+    stem = name.rpartition(".")[0]
+    return f"{stem}_{number}.bin" if number else f"{stem}.bin"
+
+
 def _glb(text: bytes, body: Array) -> Array:
     """The two chunks of a GLB file (specification, 4.4)."""
     text += b" " * (-len(text) % 4)
@@ -168,8 +158,3 @@ def _glb(text: bytes, body: Array) -> Array:
 def bounds(values: Array) -> dict[str, Any]:
     """`min` and `max` of vertex data, as POSITION needs them."""
     return {"min": values.min(axis=0).tolist(), "max": values.max(axis=0).tolist()}
-
-
-def width(entry: dict[str, Any]) -> int:
-    """How many components an accessor's elements have."""
-    return WIDTHS[str(entry["type"])]

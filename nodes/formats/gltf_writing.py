@@ -7,7 +7,7 @@ from pathlib import PurePosixPath
 from typing import Any
 from urllib.parse import quote
 
-from tangentry.nodes.formats.gltf_builder import Builder
+from tangentry.nodes.formats.gltf_builder import Builder, buffer_name
 from tangentry.nodes.formats.gltf_editing import edited_document
 from tangentry.nodes.formats.gltf_making import new_document
 from tangentry.nodes.formats.images import write_png
@@ -38,11 +38,12 @@ def write_gltf(asset: Asset, maps: Map | None, name: str, vectors: str = "float"
     builder = edited_document(asset, vectors) if asset.document is not None else new_document(asset, vectors)
     stem, _, suffix = name.rpartition(".")
     binary = suffix.lower() == "glb"
-    taken = {name.lower(), f"{stem}.bin".lower()}
+    buffers = range(max(len(builder.list("buffers")), 1))
+    taken = {name.lower(), *(buffer_name(name, number).lower() for number in buffers)}
     files = _place_images(builder, taken, binary)
     if maps is not None:
         files += _place_maps(builder, maps, stem, binary, asset, taken)
-    return (*builder.files(name, "" if binary else f"{stem}.bin"), *files)
+    return (*builder.files(name, binary), *files)
 
 
 def _place_images(builder: Builder, taken: set[str], binary: bool) -> list[OutFile]:

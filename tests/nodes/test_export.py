@@ -173,6 +173,28 @@ def test_only_tangent_space_normals_are_taken_as_maps(suffix):
         export(solved(box_part()), height, file=f"pier{suffix}")
 
 
+@pytest.mark.parametrize("suffix", [".glb", ".obj", ".usda"])
+@pytest.mark.parametrize(("green", "told"), [("undecided", "is undecided"), ("", "is not said")])
+def test_a_map_whose_green_nobody_knows_is_refused(suffix, green, told):
+    unknown = Map((replace(flat_map().sheets[0], green=green),))
+
+    with pytest.raises(InputError, match=f"map pier_normal: which way its green points {told}; say it"):
+        export(solved(box_part()), unknown, file=f"pier{suffix}")
+
+
+@pytest.mark.parametrize("suffix", [".gltf", ".obj"])
+def test_of_a_chain_of_levels_the_map_itself_is_put_in(suffix):
+    (full,) = flat_map().sheets
+    small = replace(full, texels=full.texels // 2, level=1)
+
+    alone = export(solved(box_part()), Map((full,)), file=f"pier{suffix}")
+    chain = export(solved(box_part()), Map((full, small)), file=f"pier{suffix}")
+
+    assert [(file.name, file.content.tobytes()) for file in chain.files] == [
+        (file.name, file.content.tobytes()) for file in alone.files
+    ]
+
+
 def test_other_suffixes_are_refused_with_those_that_are_written():
     with pytest.raises(InputError, match=r'pier\.fbx: suffix "\.fbx" names no format; write one of \.glb'):
         export(solved(box_part()), file="pier.fbx")

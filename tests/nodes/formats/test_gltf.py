@@ -7,7 +7,7 @@ import json
 
 import numpy as np
 import pytest
-from gltf_files import KINDS, PIXEL, Making, meaning
+from gltf_files import KINDS, PIXEL, Making, data_uri, meaning
 from numpy.testing import assert_allclose
 from tangentry.nodes.export import export
 from tangentry.nodes.frames import frames
@@ -152,7 +152,31 @@ def pictures(making: Making) -> None:
     making.json["extensionsUsed"] = ["KHR_texture_basisu"]
 
 
-DOCUMENTS = [plain, rigged, sparse, interleaved, shared, quantised, mixed, pictures]
+def overlapping(making: Making) -> None:
+    """Accessors and views over the same bytes, and views with names of their own."""
+    part = square(making)
+    view = making.json["bufferViews"][making.json["accessors"][part["attributes"]["POSITION"]]["bufferView"]]
+    view |= {"name": "points", "extras": {"from": "the quay"}}
+    making.json["bufferViews"].append({**view, "byteOffset": view["byteOffset"] + 12, "byteLength": 36, "name": "tail"})
+    tail = making.entry(len(making.json["bufferViews"]) - 1, 0, np.zeros((3, 3), "<f4"), "VEC3")
+    making.json["accessors"][tail] |= {"min": [0, 0, 0], "max": [1, 1, 0]}
+    rest = {"attributes": {"POSITION": tail}, "indices": making.accessor([0, 1, 2], "u1", "SCALAR")}
+    making.json["meshes"] = [{"primitives": [part, rest]}]
+
+
+def apart(making: Making) -> None:
+    """Three buffers, the second one with a name."""
+    plain(making)
+    colours = (np.arange(16).reshape(4, 4) / 16).astype("<f4")
+    held = {"byteLength": colours.nbytes, "uri": data_uri(colours.tobytes())}
+    making.json["buffers"] = [{}, {"name": "colours", "extras": {"deep": [1]}, **held}, held]
+    for number in (1, 2):
+        making.json["bufferViews"].append({"buffer": number, "byteLength": colours.nbytes})
+        shades = making.entry(len(making.json["bufferViews"]) - 1, 0, colours, "VEC4")
+        making.json["meshes"][0]["primitives"][0]["attributes"][f"COLOR_{number - 1}"] = shades
+
+
+DOCUMENTS = [plain, overlapping, apart, rigged, sparse, interleaved, shared, quantised, mixed, pictures]
 
 
 @pytest.fixture
