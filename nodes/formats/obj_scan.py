@@ -51,7 +51,8 @@ class Statements(NamedTuple):
 def read_statements(file: InputFile) -> Statements:
     """Read a file. Raises InputError naming the line of the first number or index that can't be used."""
     text = as_text(file.bytes())
-    bounds = _bounds(text, max(1, min(SHARES * core_count(), len(text) // FEWEST_BYTES)))
+    cores = core_count()
+    bounds = _bounds(text, max(1, min(SHARES * cores if cores > 1 else 1, len(text) // FEWEST_BYTES)))
     chunks = len(bounds) - 1
     counts = np.array(in_threads(lambda k: _count(text, bounds[k], bounds[k + 1]), chunks))
     total, before = counts.sum(axis=0), np.cumsum(counts, axis=0) - counts
