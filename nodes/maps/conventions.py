@@ -21,11 +21,11 @@ class Green(NamedTuple):
 
 
 def measure_green(texels: Array) -> Green:
-    """Does green grow up the image or down? By integrability, of (height, width, 3 or more) unorm codes or float normals.
+    """Does green grow up the image or down? By integrability, of (height, width, 3 or more) unorm codes or floats.
 
-    A map that was made from heights has slopes p = dh/dx and q = dh/dy with dp/dy = dq/dx. Read with green the wrong way
-    round the two sides have opposite signs, so their correlation over the map tells which it is. Common practice, no
-    source, for the use; the condition is Frankot & Chellappa's (1988, equation 1).
+    A map that was made from heights has slopes p = dh/dx and q = dh/dy with dp/dy = dq/dx. Read with green the wrong
+    way round the two sides have opposite signs, so their correlation over the map tells which it is. Common practice,
+    no source, for the use; the condition is Frankot & Chellappa's (1988, equation 1).
     """
     normals = decode_texels(texels[..., :3], "float" if texels.dtype.kind == "f" else "unorm", "up")
     z = normals[..., 2]

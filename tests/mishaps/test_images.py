@@ -151,7 +151,7 @@ def test_cmyk_is_refused(format):
         (tiff(bytes(4), t258=0), "samples of 0 bits"),
         (tiff(bytes(4), t258=60_000), "samples of 60000 bits"),
         (tiff(bytes(4), kind=3), "colour 0 of a palette of 0"),
-        (tiff(b"\0\1\2\3", kind=3, colours=(0, 1, 2)), "(colour 3 of a palette of 1|decoded)"),
+        (tiff(b"\0\1\2\3", kind=3, colours=(0, 1, 2)), "colour 3 of a palette of 1"),
         (tiff(bytes(4), t256=60_000, t257=60_000), "60000 x 60000 pixels, more than"),
         (tiff(bytes(4), t322=2**30, t323=2**30), "can't be decoded"),
     ],

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import pytest
 from tangentry.nodes.check_map import check_map
+from tangentry.nodes.load import load
 from tangentry.nodes.maps.conventions import measure_green
 from tangentry.nodes.texture import texture
 
@@ -12,10 +13,16 @@ CLEAR = {  # correlations found by an independent program
     "ScratchedGold-Normal.png": ("down", -0.953),
     "handleGem_normal.png": ("up", 0.784),
     "normal_0001.webp": ("up", 0.605),
+    "normal.png": ("up", 0.98),
     "lambert2_normal.png": ("down", -0.38),
     "lambert3_normal.png": ("down", -0.37),
 }
-WEAK = ["vintageFanMat_normal.jpg", "FlightHelmet_Materials_LensesMat_Normal.png"]
+WEAK = [
+    "vintageFanMat_normal.jpg",
+    "FlightHelmet_Materials_LensesMat_Normal.png",
+    "FlightHelmet_Materials_GlassPlasticMat_Normal.png",
+    "FlightHelmet_Materials_RubberWoodMat_Normal.png",
+]
 
 
 def sheet(samples, name, **how):
@@ -28,7 +35,16 @@ def test_clear_maps_are_told_right(samples, name):
     found = measure_green(sheet(samples, name).texels)
 
     assert found.verdict == verdict
-    assert found.correlation == pytest.approx(correlation, abs=0.03)
+    # Which texels are too steep to count is a matter of choice.
+    assert found.correlation == pytest.approx(correlation, abs=0.035)
+
+
+@pytest.mark.parametrize("name", ["NormalTangentTest.glb", "NormalTangentMirrorTest.glb"])
+def test_the_standards_own_maps_are_green_up(samples, name):
+    """glTF 2.0, 3.9.3; made by the standard's authors to show just that."""
+    for one in texture(load(file=str(next(samples.rglob(name))))).sheets:
+        found = measure_green(one.texels)
+        assert found.verdict == "up" and found.correlation > 0.9
 
 
 @pytest.mark.parametrize("name", CLEAR)

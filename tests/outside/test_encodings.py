@@ -40,6 +40,21 @@ def test_the_error_is_that_of_the_table(normals, encoding, bits, mean, p99, larg
     assert error.max() == pytest.approx(largest, rel=0.02)
 
 
+@pytest.mark.parametrize(
+    ("top", "mean", "p99", "largest"), [(255, 0.33679, 0.75689, 0.95011), (65535, 0.001304, 0.002936, 0.003669)]
+)
+def test_octahedral_codes_that_others_merely_rounded_are_read(normals, top, mean, p99, largest):
+    """Cigolle et al. 2014, the plain form: (x, y) / (|x| + |y| + |z|), for the upper half."""
+    places = normals[..., :2].astype(float) / np.abs(normals.astype(float)).sum(axis=-1, keepdims=True)
+    codes = np.rint((places + 1) / 2 * top).astype(np.uint8 if top == 255 else np.uint16)
+
+    error = apart(decode_texels(codes, "octahedral", "up"), normals)
+
+    assert error.mean() == pytest.approx(mean, rel=0.01)
+    assert np.percentile(error, 99) == pytest.approx(p99, rel=0.01)
+    assert error.max() == pytest.approx(largest, rel=0.02)
+
+
 def test_rounding_beats_truncating_and_the_offsets_must_agree(normals):
     """Truncated codes: 0.33980 on average; codes of 127.5 decoded as if of 127 about 128: 0.33943."""
     truncated = np.floor((normals.astype(float) + 1) * 127.5).astype(np.uint8)
