@@ -10,9 +10,10 @@ FAR = 20000  # texels: further than any image is wide
 
 
 def nearest_owned(owned: Array, reach: int) -> Array:
-    """(height, width) int32: the flat index of the nearest owned texel, its own for owned ones, -1 beyond `reach` texels.
+    """(height, width) int32: flat indices of the nearest owned texels, their own for owned ones, -1 beyond `reach`.
 
     owned  (height, width) bool
+    reach  in texels
 
     Distances are Euclidean, found in two sweeps that hand offsets on (Danielsson 1980), so near the corners of charts a
     texel may get an owner that is a fraction of a texel further than the nearest.

@@ -82,6 +82,51 @@ def test_slopes_come_out_right_on_a_chart_that_is_stretched(stretch):
         assert abs(found[axis] / found[2]) == pytest.approx(0.1 / metres, rel=1e-4)
 
 
+def two_charts():
+    """The left half of the map on a square of 1 m, the right half on one 4 m wide."""
+    plain = grid_part()
+    parts = []
+    for row, metres in enumerate((1, 4)):
+        places = (plain.uvs[0].values * [0.5, 1] + [row / 2, 0]).astype(np.float32)
+        points = plain.points.values * np.float32([metres, 1, 1])
+        parts.append(
+            replace(plain, points=Stream(points, plain.points.index), uvs=(Stream(places, plain.uvs[0].index),))
+        )
+    return asset(*parts)
+
+
+def test_each_chart_has_the_slopes_of_its_own_stretch():
+    """dh/dx = dh/du / |dP/du|: |dP/du| is 2 m on the left, 8 m on the right."""
+    ramp = np.tile((np.arange(SIZE) + 0.5) / SIZE, (SIZE, 1))
+
+    found = normals(heights(ramp), asset=two_charts(), height=0.8, edge="clamp")
+    slopes = -found[..., 0] / found[..., 2]
+
+    assert_allclose(slopes[:, : SIZE // 2 - 1], 0.4, rtol=1e-4)
+    assert_allclose(slopes[:, SIZE // 2 + 1 :], 0.1, rtol=1e-4)
+
+
+def test_back_and_there_are_exact_over_charts_of_any_stretch():
+    there = relief(heights(waves()), two_charts(), height=0.3)
+    back = relief(there, two_charts(), height=0.3).sheets[0]
+
+    assert_allclose(back.texels[..., 0], waves() - waves().mean(), atol=4e-6)
+
+
+def test_sizes_turn_smoothly_where_a_chart_is_stretched_more_and_more():
+    """Columns 1, 2, 3 ... times as wide: sizes at vertices are means of two, between them a line, so without a step."""
+    plain = grid_part(4, 4)
+    points = plain.points.values.copy()
+    points[:, 0] = (points[:, 0] * 4) ** 2
+    mesh = asset(replace(plain, points=Stream(points, plain.points.index)))
+    ramp = np.tile((np.arange(SIZE) + 0.5) / SIZE, (SIZE, 1))
+
+    found = normals(heights(ramp), asset=mesh, edge="clamp")
+    wide = -found[SIZE // 2, :, 2] / found[SIZE // 2, :, 0]
+
+    assert np.abs(np.diff(wide)).max() < 3 * (wide.max() - wide.min()) / SIZE
+
+
 def test_clamped_borders_are_one_sided_and_wrapped_ones_meet():
     ramp = np.tile(np.arange(SIZE) / SIZE, (SIZE, 1))
 
