@@ -123,7 +123,7 @@ def cylinder_truth(part: Part) -> Truth:
 
 
 def sphere_part(nu: int = 24, nv: int = 12, radius: float = 1.0) -> Part:
-    """A sphere around y, u around, v from the south pole to the north: its pole faces are quads with two corners on the pole."""
+    """A sphere around y, u around, v from the south pole to the north: pole faces are quads with two corners there."""
     a, b = np.meshgrid(2 * np.pi * np.arange(nu) / nu, np.pi * (np.arange(nv + 1) / nv - 0.5), indexing="ij")
     a, b = a.ravel(), b.ravel()
     normals = np.stack([np.cos(b) * np.cos(a), np.sin(b), -np.cos(b) * np.sin(a)], axis=1)
@@ -168,7 +168,7 @@ def box_part(size: float = 1.0) -> Part:
 
 
 def half_mirrored(part: Part, nu: int, nv: int) -> Part:
-    """A grid of quads whose faces in the second half of u reuse the charts of the first, mirrored: u -> 1 - u beyond 1/2."""
+    """A grid of quads whose faces in the second half of u reuse the first's charts, mirrored: u -> 1 - u beyond 1/2."""
     from dataclasses import replace
 
     uv = part.uvs[0].values.copy()

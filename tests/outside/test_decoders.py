@@ -86,8 +86,8 @@ def mean_difference(mesh, texel, size=128):
 
 
 def test_normalising_first_matters_with_the_square_of_the_edges_length():
-    """An interpolated unit vector is short by the square of the angle between its ends, so edges a quarter as long leave
-    a sixteenth (own derivation)."""
+    """An interpolated unit vector is short by the square of the angle between its ends: edges a quarter as long leave a
+    sixteenth (own derivation)."""
     coarse, fine = (mean_difference(displaced_torus(nu, nv), LEANING) for nu, nv in ((100, 50), (400, 200)))
 
     assert_allclose(coarse / fine, 16, rtol=0.03)

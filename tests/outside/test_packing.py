@@ -58,8 +58,8 @@ def frames_about(normals, chance):
 
 
 def test_a_frame_in_four_shorts_keeps_its_side_and_turns_by_less_than_its_step(normals):
-    """A change of a unit quaternion by e turns the frame by 2 e; each of four components is off by 1/2 step at most, and
-    a w next to nothing is moved by up to one step to have a sign."""
+    """A change of a unit quaternion by e turns the frame by 2 e; each of four components is off by 1/2 step at most,
+    and a w next to nothing is moved by up to one step to have a sign."""
     chance = np.random.default_rng(1)
     normals = normals * chance.choice([-1, 1], (len(normals), 1))
     tangents = frames_about(normals, chance)
