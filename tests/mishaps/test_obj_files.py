@@ -135,7 +135,7 @@ def test_large_files_are_the_same_in_chunks_as_in_one(tmp_path, monkeypatch):
     found = []
     for size in (1 << 20, 97):
         monkeypatch.setattr(obj_scan, "FEWEST_BYTES", size)
-        monkeypatch.setattr(obj_scan, "SHARES", 50)
+        monkeypatch.setattr(obj_scan, "core_count", lambda: 25)
         found.append(obj_scan.read_statements(file))
 
     for one, other in zip(*found, strict=True):
