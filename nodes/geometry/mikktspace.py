@@ -54,7 +54,7 @@ def solve(
     group = np.full(len(vertex), -1, np.int32)
     cores = core_count() if len(ring) > FEW else 1
     bounds = np.searchsorted(starts, len(ring) * np.arange(cores) // cores).astype(np.int32)
-    arrays = (triangles, at, kind, found.tangent, found.side, starts, ring, points, normals, tangent, side, group)
+    arrays = (triangles, at, kind, found.tangent, starts, ring, points, normals, tangent, side, group)
     counts = in_threads(
         lambda k: _solve(bounds[k], bounds[k + 1] if k + 1 < cores else np.int32(len(points)), *arrays),
         cores,
@@ -79,7 +79,6 @@ def _solve(
     at: Array,
     kind: Array,
     tri_tangent: Array,
-    tri_side: Array,
     starts: Array,
     ring: Array,
     points: Array,
@@ -122,8 +121,6 @@ def _solve(
                     groups += 1
                 g = name[top]
                 group[triangles[t, k]] = g
-                if tri_side[t] == 0:
-                    continue
                 tx, ty, tz = np.float64(tri_tangent[t, 0]), np.float64(tri_tangent[t, 1]), np.float64(tri_tangent[t, 2])
                 lean = tx * nx + ty * ny + tz * nz
                 tx, ty, tz = tx - nx * lean, ty - ny * lean, tz - nz * lean
@@ -164,7 +161,7 @@ def _sort_ring(kind: Array, ring: Array, begin: int, size: int) -> None:
                 place += 1
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, inline="always")
 def _angle_in_plane(points: Array, p: int, before: int, after: int, nx: float, ny: float, nz: float) -> float:
     """The angle at p between two edges laid into the plane of a normal, radians."""
     ax, ay, az = edge(points, p, before)
