@@ -32,12 +32,17 @@ def unpack(file: InputFile, document: dict[str, Any], buffers: list[Array]) -> b
     accessors = Accessors(file, document, buffers)
     for place, primitive in packed:
         _primitive(file, place, document, primitive, accessors)
+    unlist(document, NAME)
+    return True
+
+
+def unlist(document: dict[str, Any], name: str) -> None:
+    """Take an extension from the lists of those that the document uses and requires."""
     for field in ("extensionsUsed", "extensionsRequired"):
-        if NAME in document.get(field, []):
-            document[field].remove(NAME)
+        if name in document.get(field, []):
+            document[field].remove(name)
             if not document[field]:
                 del document[field]
-    return True
 
 
 def _primitive(

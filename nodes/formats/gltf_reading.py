@@ -6,9 +6,9 @@ import json
 from typing import Any
 
 import numpy as np
+from tangentry.nodes.formats import gltf_draco, gltf_meshopt
 from tangentry.nodes.formats.gltf_accessors import Accessors
 from tangentry.nodes.formats.gltf_container import DATA_URI, EXPORT_AGAIN, read_container, resolve, side_file
-from tangentry.nodes.formats.gltf_draco import NOTE, unpack
 from tangentry.nodes.formats.gltf_shape import check_texture
 from tangentry.nodes.model import Asset, Document, Frames, Image, MapUse, Material, Morph, Part, Stream
 from tangentry.pipeline.errors import InputError
@@ -16,10 +16,7 @@ from tangentry.pipeline.flow import Array, InputFile
 
 TRIANGLES, STRIP, FAN = 4, 5, 6
 MODES = {0: "points", 1: "lines", 2: "line loops", 3: "line strips"}
-PACKED = {
-    "EXT_meshopt_compression": "meshopt",
-    "KHR_meshopt_compression": "meshopt",
-}
+UNPACKING = ((gltf_meshopt.unpack, gltf_meshopt.NOTE), (gltf_draco.unpack, gltf_draco.NOTE))
 UNDERSTOOD = frozenset(
     {"KHR_mesh_quantization", "KHR_texture_transform", "KHR_materials_variants", "EXT_mesh_gpu_instancing"}
 )
@@ -36,7 +33,7 @@ def read_gltf(file: InputFile) -> Asset:
     name for extensions that hold vertex data in a form that is not read.
     """
     document, buffers = read_container(file)
-    unpacked = unpack(file, document, buffers)
+    unpacked = [note for unpack, note in UNPACKING if unpack(file, document, buffers)]
     _refuse_packed(file, document)
     accessors = Accessors(file, document, buffers)
     for number in range(len(accessors.views)):
@@ -48,7 +45,7 @@ def read_gltf(file: InputFile) -> Asset:
     parts: list[Part] = []
     required = [name for name in document.get("extensionsRequired", []) if name not in UNDERSTOOD]
     notes = [f"the extension {name}, which the file requires, is carried through as it is" for name in required]
-    notes += [NOTE] if unpacked else []
+    notes += unpacked
     for m, mesh in enumerate(document.get("meshes", [])):
         for p, primitive in enumerate(mesh.get("primitives", [])):
             mode = primitive.get("mode", TRIANGLES)
@@ -73,16 +70,11 @@ def read_gltf(file: InputFile) -> Asset:
 
 def _refuse_packed(file: InputFile, document: dict[str, Any]) -> None:
     """Raise InputError for extensions by which vertex data is held in a form of its own."""
-    named = {*document.get("extensionsRequired", []), *document.get("extensionsUsed", [])}
     primitives = [one for mesh in document.get("meshes", []) for one in mesh.get("primitives", [])]
     holders = [*primitives, *document.get("accessors", []), *document.get("bufferViews", [])]
     held = {name for one in holders for name in one.get("extensions", {})} - UNDERSTOOD
-    for name in sorted(named):
-        if name in PACKED:
-            raise InputError(
-                file, name, f"{PACKED[name]}-compressed meshes are not read", "export without mesh compression"
-            )
-        if name in held and name in document.get("extensionsRequired", []):
+    for name in document.get("extensionsRequired", []):
+        if name in held:
             raise InputError(file, name, "the file requires it for its vertex data, and it is not read", EXPORT_AGAIN)
 
 

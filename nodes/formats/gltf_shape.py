@@ -37,7 +37,7 @@ SHAPE = {
     "asset": {"version": TEXT},
     "extensionsUsed": [TEXT],
     "extensionsRequired": [TEXT],
-    "buffers": [{"uri": TEXT, "byteLength": WHOLE}],
+    "buffers": [{"uri": TEXT, "byteLength": WHOLE, "extensions": EXTENSIONS}],
     "bufferViews": [
         {"buffer": WHOLE, "byteOffset": WHOLE, "byteLength": WHOLE, "byteStride": WHOLE, "extensions": EXTENSIONS}
     ],
