@@ -25,7 +25,7 @@ def read_obj(file: InputFile) -> Asset:
         what = "there are lines or points, but no faces in it" if found.skipped else "there are no faces in it"
         raise InputError(file, "", what, "export the mesh with its faces")
     materials = Materials(file)
-    owner, keys, smoothing = _owners(found, materials)
+    owner, keys, smoothing = _owners(found, materials, file.stem)
     notes = [f"{found.skipped} lines, curves or other statements passed over"] if found.skipped else []
     parts = []
     for row, faces in grouped(owner):
@@ -35,26 +35,32 @@ def read_obj(file: InputFile) -> Asset:
     )
 
 
-def _owners(found: Statements, materials: Materials) -> tuple[Array, list[tuple[str, int]], Array | None]:
-    """The part of each face, what each part is called, and the smoothing groups if there are any."""
+def _owners(found: Statements, materials: Materials, stem: str) -> tuple[Array, list[tuple[str, int]], Array | None]:
+    """The part of each face, each part's object (the file's stem before any) and material, and smoothing groups."""
     faces = len(found.starts) - 1
     owner, smoothing = np.zeros(faces, np.int32), np.zeros(faces, np.int32)
     keys: dict[tuple[str, int], int] = {}
-    name, material, smooth, group, begun = "", -1, False, 0, 0
+    name, material, smooth, group, begun = stem, -1, False, 0, 0
     for at, keyword, rest in [*found.words, (faces, "", "")]:
         if at > begun:
             owner[begun:at] = keys.setdefault((name, material), len(keys))
             smoothing[begun:at] = group
             begun = at
         if keyword == "o":
-            name = rest
+            name = rest or stem
         elif keyword == "usemtl":
             material = materials.row(rest)
         elif keyword == "mtllib":
             _libraries(rest, materials)
         elif keyword == "s":
-            smooth, group = True, int(rest) if rest.isdigit() and len(rest) < 10 else 0
+            smooth, group = True, _group(rest)
     return owner, list(keys), smoothing if smooth else None
+
+
+def _group(words: str) -> int:
+    """A smoothing group; 0 for `off` and whatever else is no number."""
+    word = words.split()[0] if words else ""
+    return int(word) if word.isdecimal() and len(word) < 10 else 0
 
 
 def _libraries(names: str, materials: Materials) -> None:

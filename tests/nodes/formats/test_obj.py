@@ -106,6 +106,19 @@ def test_objects_and_materials_divide_parts_and_groups_do_not(read):
     assert shown == [("quay", "stone", 2), ("quay", "rope", 1), ("pile", "rope", 1), ("pile", "stone", 1)]
 
 
+def test_faces_before_any_object_are_named_after_the_file(read):
+    parts = read(PYRAMID + "g deck\nf 1 2 3\no quay\nf 1 3 4\no\nf 1 2 5\n")[0].parts
+
+    assert [(part.name, part.face_count) for part in parts] == [("pier", 2), ("quay", 1)]
+
+
+@pytest.mark.parametrize(
+    ("written", "group"), [("2", 2), ("off", 0), ("3 # deck", 3), ("\u00b2", 0), ("-1", 0), ("", 0)]
+)
+def test_smoothing_groups_are_numbers_or_off(read, written, group):
+    assert_array_equal(read(SQUARE + f"s {written}\nf 1 2 3\n")[0].parts[0].smoothing, [group])
+
+
 def test_each_part_holds_only_the_rows_it_uses(read):
     parts = read(PYRAMID + "usemtl a\nf 1 2 3\nusemtl b\nf 3 4 5\n")[0].parts
 
