@@ -61,7 +61,7 @@ class _Editing:
         """Take the data of accessors that nothing uses any more; their numbers stay, lest others change."""
         for number, uses in self.uses.items():
             if uses == 0:
-                for name in ("bufferView", "byteOffset", "sparse"):
+                for name in ("bufferView", "byteOffset", "sparse", "min", "max"):
                     self.builder.list("accessors")[number].pop(name, None)
 
     def _changed(self, part: Part, attributes: dict[str, int]) -> dict[str, Stream]:

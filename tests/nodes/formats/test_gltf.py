@@ -7,9 +7,10 @@ import json
 
 import numpy as np
 import pytest
-from gltf_files import KINDS, PIXEL, Making, data_uri, meaning
+from gltf_files import CODES, KINDS, PIXEL, Making, data_uri, meaning
 from numpy.testing import assert_allclose
 from tangentry.nodes.export import export
+from tangentry.nodes.formats.gltf_builder import Builder
 from tangentry.nodes.frames import frames
 from tangentry.nodes.load import load
 from tangentry.nodes.model import Map, Sheet
@@ -343,6 +344,60 @@ def test_a_split_carries_everything_along(made, exported):
     assert index.dtype == np.uint8 and (np.array(source)[index] == values(before, old["indices"])[:, 0]).all()
     assert values(after, new["attributes"]["TANGENT"])[:, 3].tolist() == [1, 1, 1, 1, -1, -1, -1, -1]
     assert after["accessors"][new["attributes"]["POSITION"]]["max"] == [2, 1, 0]
+
+
+def at_corners(document: dict, primitive: dict) -> dict:
+    """What a primitive of triangles shows at its corners, but for tangents."""
+    count = document["accessors"][primitive["attributes"]["POSITION"]]["count"]
+    index = values(document, primitive["indices"])[:, 0] if "indices" in primitive else np.arange(count)
+    named = [primitive["attributes"], *primitive.get("targets", [])]
+    return {
+        (t, name): values(document, number)[index].tobytes()
+        for t, attributes in enumerate(named)
+        for name, number in attributes.items()
+        if name != "TANGENT"
+    }
+
+
+def test_samples_show_at_every_corner_what_they_showed_and_nothing_else_changes(samples, exported):
+    splits = 0
+    for path in sorted([*samples.rglob("*.glb"), *samples.rglob("*.gltf")]):
+        try:
+            asset = load(str(path))
+        except InputError:
+            continue  # refusals are the business of other tests
+        if any("unpacked" in note for note in asset.notes):
+            continue
+        solved = frames(split(asset), stored="replace", where="all")
+        before, after = meaning(path), meaning(exported(solved, "b.glb"))
+        old, new = ([one for mesh in document["meshes"] for one in mesh["primitives"]] for document in (before, after))
+        for one, other in zip(old, new, strict=True):
+            shown, wanted = at_corners(after, other), at_corners(before, one)
+            assert {key: shown[key] for key in wanted} == wanted, path
+            assert set(shown) - set(wanted) <= {(0, "NORMAL")}, path
+            counts = [
+                document["accessors"][part["attributes"]["POSITION"]]["count"]
+                for document, part in ((before, one), (after, other))
+            ]
+            splits += counts[0] != counts[1]
+        for document in (before, after):
+            del document["accessors"], document["meshes"]
+        assert after == before, path
+
+    assert splits > 3
+
+
+@pytest.mark.parametrize(
+    ("vertices", "was", "kind"),
+    [(255, "u1", "u1"), (256, "u1", "u2"), (255, "u4", "u2"), (65535, "u2", "u2"), (65536, "u2", "u4")],
+)
+def test_indices_are_of_the_smallest_type_that_holds_them(vertices, was, kind):
+    """The largest number of a type is no vertex: it would restart the primitive (glTF 2.0, 3.7.2.1). Bytes only where
+    there were bytes: other files are better off with shorts."""
+    builder = Builder("float", {"accessors": [{"componentType": CODES[was]}]})
+
+    assert builder.indices(np.array([0, 1, vertices - 1]), vertices, replaces=0) == 0
+    assert builder.list("accessors")[0]["componentType"] == CODES[kind]
 
 
 def test_morph_targets_whose_normals_move_get_tangent_displacements(made, exported):
