@@ -11,7 +11,7 @@ from tangentry.pipeline.errors import InputError
 def encode(
     map: Map,
     *,
-    encoding: Literal["unorm", "snorm", "xy", "octahedral", "float"] = "unorm",
+    encoding: Literal["unorm", "snorm", "xy", "octahedral", "hemi-octahedral", "float"] = "unorm",
     bits: Literal[8, 16] = 8,
     green: Literal["up", "down"] = "up",
     dither: Literal["none", "diffused"] = "none",
@@ -19,15 +19,16 @@ def encode(
     """The normal maps in one encoding; sheets that hold no normals are passed on as they are.
 
     encoding  unorm: three channels, -1..1 over all codes; snorm: offset by half, 0 exact; xy: two channels, z rebuilt
-              by the decoder; octahedral: two channels (Cigolle et al. 2014); float: as they are
+              by the decoder; octahedral: two channels (Cigolle et al. 2014), hemi-octahedral: likewise, finer, for
+              normals that face outward; float: as they are
     bits      of each channel
     green     up: y grows up the image, as glTF 2.0 has it; down
     dither    diffused: what rounding loses is handed on to the texels that follow (Floyd & Steinberg 1976), so that
               gentle slopes show no steps; not for octahedral codes
 
     Where only green changes, codes are flipped exactly. Angles lost, over all directions: at most 0.39 degrees for 8
-    bits unorm or snorm, 0.0015 for 16; 0.64 and 0.0025 octahedral; 5.8 and 0.4 for xy, near the rim. Raises InputError
-    where a map's green is undecided.
+    bits unorm or snorm, 0.0015 for 16; 0.64 and 0.0025 octahedral, 0.55 in 8 bits
+    hemi-octahedral; 5.8 and 0.4 for xy, near the rim. Raises InputError where a map's green is undecided.
     """
     return Map(
         tuple(

@@ -15,7 +15,7 @@ def texture(
     file: InputFile | str | None = None,
     holds: Literal["normal", "height", "colour", "data"] = "normal",
     green: Literal["up", "down", "measure"] = "up",
-    encoding: Literal["unorm", "snorm", "xy", "octahedral"] = "unorm",
+    encoding: Literal["unorm", "snorm", "xy", "octahedral", "hemi-octahedral"] = "unorm",
     if_missing: Literal["fail", "skip"] = "fail",
 ) -> Map | None:
     """A map from an image file, or the maps that an asset's materials name.
@@ -45,8 +45,9 @@ def texture(
 
 def _normals(material: str, texels: Array, name: str, tag: str, green: str, encoding: str) -> Sheet:
     from tangentry.nodes.maps.conventions import measure_green
+    from tangentry.nodes.maps.encodings import channels_of
 
-    if texels.shape[2] < (2 if encoding in ("xy", "octahedral") else 3):
+    if texels.shape[2] < channels_of(encoding):
         raise InputError(
             name, "", f"{texels.shape[2]} channels can't hold normals", "is it a height map? then holds: height"
         )

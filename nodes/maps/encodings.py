@@ -1,10 +1,11 @@
 """Unit normals as texel codes, and back.
 
-    unorm       -1..1 over the whole range of codes, in three channels: c = (n + 1) / 2 * most
-    snorm       codes offset by half: 128 (32768) is exactly 0
-    xy          two channels as unorm; z is rebuilt: sqrt(1 - x^2 - y^2)
-    octahedral  two channels, the octahedron unfolded, the nearest code of four (Cigolle et al. 2014)
-    float       three float32 channels, as they are
+    unorm            -1..1 over the whole range of codes, in three channels: c = (n + 1) / 2 * most
+    snorm            codes offset by half: 128 (32768) is exactly 0
+    xy               two channels as unorm; z is rebuilt: sqrt(1 - x^2 - y^2)
+    octahedral       two channels, the octahedron unfolded, the nearest code of four (Cigolle et al. 2014)
+    hemi-octahedral  two channels, its upper half alone over the whole square (likewise); z below 0 becomes 0
+    float            three float32 channels, as they are
 
 Green up stores y as it is; green down stores -y.
 """
@@ -20,7 +21,8 @@ from tangentry.nodes.model import Sheet
 from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array
 
-ENCODINGS = ("unorm", "snorm", "xy", "octahedral", "float")
+ENCODINGS = ("unorm", "snorm", "xy", "octahedral", "hemi-octahedral", "float")
+TWO_CHANNELS = ("xy", "octahedral", "hemi-octahedral")
 BAND = 256  # rows worked on at a time, an even number: every other row is diffused backward
 DOWN = np.array([1, -1, 1], np.float32)
 AHEAD = np.array([0, 0, 1], np.float32)
@@ -45,16 +47,24 @@ def encode_normals(normals: Array, encoding: str, bits: int, green: str, lost: A
     if encoding == "octahedral":
         codes = octahedral_codes(normals.reshape(-1, 3), top).reshape(*normals.shape[:2], 2)
     else:
-        components = normals[..., : channels_of(encoding)].astype(np.float64)
+        components = _hemi_octahedral(normals) if encoding == "hemi-octahedral" else normals
+        components = components[..., : channels_of(encoding)].astype(np.float64)
         codes = components * (top // 2) + top // 2 + 1 if encoding == "snorm" else (components + 1) / 2 * top
         if lost is not None:
             _diffuse(codes, float(top), lost)
     return np.clip(np.rint(codes), 0, top).astype(np.uint8 if bits == 8 else np.uint16)
 
 
+def _hemi_octahedral(normals: Array) -> Array:
+    """(height, width, 2), -1..1: the diamond |x| + |y| <= 1 turned by 45 degrees to fill the square."""
+    total = np.abs(normals[..., 0]) + np.abs(normals[..., 1]) + np.maximum(normals[..., 2], 0)
+    x, y = (normals[..., k] / np.where(total > 0, total, 1) for k in (0, 1))
+    return np.stack([x + y, x - y], axis=-1)
+
+
 def channels_of(encoding: str) -> int:
     """How many channels an encoding takes."""
-    return 2 if encoding in ("xy", "octahedral") else 3
+    return 2 if encoding in TWO_CHANNELS else 3
 
 
 @njit(cache=True, nogil=True)
@@ -102,6 +112,9 @@ def _directions(texels: Array, encoding: str, top: int) -> Array:
         half = top // 2
         return (texels[..., :3].astype(np.float32) - np.float32(half + 1)) / np.float32(half)
     normals = texels[..., :3].astype(np.float32) * np.float32(2 / top) - 1
+    if encoding == "hemi-octahedral":
+        diamond = np.stack([normals[..., 0] + normals[..., 1], normals[..., 0] - normals[..., 1]], axis=-1) / 2
+        return np.concatenate([diamond, 1 - np.abs(diamond).sum(axis=-1, keepdims=True)], axis=-1)
     if encoding == "xy" or normals.shape[2] == 2:
         x, y = normals[..., 0], normals[..., 1]
         return np.stack([x, y, np.sqrt(np.maximum(0, 1 - x * x - y * y))], axis=-1)

@@ -14,9 +14,7 @@ class Sheet:
     holds: str  # "normal", "height", "colour", "data"
     space: str = ""  # of normals: "tangent", "object" or "world"
     green: str = ""  # of tangent-space normals: "up" (y grows up the image), "down" or "undecided"
-    encoding: str = (
-        "unorm"  # "unorm": -1..1 over the code range; "snorm"; "xy": z rebuilt; "octahedral"; "float": as is
-    )
+    encoding: str = "unorm"  # or "snorm", "xy", "octahedral", "hemi-octahedral", "float": see maps/encodings.py
     name: str = ""  # where it came from, for messages
     tagged: str = ""  # what its file says of itself: "sRGB" (a colour profile), "lossy", or nothing
     level: int = 0  # of a mip chain: 0 is the map itself

@@ -23,7 +23,9 @@ def bumps(size: int = 64) -> Map:
 
 @pytest.mark.parametrize("green", ["up", "down"])
 @pytest.mark.parametrize("bits", [8, 16])
-@pytest.mark.parametrize(("encoding", "channels"), [("unorm", 3), ("snorm", 3), ("xy", 2), ("octahedral", 2)])
+@pytest.mark.parametrize(
+    ("encoding", "channels"), [("unorm", 3), ("snorm", 3), ("xy", 2), ("octahedral", 2), ("hemi-octahedral", 2)]
+)
 def test_there_and_back_returns(encoding, channels, bits, green):
     coded = encode(bumps(), encoding=encoding, bits=bits, green=green)
     sheet = coded.sheets[0]

@@ -5,7 +5,10 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+from tangentry.nodes.formats.images import read_image
 from tangentry.nodes.maps.encodings import decode_texels, encode_normals
+from tangentry.nodes.model import Map, Sheet
+from tangentry.nodes.write import write
 
 
 @pytest.fixture(scope="module")
@@ -30,6 +33,7 @@ def apart(one, other):
         ("unorm", 16, 0.000660, 0.001235, 0.001499),
         ("octahedral", 8, 0.31471, 0.55529, 0.63518),
         ("octahedral", 16, 0.001219, 0.002150, 0.002454),
+        ("hemi-octahedral", 8, 0.23985, 0.47187, 0.54912),
     ],
 )
 def test_the_error_is_that_of_the_table(normals, encoding, bits, mean, p99, largest):
@@ -56,12 +60,27 @@ def test_octahedral_codes_that_others_merely_rounded_are_read(normals, top, mean
 
 
 def test_rounding_beats_truncating_and_the_offsets_must_agree(normals):
-    """Truncated codes: 0.33980 on average; codes of 127.5 decoded as if of 127 about 128: 0.33943."""
+    """Codes that others truncated; and codes of 127.5 decoded as if of 127 about 128."""
     truncated = np.floor((normals.astype(float) + 1) * 127.5).astype(np.uint8)
     mistaken = decode_texels(encode_normals(normals, "unorm", 8, "up"), "snorm", "up")
 
-    assert apart(decode_texels(truncated, "unorm", "up"), normals).mean() == pytest.approx(0.33980, rel=0.01)
-    assert apart(mistaken, normals).mean() == pytest.approx(0.33943, rel=0.01)
+    for found, figures in (
+        (decode_texels(truncated, "unorm", "up"), (0.33980, 0.63562, 0.76605)),
+        (mistaken, (0.33943, 0.63537, 0.76793)),
+    ):
+        error = apart(found, normals)
+        assert (error.mean(), np.percentile(error, 99), error.max()) == pytest.approx(figures, rel=0.01)
+
+
+def test_halves_in_exr_cost_what_the_table_says(normals):
+    """float16 x, y, z."""
+    pytest.importorskip("OpenEXR", reason="the extra `exr` is not installed")
+    sheet = Sheet("", normals.reshape(1000, 1000, 3), "normal", "tangent", "up", "float")
+    (file,) = write(Map((sheet,)), file="a.exr", half=True).files
+
+    error = apart(decode_texels(read_image(file.content, "a.exr"), "float", "up"), sheet.texels)
+
+    assert (error.mean(), np.percentile(error, 99), error.max()) == pytest.approx((0.00606, 0.01730, 0.02314), rel=0.01)
 
 
 def test_no_error_of_8_bits_exceeds_its_bound(normals):
