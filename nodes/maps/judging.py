@@ -31,7 +31,7 @@ MAP_IDS = (
 )
 GREY = 2 / 255  # by which the channels of a grey texel may differ
 OFF = 0.1  # by which a vector's length may differ from 1
-SRGB_FLAT = (0.735, 0.216)  # what 0.5 becomes when it is taken for linear, and for sRGB, by mistake (IEC 61966-2-1)
+BLOCKS = 1.4  # times that steps across borders of blocks may exceed those within
 
 
 @dataclass(frozen=True)
@@ -109,7 +109,17 @@ def _other_kinds(judged: Judged) -> Iterator[Finding]:
             grey,
             0.98,
         )
-    if judged.varies[2] < 0.004 < judged.varies[:2].min() and _share(np.abs(judged.length - 1) > OFF) > 0.05:
+    srgb = _srgb(judged)
+    if srgb > 0:
+        yield _finding(
+            sheet,
+            "map-srgb",
+            "fault",
+            f"{srgb:.0%} of the normals are not unit until an sRGB curve is undone: they were converted as colours are",
+            "export it as linear data",
+            srgb,
+        )
+    if _two_channels(judged):
         yield _finding(
             sheet,
             "map-two-channel",
@@ -144,7 +154,7 @@ def _vectors(judged: Judged) -> Iterator[Finding]:
             0.0,
         )
     off = _share(np.abs(judged.length - 1) > OFF)
-    if off > 0.02 and not _srgb(judged):
+    if off > 0.02:
         middle = float(np.median(judged.length))
         yield _finding(
             sheet,
@@ -159,15 +169,7 @@ def _vectors(judged: Judged) -> Iterator[Finding]:
 
 def _codes(judged: Judged) -> Iterator[Finding]:
     sheet = judged.sheet
-    if _srgb(judged):
-        yield _finding(
-            sheet,
-            "map-srgb",
-            "fault",
-            f"flat is ({judged.flat[0]:.3f}, {judged.flat[1]:.3f}), not 0.5: sRGB was taken for linear, or the reverse",
-            "export it as linear data",
-        )
-    elif sheet.texels.dtype == np.uint8 and (np.abs(judged.flat * 255 - 127.5) < 4).all():
+    if sheet.texels.dtype == np.uint8 and (np.abs(judged.flat * 255 - 127.5) < 4).all():
         flat = np.rint(judged.flat * 255).astype(int)
         if (flat != 128).any() and _share((sheet.texels[..., :2] == flat).all(axis=2)) > 0.05:
             yield _finding(
@@ -178,7 +180,7 @@ def _codes(judged: Judged) -> Iterator[Finding]:
                 "round codes when exporting",
             )
     ratio, size = _blocks(judged.codes)
-    if ratio > 1.6:
+    if ratio > BLOCKS:
         yield _finding(
             sheet,
             "map-blocky",
@@ -186,14 +188,42 @@ def _codes(judged: Judged) -> Iterator[Finding]:
             f"steps between blocks of {size} x {size} are {ratio:.2f} times those within them",
             "export it from its source without compression",
             ratio,
-            1.6,
+            BLOCKS,
         )
 
 
-def _srgb(judged: Judged) -> bool:
-    return any((np.abs(judged.flat - value) < 0.02).all() for value in SRGB_FLAT) and (
-        _share((np.abs(judged.codes[..., :2] - judged.flat) < 0.01).all(axis=2)) > 0.05
-    )
+def _srgb(judged: Judged) -> float:
+    """The share of texels that are no unit normals, if undoing an sRGB curve makes them so and centres them; else 0."""
+    off = _share(np.abs(judged.length - 1) > OFF)
+    if off < 0.5:
+        return 0.0
+    for curve in (_linear, _encoded):
+        vectors = curve(np.clip(judged.codes, 0, 1)) * 2 - 1
+        length = np.sqrt(np.einsum("...i,...i->...", vectors, vectors))
+        centred = (np.abs(vectors[..., :2].mean(axis=(0, 1))) < 0.15).all()
+        if centred and _share(np.abs(length - 1) > OFF) < 0.4 * off:
+            return off
+    return 0.0
+
+
+def _encoded(x: Array) -> Array:
+    """IEC 61966-2-1, linear 0..1 to sRGB."""
+    return np.where(x <= 0.0031308, 12.92 * x, 1.055 * x ** np.float32(1 / 2.4) - 0.055)
+
+
+def _linear(x: Array) -> Array:
+    """Its inverse."""
+    return np.where(x <= 0.04045, x / 12.92, ((x + 0.055) / 1.055) ** np.float32(2.4))
+
+
+def _two_channels(judged: Judged) -> bool:
+    """Is blue empty, half or full everywhere, though red and green ask for another z?"""
+    blue = float(judged.codes[..., 2].mean(dtype=np.float64))
+    if judged.varies[2] >= 0.004 or judged.varies[:2].max() < 0.004 or min(abs(blue - k) for k in (0, 0.5, 1)) > 0.02:
+        return False
+    x, y = judged.vectors[..., 0], judged.vectors[..., 1]
+    z = np.sqrt(np.maximum(0, 1 - x * x - y * y))
+    return bool(z.std() > 0.016 or abs(float(z.mean()) - (2 * blue - 1)) > 0.2)
 
 
 def _blocks(codes: Array) -> tuple[float, int]:

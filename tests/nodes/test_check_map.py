@@ -52,6 +52,13 @@ def backward() -> np.ndarray:
     return values
 
 
+def steep() -> np.ndarray:
+    """Unit normals that lean everywhere, and everywhere else."""
+    x, y = np.meshgrid(np.arange(128) / 7, np.arange(128)[::-1] / 9)
+    normals = np.stack([np.cos(x) * np.sin(y) / 7 * 9, np.sin(x) * np.cos(y), 0.7 * np.ones_like(x)], axis=2)
+    return normals / np.linalg.norm(normals, axis=2, keepdims=True)
+
+
 LINEAR = (codes(vectors()) / 255.0).astype(float)
 SRGB = np.where(LINEAR <= 0.0031308, 12.92 * LINEAR, 1.055 * LINEAR ** (1 / 2.4) - 0.055)
 GREY = np.repeat(codes(vectors())[..., :1], 3, axis=2)
@@ -69,6 +76,26 @@ SPOILT = {
     "map-green-contradicted": sheet(codes(vectors()), green="down"),
     "map-green-undecided": sheet(codes(vectors()), green="undecided"),
 }
+
+
+def test_an_srgb_mistake_is_told_on_maps_without_flat_ground_too():
+    linear = codes(steep()) / 255
+    spoilt = np.rint(np.where(linear <= 0.0031308, 12.92 * linear, 1.055 * linear ** (1 / 2.4) - 0.055) * 255)
+
+    assert set(found(sheet(codes(steep())))) == set()
+    assert set(found(sheet(spoilt.astype(np.uint8)))) == {"map-srgb"}
+
+
+@pytest.mark.parametrize("blue", [0, 128, 255])
+def test_two_channels_are_told_whatever_blue_is_filled_with(blue):
+    texels = codes(steep())
+    texels[..., 2] = blue
+
+    assert set(found(sheet(texels))) == {"map-two-channel"}
+
+
+def test_a_flat_map_is_not_taken_for_two_channels():
+    assert found(sheet(np.full((64, 64, 3), (128, 128, 255), np.uint8))) == {}
 
 
 def test_a_sound_map_has_no_findings():
