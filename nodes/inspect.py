@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import numpy as np
-from tangentry.nodes.model import Asset, Part
+from tangentry.nodes.model import Asset, Part, Sheet
 from tangentry.pipeline.flow import Array, Findings, InputFile
 
 Facts = dict[str, float | str]
@@ -12,7 +12,7 @@ Facts = dict[str, float | str]
 def inspect(file: InputFile | str) -> Findings:
     """The facts of a mesh or an image file, and what the checks find on a mesh.
 
-    file  OBJ, PLY, glTF or GLB; PNG, JPEG, WebP or TIFF
+    file  OBJ, PLY, glTF or GLB; PNG, JPEG, WebP, TIFF or EXR
 
     Raises InputError where the file can't be read.
     """
@@ -30,9 +30,10 @@ def inspect(file: InputFile | str) -> Findings:
 
 
 def _image_facts(name: str, content: Array) -> Facts:
-    from tangentry.nodes.formats.image_headers import read_header
+    from tangentry.nodes.formats.image_headers import read_header, tag_of
     from tangentry.nodes.formats.images import read_image
     from tangentry.nodes.maps.conventions import measure_green
+    from tangentry.nodes.maps.judging import map_findings
 
     texels = read_image(content, name)
     facts: Facts = {
@@ -52,6 +53,8 @@ def _image_facts(name: str, content: Array) -> Facts:
         green = measure_green(texels)
         facts["length as normals"] = f"median {middle:.3f}, 5 % below {low:.3f}, 5 % above {high:.3f}"
         facts["green as normals"] = f"{green.verdict} (correlation {green.correlation:.3f})"
+        sheet = Sheet("", texels, "normal", "tangent", green.verdict, name=name, tagged=tag_of(content))
+        facts |= {f"as normals, {item.id}": item.what for item in map_findings(sheet)}
     return facts
 
 

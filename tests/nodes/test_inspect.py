@@ -69,3 +69,14 @@ def test_what_is_no_mesh_and_no_image_is_refused(tmp_path):
 
     with pytest.raises(InputError, match=r"notes\.txt"):
         inspect(str(tmp_path / "notes.txt"))
+
+
+def test_what_spoils_an_image_as_a_normal_map_is_told(tmp_path):
+    """Grey texels are heights."""
+    grey = np.random.default_rng(0).integers(0, 256, (32, 32, 1), np.uint8).repeat(3, axis=2)
+    (tmp_path / "grey.png").write_bytes(write_png(grey).tobytes())
+
+    found = inspect(str(tmp_path / "grey.png"))
+
+    assert found.facts["as normals, map-height"] == "100% of the texels are grey: it is a height map"
+    assert found.verdict == "sound"  # nobody said that it is to be a normal map
