@@ -35,9 +35,9 @@ def facts_of(views: list[View]) -> Facts:
 
 
 def _spread(views: list[View]) -> Facts:
-    if not views:
-        return {}
     rows = [_rows(view) for view in views]
+    if not any(len(area) for _, _, area, _ in rows):  # nothing has an area and a chart
+        return {}
     greatest, least, area, uv_area = (np.concatenate(column) for column in zip(*rows, strict=True))
     mean, longest = stretch_of(greatest, least, area, uv_area, np.zeros(len(area), np.int32))
     density = np.concatenate([density_of(view) for view in views])

@@ -56,6 +56,8 @@ def _lies_on(places: Array, p: int, a: int, b: int, near: float) -> bool:
         d = places[b, k] - places[a, k]
         along += d * (places[p, k] - places[a, k])
         square += d * d
+    if square == 0.0:  # both ends so far out that they were drawn to one place
+        return False
     t = along / square
     if not (near < t < 1 - near):
         return False

@@ -7,6 +7,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from numpy.testing import assert_array_equal
+from tangentry.nodes.check import check
 from tangentry.nodes.formats.images import write_png
 from tangentry.nodes.frames import frames
 from tangentry.nodes.load import load
@@ -114,6 +115,25 @@ def test_a_polygon_of_a_hundred_thousand_corners_is_solved(tmp_path):
 
     assert part.corner_count == count
     assert np.abs(part.frames.tangents - (1, 0, 0)).max() < 1e-4
+
+
+FLAT = "vt 0 0\nvt 1 0\nvt 1 1\nf 1/1 2/2 3/3\n"
+
+
+@pytest.mark.parametrize(
+    "text",
+    [
+        "v 0 0 0\nv 1 0 0\nv 1 1 0\nv 3e38 0 0\nv 3e38 1 0\nv 2e38 5 0\n" + FLAT + "f 4/1 5/2 6/3\n",
+        "v 1e38 0 0\nv 1e38 1 0\nv 1e38 2 3\n" + FLAT,
+        "v 0 0 0\nv 1 0 0\nv 2 0 0\n" + FLAT,
+        "v 0 0 0\nv 0 0 0\nv 0 0 0\n" + FLAT,
+    ],
+    ids=["some far away", "all far away", "in a line", "in one place"],
+)
+def test_faces_without_area_or_beyond_all_measure_are_checked(tmp_path, text):
+    asset = read(tmp_path, text)
+
+    assert check(asset).facts["faces"] == asset.parts[0].face_count
 
 
 def test_a_line_without_end_is_read(tmp_path):
