@@ -27,7 +27,8 @@ def check_map(
     Told are: maps that are something else (heights, object space, two channels), normals that are not unit or point
     into the surface, an sRGB mistake, losses and blocks of a compression, a flat colour off 128, and green that points
     the other way than was stated. `made_from` is the map before it was encoded: the angle between the two is told as
-    mean and largest. Raises InputError for an id that no finding has.
+    mean and largest; or the heights that it came from: then only sizes are compared. Raises InputError for an id that
+    no finding has.
     """
     from tangentry.nodes.checks.ids import refuse_unknown
     from tangentry.nodes.maps.judging import MAP_IDS, map_findings
@@ -40,7 +41,9 @@ def check_map(
     for sheet in (one for one in map.sheets if one.holds == "normal"):
         found += map_findings(sheet)
         before = _before(sheet, made_from)
-        if before is not None:
+        if before is not None and before.texels.shape[:2] != sheet.texels.shape[:2]:
+            found.append(_mismatch(sheet, before))
+        elif before is not None and before.holds == "normal":
             found.append(_error(sheet, before, lost))
         facts |= {f"{sheet.material or 'map'}: size": f"{sheet.texels.shape[1]} x {sheet.texels.shape[0]}"}
     judged = (
@@ -53,12 +56,22 @@ def check_map(
 
 def _before(sheet: Sheet, made_from: Map | None) -> Sheet | None:
     sheets = made_from.sheets if made_from is not None else ()
-    return next(
-        (
-            one
-            for one in sheets
-            if (one.material, one.level, one.texels.shape[:2]) == (sheet.material, sheet.level, sheet.texels.shape[:2])
-        ),
+    return next((one for one in sheets if (one.material, one.level) == (sheet.material, sheet.level)), None)
+
+
+def _mismatch(sheet: Sheet, before: Sheet) -> Finding:
+    (height, width), (rows, columns) = sheet.texels.shape[:2], before.texels.shape[:2]
+    return Finding(
+        "map-size",
+        "warning",
+        1,
+        f"it has {width} x {height} texels, what it was made from {columns} x {rows}",
+        "make it at the size of its source",
+        sheet.name,
+        sheet.material,
+        "",
+        np.zeros(0, np.int32),
+        np.zeros(0, np.float32),
         None,
     )
 

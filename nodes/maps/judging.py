@@ -27,6 +27,7 @@ MAP_IDS = (
     "map-flat-offset",
     "map-green-contradicted",
     "map-green-undecided",
+    "map-size",
     "map-error",
 )
 GREY = 2 / 255  # by which the channels of a grey texel may differ

@@ -125,6 +125,21 @@ def test_what_was_lost_beyond_the_limit_is_a_warning():
     assert item.severity == "warning" and item.count > 1000
 
 
+@pytest.mark.parametrize(("holds", "channels"), [("normal", 3), ("height", 1)])
+def test_a_size_other_than_that_of_what_it_was_made_from_is_told(holds, channels):
+    before = Map((Sheet("", np.zeros((64, 128, channels), np.float32), holds, encoding="float"),))
+
+    (item,) = check_map(Map((sheet(codes(vectors())),)), before).items
+
+    assert item.id == "map-size" and "128 x 128 texels, what it was made from 128 x 64" in item.what
+
+
+def test_heights_of_the_same_size_are_no_normals_to_compare_with():
+    before = Map((Sheet("", np.zeros((128, 128, 1), np.float32), "height", encoding="float"),))
+
+    assert check_map(Map((sheet(codes(vectors())),)), before).items == ()
+
+
 def test_severities_are_the_projects_and_findings_can_be_accepted():
     spoilt = SPOILT["map-lossy"]
 
