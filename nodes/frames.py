@@ -101,7 +101,7 @@ def _moved(part: Part, morph: Morph, stream: Stream, v_down: bool, tangents_of: 
         return None
     corner = np.arange(part.corner_count, dtype=np.int32)
     points = part.points.values[part.points.index]
-    normal = part.normals.values[part.normals.index]
+    normal = part.normals.values[part.normals.index].astype(np.float64)  # displacements may be of any size
     if morph.points is not None:
         points = points + morph.points[part.source]
     if morph.normals is not None:

@@ -194,6 +194,7 @@ class _Primitive:
                 self.file, f"{self.place}, vertex {vertex}", f"its position is {points[vertex].tolist()}", EXPORT_AGAIN
             )
         self.count = len(points)
+        self._check_counts()
         index = self._corners()
         normals = self._attribute("NORMAL", (3,))
         uvs = self._sets("TEXCOORD", (2,))
@@ -214,6 +215,15 @@ class _Primitive:
             self.at,
         )
 
+    def _check_counts(self) -> None:
+        """Those that are only carried along too: a split takes them apart vertex by vertex."""
+        for attributes in (self.attributes, *self.primitive.get("targets", ())):
+            for name, number in attributes.items():
+                place = f"{self.place}, {name}"
+                count = self.accessors.entry(number, place).get("count", 0)
+                if count != self.count:
+                    raise InputError(self.file, place, f"{count} elements, but POSITION has {self.count}", EXPORT_AGAIN)
+
     def _attribute(self, name: str, widths: tuple[int, ...]) -> Array | None:
         if name not in self.attributes:
             return None
@@ -223,8 +233,6 @@ class _Primitive:
             raise InputError(
                 self.file, place, "its accessor is not of the type that this attribute needs", EXPORT_AGAIN
             )
-        if name != "POSITION" and len(values) != self.count:
-            raise InputError(self.file, place, f"{len(values)} elements, but POSITION has {self.count}", EXPORT_AGAIN)
         return values
 
     def _sets(self, stem: str, widths: tuple[int, ...]) -> list[Array]:

@@ -151,6 +151,17 @@ def test_what_is_wrong_is_said(tmp_path, text, told):
         load(str(tmp_path / "a.gltf"))
 
 
+@pytest.mark.parametrize(("place", "name"), [("attributes", "JOINTS_0"), ("attributes", "_WEAR"), ("target", "NORMAL")])
+def test_what_is_only_carried_along_must_fit_the_vertices_too(tmp_path, place, name):
+    making = square()
+    part = making.json["meshes"][0]["primitives"][0]
+    holder = part["attributes"] if place == "attributes" else part["targets"][0]
+    holder[name] = making.accessor([[0, 0, 0]] * 3, "f4", "VEC3")
+
+    with pytest.raises(InputError, match=f"mesh 0 primitive 0, {name}: 3 elements, but POSITION has 4"):
+        load(str(making.write(tmp_path / "a.glb")))
+
+
 @pytest.mark.parametrize("share", [0, 0.01, 0.3, 0.8, 0.999])
 def test_a_file_that_was_cut_off_is_refused(tmp_path, share):
     content = square().write(tmp_path / "a.glb").read_bytes()
