@@ -164,7 +164,7 @@ def compiled(source: str) -> ctypes.CDLL:
     return ctypes.CDLL(str(folder / "loop.so"))
 
 
-def best(*calls: Callable[[], object], runs: int = 7) -> list[float]:
+def best(*calls: Callable[[], object], runs: int) -> list[float]:
     """Seconds of the quickest of several runs of each call, in turn, after one to warm up."""
     taken: list[list[float]] = [[] for _ in calls]
     for _ in range(runs + 1):
@@ -223,7 +223,8 @@ def beside(library: ctypes.CDLL, part: Part, method: str) -> tuple[float, float,
         calls = lambda: library.by_angle(out[0], size, *values, ctypes.c_long(rows), *out[1:])  # noqa: E731
     else:
         calls = lambda: library.by_scheme(size, *values, out[0], out[1], out[3])  # noqa: E731
-    plain, ours = best(calls, lambda: solve_frames(part, part.uvs[0], 0, False, method))
+    runs = max(7, 5_000_000 // count)  # short ones more often: others may be at work on the machine
+    plain, ours = best(calls, lambda: solve_frames(part, part.uvs[0], 0, False, method), runs=runs)
     made = solve_frames(part, part.uvs[0], 0, False, method)
     return plain, ours, float(angle_between(tangent[group], made.tangents[made.index]).max())
 
