@@ -13,10 +13,28 @@ from tangentry.pipeline.flow import Array
 
 MAGIC = b"\x76\x2f\x31\x01"
 ORDER = ("R", "G", "B", "A")
+HEADER = 1 << 20  # bytes in which a header must end
+MOST_SAMPLES = 4 * 16384 * 16384
 
 
 def exr_size(data: bytes, name: str) -> tuple[int, int]:
-    """Width and height, from the dataWindow of the header (OpenEXR file layout, "Header")."""
+    """Width and height, from the header's dataWindow."""
+    left, top, right, bottom = struct.unpack("<4i", _attribute(data, b"dataWindow", name)[:16])
+    return right - left + 1, bottom - top + 1
+
+
+def _channels(data: bytes, name: str) -> list[str]:
+    """Names of the channels, each followed by 16 bytes on how it is stored ("chlist")."""
+    at, found, stored = 0, [], _attribute(data, b"channels", name)
+    while at < len(stored) and stored[at] != 0:
+        end = stored.index(b"\0", at)
+        found.append(stored[at:end].decode("latin-1"))
+        at = end + 17
+    return found
+
+
+def _attribute(data: bytes, wanted: bytes, name: str) -> bytes:
+    """The value of one of the header's attributes (OpenEXR file layout, "Header")."""
     if data[4] != 2 or struct.unpack("<I", data[4:8])[0] >> 8 & 0x18:  # deep data, several parts
         raise InputError(name, "header", "an EXR file of several parts or deep pixels", "save it with one flat part")
     at = 8
@@ -24,16 +42,16 @@ def exr_size(data: bytes, name: str) -> tuple[int, int]:
         end = data.index(b"\0", at)
         kind = data.index(b"\0", end + 1)
         size = struct.unpack("<I", data[kind + 1 : kind + 5])[0]
-        if data[at:end] == b"dataWindow":
-            left, top, right, bottom = struct.unpack("<4i", data[kind + 5 : kind + 21])
-            return right - left + 1, bottom - top + 1
+        if data[at:end] == wanted:
+            return data[kind + 5 : kind + 5 + size]
         at = kind + 5 + size
-    raise InputError(name, "header", "no dataWindow", "the file is damaged or cut off: export it again")
+    raise InputError(name, "header", f"no {wanted.decode()}", "the file is damaged or cut off: export it again")
 
 
 def read_exr(content: Array, name: str) -> Array:
     """The texels, (height, width, channels) float32: R, G, B and A where they are there, else Y, else what there is."""
     library = _library(name)
+    chosen = _chosen(content[:HEADER].tobytes(), name)
     with tempfile.TemporaryDirectory() as folder:
         path = Path(folder) / "image.exr"
         path.write_bytes(content.tobytes())
@@ -44,11 +62,24 @@ def read_exr(content: Array, name: str) -> Array:
             raise InputError(
                 name, "", f"EXR data can't be decoded: {error}", "the file is damaged or cut off: export it again"
             ) from None
-    chosen = [key for key in ORDER if key in found] or (["Y"] if "Y" in found else sorted(found))
-    planes = [found[key] for key in chosen]
-    if not planes or any(plane.shape != planes[0].shape for plane in planes):
+    planes = [found[key] for key in chosen if key in found]
+    if len(planes) < len(chosen) or any(plane.shape != planes[0].shape for plane in planes):
         raise InputError(name, "", "its channels are of different sizes", "save it with channels of one size")
     return np.stack(planes, axis=2).astype(np.float32)
+
+
+def _chosen(data: bytes, name: str) -> list[str]:
+    """The channels that are read. All are decoded, so all count against the limit."""
+    try:
+        (width, height), found = exr_size(data, name), _channels(data, name)
+    except (struct.error, IndexError, ValueError):
+        raise InputError(name, "header", "cut off", "the file is damaged or cut off: export it again") from None
+    chosen = [key for key in ORDER if key in found] or (["Y"] if "Y" in found else sorted(found))
+    if width * height * len(found) > MOST_SAMPLES or not 1 <= len(chosen) <= len(ORDER):
+        raise InputError(
+            name, "header", f"{len(found)} channels of {width} x {height}", "save it with R, G and B, or Y, alone"
+        )
+    return chosen
 
 
 def write_exr(texels: Array, half: bool, name: str) -> Array:

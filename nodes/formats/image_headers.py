@@ -5,7 +5,7 @@ from __future__ import annotations
 import struct
 from typing import NamedTuple
 
-from tangentry.nodes.formats.exr import MAGIC, exr_size
+from tangentry.nodes.formats.exr import HEADER, MAGIC, exr_size
 from tangentry.nodes.formats.tiff_directory import read_directory
 from tangentry.pipeline.errors import InputError
 from tangentry.pipeline.flow import Array
@@ -13,7 +13,6 @@ from tangentry.pipeline.flow import Array
 READ = "PNG, JPEG, WebP, TIFF and EXR are read"
 TIFF = (b"II*\0", b"MM\0*", b"II+\0", b"MM\0+")  # "+" is BigTIFF
 GAMMA_ONE = struct.pack(">I", 100000)
-HEADER = 1 << 20  # bytes in which an EXR header must end
 BAD = "the file is damaged or cut off: export it again"
 
 

@@ -231,6 +231,36 @@ def test_exr_must_be_finite_and_whole():
             read_image(whole[:size], "a.exr")
 
 
+def exr(tmp_path, names, shape=(8, 8)) -> np.ndarray:
+    library = pytest.importorskip("OpenEXR", reason="the extra `exr` is not installed")
+    header = {"compression": library.ZIP_COMPRESSION, "type": library.scanlineimage}
+    library.File(header, {name: np.ones(shape, np.float16) for name in names}).write(str(tmp_path / "a.exr"))
+    return np.fromfile(tmp_path / "a.exr", np.uint8)
+
+
+def test_exr_gives_colours_among_other_channels(tmp_path):
+    assert read_image(exr(tmp_path, ["depth.Z", "R", "G", "B"]), "a.exr").shape == (8, 8, 3)
+    assert read_image(exr(tmp_path, ["X", "Z"]), "a.exr").shape == (8, 8, 2)
+
+
+def test_exr_of_many_channels_is_refused_by_its_header(tmp_path):
+    with pytest.raises(InputError, match=r"a\.exr: header: 200 channels of 8 x 8"):
+        read_image(exr(tmp_path, [f"layer{k}" for k in range(200)]), "a.exr")
+
+
+def test_any_byte_of_exr_may_be_wrong(tmp_path):
+    whole = exr(tmp_path, ["R", "G", "B"], (5, 3))
+    for at in range(len(whole)):
+        content = whole.copy()
+        content[at] ^= 0x5A
+        try:
+            texels = read_image(content, "a.exr", pixels=10_000)
+        except InputError as error:
+            assert "a.exr" in str(error)
+        else:
+            assert texels.dtype == np.float32 and texels.ndim == 3
+
+
 def test_signed_and_wide_whole_numbers_are_refused():
     with pytest.raises(InputError, match="texels of type int32"):
         read_image(np.frombuffer(imagecodecs.tiff_encode(np.ones((2, 2), np.int32)), np.uint8), "a.tif")
