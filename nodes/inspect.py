@@ -110,17 +110,29 @@ def _orientation(asset: Asset) -> Facts:
 
 
 def _agreement(asset: Asset) -> Facts:
-    """How far stored tangents are from what the rule gives."""
-    found = [pair for part in asset.parts if (pair := _against_rule(asset, part)) is not None]
+    """How far stored tangents are from what the rule gives, all together and in each part."""
+    found = {
+        number: pair for number, part in enumerate(asset.parts) if (pair := _against_rule(asset, part)) is not None
+    }
     if not found:
         return {}
-    angle, same = np.concatenate([one for one, _ in found]), np.concatenate([one for _, one in found])
-    middle, high = np.percentile(angle, [50, 95])
-    return {
-        "stored tangents, degrees from MikkTSpace": f"median {middle:.3g}, 5 % above {high:.3g}",
+    angle = np.concatenate([angle for angle, _ in found.values()])
+    same = np.concatenate([same for _, same in found.values()])
+    facts: Facts = {
+        "stored tangents, degrees from MikkTSpace": _spread(angle),
         "stored tangents within 1 degree": f"{(angle <= 1).mean():.2%}",
         "stored sides as the rule has them": f"{same.mean():.2%}",
     }
+    if len(found) > 1:
+        for number, (angle, same) in found.items():
+            place = f"part {number}, {asset.parts[number].name}: stored tangents"
+            facts[place] = f"{_spread(angle)} degrees from MikkTSpace; {same.mean():.2%} of the sides as the rule"
+    return facts
+
+
+def _spread(angle: Array) -> str:
+    middle, high = np.percentile(angle, [50, 95])
+    return f"median {middle:.3g}, 5 % above {high:.3g}"
 
 
 def _against_rule(asset: Asset, part: Part) -> tuple[Array, Array] | None:

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 from shapes import asset, half_mirrored, sphere_part, torus_part
@@ -35,6 +37,16 @@ def test_stored_tangents_are_held_against_the_rule(saved):
     facts = inspect(saved(frames(asset(torus_part(12, 8))), "ring.glb")).facts
 
     assert facts["stored tangents within 1 degree"] == facts["stored sides as the rule has them"] == "100.00%"
+
+
+def test_each_part_is_held_against_the_rule(saved):
+    solved = frames(asset(torus_part(12, 8), torus_part(8, 6)))
+    right, wrong = solved.parts
+    wrong = replace(wrong, name="inner", frames=replace(wrong.frames, sides=-wrong.frames.sides))
+    facts = inspect(saved(replace(solved, parts=(right, wrong)), "rings.glb")).facts
+
+    assert facts["part 0, torus: stored tangents"].endswith("; 100.00% of the sides as the rule")
+    assert facts["part 1, inner: stored tangents"].endswith("; 0.00% of the sides as the rule")
 
 
 def test_polygons_stay_polygons(saved, tmp_path):
