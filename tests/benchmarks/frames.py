@@ -212,21 +212,30 @@ def address(array: np.ndarray) -> ctypes.c_void_p:
 
 
 def beside(library: ctypes.CDLL, part: Part, method: str) -> tuple[float, float, float]:
-    """(seconds of C, seconds of solve_frames, greatest angle between their tangents) for a part of triangles."""
+    """(seconds of C, seconds of solve_frames, greatest angle between their tangents) for a part of triangles.
+
+    Both take fresh memory for what they make: pages that are touched for the first time cost either as much.
+    """
     count, rows = part.face_count, len(part.points.values)
-    tangent, side = np.empty((3 * count, 3), np.float32), np.empty(3 * count, np.int8)
-    bitangent, group = np.empty_like(tangent), part.points.index.copy()
     values = [address(stream.values) for stream in (part.points, part.normals, part.uvs[0])]
-    out = [address(array) for array in (group, tangent, bitangent, side)]
-    size = ctypes.c_long(count)
-    if method == "angle":
-        calls = lambda: library.by_angle(out[0], size, *values, ctypes.c_long(rows), *out[1:])  # noqa: E731
-    else:
-        calls = lambda: library.by_scheme(size, *values, out[0], out[1], out[3])  # noqa: E731
+    size, vertices = ctypes.c_long(count), ctypes.c_long(rows)
+
+    def plain() -> tuple[np.ndarray, np.ndarray]:
+        tangent, side = np.empty((rows, 3), np.float32), np.empty(rows, np.int8)
+        if method == "angle":
+            bitangent = np.empty((rows, 3), np.float32)
+            out = (address(tangent), address(bitangent), address(side))
+            library.by_angle(address(part.points.index), size, *values, vertices, *out)
+            return tangent, part.points.index
+        group = np.empty(3 * count, np.int32)
+        library.by_scheme(size, *values, address(group), address(tangent), address(side))
+        return tangent, group
+
     runs = max(7, 5_000_000 // count)  # short ones more often: others may be at work on the machine
-    plain, ours = best(calls, lambda: solve_frames(part, part.uvs[0], 0, False, method), runs=runs)
+    seconds = best(plain, lambda: solve_frames(part, part.uvs[0], 0, False, method), runs=runs)
+    tangent, group = plain()
     made = solve_frames(part, part.uvs[0], 0, False, method)
-    return plain, ours, float(angle_between(tangent[group], made.tangents[made.index]).max())
+    return *seconds, float(angle_between(tangent[group], made.tangents[made.index]).max())
 
 
 def compare() -> None:
