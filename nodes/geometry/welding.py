@@ -19,14 +19,23 @@ def join_points(points: Array, within: float) -> tuple[Array, Array]:
     if within <= 0 or len(first) < 2:
         return label, first
     some = points[first].astype(np.float64)
-    cells = np.floor((some - some.min(axis=0)) / within).astype(np.int64)
     parent = np.arange(len(some), dtype=np.int32)
-    _join(some, cells, within * within, parent)
+    _join(some, _cells(some, within), within * within, parent)
     joined = np.empty(len(some), np.int32)
     count = number(parent, joined)
     stands = np.empty(count, np.int32)
     stands[joined[::-1]] = first[::-1]
     return joined[label], stands
+
+
+def _cells(points: Array, within: float) -> Array:
+    """(n, 3) int64: the cell of each point; values that lie within the distance have the same number or the next.
+
+    Where float64 can't tell one cell from the next, its bits are the number: those of neighbouring values differ by 1.
+    """
+    cells = np.floor(points / within) + 0.0  # + 0.0: -0.0 is 0.0
+    far = np.abs(cells) >= 2.0**52
+    return np.where(far, cells.view(np.int64), np.where(far, 0, cells).astype(np.int64))
 
 
 @njit(cache=True, nogil=True)
