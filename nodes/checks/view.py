@@ -165,7 +165,8 @@ class View:
         if found is None:
             return np.zeros(self.part.face_count, np.int8)
         seen = ~self.uv_flat & (found.side != 0)
-        return np.sign(self.per_face(np.where(seen, found.side * found.uv_area, 0))).astype(np.int8)
+        uv_area = np.nan_to_num(found.uv_area)  # what is not finite has a finding of its own
+        return np.sign(self.per_face(np.where(seen, found.side * uv_area, 0))).astype(np.int8)
 
     @cached_property
     def uv_flat(self) -> Array:

@@ -428,3 +428,15 @@ def with_faces_in(part: Part, order: Array) -> Part:
         vertices=None if part.vertices is None else part.vertices[corners],
         frames=None if part.frames is None else replace(part.frames, index=part.frames.index[corners]),
     )
+
+
+@pytest.mark.parametrize("bad", [np.inf, -np.inf, np.nan, 3e38, 1e25, 1e-40])
+@pytest.mark.parametrize("part", [grid_part(), box_part()])
+def test_uvs_beyond_all_measure_are_checked_without_a_warning(part, bad):
+    """Warnings are errors here."""
+    values = part.uvs[0].values.copy()
+    values[::5] = bad
+
+    found = check(frames(asset(replace(part, uvs=(Stream(values, part.uvs[0].index),))), where="all"))
+
+    assert ("value-not-finite" in {item.id for item in found.items}) == (not np.isfinite(bad))
