@@ -187,9 +187,9 @@ class _Primitive:
     def part(self, name: str) -> Part:
         points = self._attribute("POSITION", (3,))
         assert points is not None
-        finite = np.isfinite(points).all(axis=1)
+        finite = np.isfinite(points)
         if not finite.all():
-            vertex = int(np.argmin(finite))
+            vertex = int(np.argmin(finite.all(axis=1)))
             raise InputError(
                 self.file, f"{self.place}, vertex {vertex}", f"its position is {points[vertex].tolist()}", EXPORT_AGAIN
             )
