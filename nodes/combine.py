@@ -43,20 +43,25 @@ def _combined(
     sheet: Sheet, detail: Map, mask: Map | None, method: str, tiling: tuple[float, float], strength: float
 ) -> Sheet:
     from tangentry.nodes.maps.blending import blend
-    from tangentry.nodes.maps.resampling import repeated
+    from tangentry.nodes.maps.encodings import decode_texels, decoded
+    from tangentry.nodes.maps.resampling import BAND, repeated
 
     other = _for(detail, sheet.material)
     if other is None:
         return sheet
+    _refuse(sheet)
+    _refuse(other)
     height, width = sheet.texels.shape[:2]
-    added = repeated(_normals(other), height, width, tiling)
-    scale = np.full((height, width, 1), strength, np.float32)
     masking = _for(mask, sheet.material) if mask is not None else None
-    if masking is not None:
-        scale *= repeated(_share(masking), height, width, (1.0, 1.0))
-    added = added * np.concatenate([scale, scale, np.ones_like(scale)], axis=2)
-    added /= np.sqrt(np.einsum("...i,...i->...", added, added))[..., None]
-    return replace(sheet, texels=blend(_normals(sheet), added, method), green="up", encoding="float", space="tangent")
+    normals, out = decoded(other), np.empty((height, width, 3), np.float32)
+    for rows in (slice(first, first + BAND) for first in range(0, height, BAND)):
+        added = repeated(normals, height, width, tiling, rows)
+        added[..., :2] *= strength
+        if masking is not None:
+            added[..., :2] *= repeated(_share(masking), height, width, (1.0, 1.0), rows)
+        added /= np.sqrt(np.einsum("...i,...i->...", added, added))[..., None]
+        out[rows] = blend(decode_texels(sheet.texels[rows], sheet.encoding, sheet.green), added, method)
+    return replace(sheet, texels=out, green="up", encoding="float", space="tangent")
 
 
 def _for(map: Map, material: str) -> Sheet | None:
@@ -64,13 +69,11 @@ def _for(map: Map, material: str) -> Sheet | None:
     return named.get(material, named.get(""))
 
 
-def _normals(sheet: Sheet) -> Array:
-    from tangentry.nodes.maps.encodings import decoded
-
+def _refuse(sheet: Sheet) -> None:
+    """Raise InputError where a sheet holds no tangent-space normals that can be read."""
     if sheet.holds != "normal" or sheet.space not in ("tangent", "") or sheet.green == "undecided":
         found = f"green {sheet.green}" if sheet.green == "undecided" else f"{sheet.space} {sheet.holds}".strip()
         raise InputError(sheet.name or "map", "", f"{found}, not tangent-space normals", "turn it into them first")
-    return decoded(sheet)
 
 
 def _share(sheet: Sheet) -> Array:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import replace
 from typing import NamedTuple
 
@@ -46,60 +47,102 @@ def _for(map: Map | None, material: str) -> Sheet | None:
 def _chain(
     sheet: Sheet, rough: Sheet | None, asset: Asset | None, roughness: float, levels: int | None
 ) -> tuple[list[Sheet], list[Sheet]]:
-    from tangentry.nodes.maps.resampling import halved
-
-    values, weights = _values(sheet), _weights(sheet, asset)
-    power = _power(rough, roughness, values.shape[:2]) if sheet.holds == "normal" else None
-    chain, roughs = [sheet], [] if power is None else [_rough_sheet(sheet, power, 0)]
-    while max(values.shape[:2]) > 1 and (levels is None or len(chain) <= levels):
-        share = halved(weights)
-        values, power = halved(values * weights), None if power is None else halved(power * weights)
-        weights, over = share, np.where(share > 0, share, 1)
-        values, power = values / over, None if power is None else power / over
-        level = len(chain)
-        chain.append(_sheet(sheet, _filled(values, weights), level))
-        if power is not None:
-            length = np.clip(np.sqrt(np.einsum("...i,...i->...", values, values))[..., None], 1e-6, 1)
-            less = length * power / (length + power * (1 - length))
-            roughs.append(_rough_sheet(sheet, _filled(less, weights), level))
+    chain, roughs = [sheet], []
+    own = _rough_texels(sheet, rough, roughness) if sheet.holds == "normal" else None
+    if own is not None:
+        roughs.append(_rough_sheet(sheet, own, 0))
+    level = _first(sheet, own, _inside(sheet, asset))
+    while max(level.size) > 1 and (levels is None or len(chain) <= levels):
+        level = level.halved()
+        chain.append(_sheet(sheet, _filled(level.values, level.weights), len(chain)))
+        if level.power is not None:
+            length = np.clip(np.sqrt(np.einsum("...i,...i->...", level.values, level.values))[..., None], 1e-6, 1)
+            less = length * level.power / (length + level.power * (1 - length))
+            roughs.append(_rough_sheet(sheet, (2 / (_filled(less, level.weights) + 2)) ** 0.25, len(roughs)))
     return chain, roughs
 
 
-def _values(sheet: Sheet) -> Array:
-    """What is averaged: unit vectors of normals, else the texels as they are."""
-    from tangentry.nodes.maps.encodings import decoded
+class _Level(NamedTuple):
+    """What a level is averaged from, given by its rows."""
 
-    if sheet.holds != "normal":
-        return sheet.texels.astype(np.float64)
-    if sheet.green == "undecided":
+    size: tuple[int, int]
+    of: Callable[[slice], Array]  # (rows, width, channels) float64: unit vectors of normals, else texels as they are
+    weighing: Callable[[slice], Array]  # (rows, width, 1) float64: 0 where nothing is stood for
+    powers: Callable[[slice], Array] | None  # (rows, width, 1) float64: Blinn and Phong's exponent
+
+    @property
+    def values(self) -> Array:
+        return self.of(slice(None))
+
+    @property
+    def weights(self) -> Array:
+        return self.weighing(slice(None))
+
+    @property
+    def power(self) -> Array | None:
+        return None if self.powers is None else self.powers(slice(None))
+
+    def halved(self) -> _Level:
+        from tangentry.nodes.maps.resampling import halved_in_bands
+
+        of, weighing, powers, height = self.of, self.weighing, self.powers, self.size[0]
+        share = halved_in_bands(height, weighing)
+        over = np.where(share > 0, share, 1)
+        values = halved_in_bands(height, lambda rows: of(rows) * weighing(rows)) / over
+        power = None if powers is None else halved_in_bands(height, lambda rows: powers(rows) * weighing(rows)) / over
+        return _Level(
+            share.shape[:2],
+            values.__getitem__,
+            share.__getitem__,
+            None if power is None else power.__getitem__,
+        )
+
+
+def _first(sheet: Sheet, rough: Array | None, inside: Array | None) -> _Level:
+    """The level of the map itself."""
+    from tangentry.nodes.maps.encodings import decode_texels
+
+    height, width = sheet.texels.shape[:2]
+    if sheet.holds == "normal" and sheet.green == "undecided":
         raise InputError(sheet.name or "map", "", "it is not known whether its green points up or down", "state it")
-    return decoded(sheet).astype(np.float64)
+
+    def values(rows: slice) -> Array:
+        if sheet.holds != "normal":
+            return sheet.texels[rows].astype(np.float64)
+        return decode_texels(sheet.texels[rows], sheet.encoding, sheet.green).astype(np.float64)
+
+    def weights(rows: slice) -> Array:
+        if inside is None:
+            return np.ones((len(range(*rows.indices(height))), width, 1))
+        return inside[rows, :, None].astype(np.float64)
+
+    powers = None if rough is None else lambda rows: 2 / np.clip(rough[rows].astype(np.float64), 0.01, 1) ** 4 - 2
+    return _Level((height, width), values, weights, powers)
 
 
-def _weights(sheet: Sheet, asset: Asset | None) -> Array:
+def _inside(sheet: Sheet, asset: Asset | None) -> Array | None:
+    """(height, width) bool: texels that stand for something; None: all."""
     from tangentry.nodes.pad import owned
 
     inside = None if asset is None else owned(sheet, asset)
-    if inside is None or not inside.any():
-        return np.ones((*sheet.texels.shape[:2], 1))
-    return inside[..., None].astype(np.float64)
+    return inside if inside is not None and inside.any() else None
 
 
-def _power(rough: Sheet | None, roughness: float, shape: tuple[int, ...]) -> Array:
-    """(height, width, 1): Blinn and Phong's exponent of each texel."""
+def _rough_texels(sheet: Sheet, rough: Sheet | None, roughness: float) -> Array:
+    """(height, width, 1) float32: the roughness of each texel."""
+    shape = sheet.texels.shape[:2]
     if rough is None:
-        texels = np.full((*shape, 1), roughness)
-    else:
-        most = np.iinfo(rough.texels.dtype).max if rough.texels.dtype.kind == "u" else 1
-        texels = rough.texels[..., :1] / most
-        if texels.shape[:2] != shape:
-            raise InputError(
-                rough.name or "roughness",
-                "",
-                f"{texels.shape[1]} x {texels.shape[0]} texels, the normal map {shape[1]} x {shape[0]}",
-                "give both one size",
-            )
-    return np.asarray(2 / np.clip(texels, 0.01, 1) ** 4 - 2)
+        return np.full((*shape, 1), roughness, np.float32)
+    if rough.texels.shape[:2] != shape:
+        size = f"{rough.texels.shape[1]} x {rough.texels.shape[0]}"
+        raise InputError(
+            rough.name or "roughness",
+            "",
+            f"{size} texels, the normal map {shape[1]} x {shape[0]}",
+            "give both one size",
+        )
+    most = np.iinfo(rough.texels.dtype).max if rough.texels.dtype.kind == "u" else 1
+    return rough.texels[..., :1].astype(np.float32) / np.float32(most)
 
 
 def _filled(values: Array, weights: Array) -> Array:
@@ -129,6 +172,6 @@ def _sheet(sheet: Sheet, values: Array, level: int) -> Sheet:
     return replace(sheet, texels=codes, level=level)
 
 
-def _rough_sheet(sheet: Sheet, power: Array, level: int) -> Sheet:
-    texels = (2 / (power + 2)) ** 0.25
-    return Sheet(sheet.material, texels.astype(np.float32), "data", encoding="float", name=sheet.name, level=level)
+def _rough_sheet(sheet: Sheet, texels: Array, level: int) -> Sheet:
+    plain = texels.astype(np.float32)
+    return Sheet(sheet.material, plain, "data", encoding="float", name=sheet.name, level=level)

@@ -2,8 +2,12 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+
 import numpy as np
 from tangentry.pipeline.flow import Array
+
+BAND = 256  # rows worked on at a time; an even number
 
 
 def halved(values: Array) -> Array:
@@ -28,11 +32,21 @@ def _means(values: Array, axis: int) -> Array:
     return np.moveaxis(means, 0, axis)
 
 
-def repeated(values: Array, height: int, width: int, tiling: tuple[float, float]) -> Array:
-    """(height, width, channels) float32: an image that repeats so many times along x and y, sampled bilinearly."""
-    rows = ((np.arange(height) + 0.5) / height * tiling[1] * len(values)) - 0.5
+def halved_in_bands(height: int, of: Callable[[slice], Array]) -> Array:
+    """`halved` of an image that is given by its rows; only a band of it is held at a time where its height is even."""
+    if height % 2:
+        return halved(of(slice(0, height)))
+    return np.concatenate([halved(of(slice(first, first + BAND))) for first in range(0, height, BAND)])
+
+
+def repeated(values: Array, height: int, width: int, tiling: tuple[float, float], rows: slice) -> Array:
+    """(rows, width, channels) float32 of an image that repeats so many times along x and y, sampled bilinearly.
+
+    height, width   of the whole, of which some rows are wanted
+    """
+    down = ((np.arange(height)[rows] + 0.5) / height * tiling[1] * len(values)) - 0.5
     columns = ((np.arange(width) + 0.5) / width * tiling[0] * values.shape[1]) - 0.5
-    return _between(_between(values.astype(np.float32), rows, 0), columns, 1)
+    return _between(_between(values, down, 0).astype(np.float32), columns, 1)
 
 
 def _between(values: Array, places: Array, axis: int) -> Array:
