@@ -277,15 +277,17 @@ def _inspect_words(parser: argparse.ArgumentParser) -> None:
 def _inspect(chosen: argparse.Namespace) -> int:
     from tangentry.pipeline.errors import InputError
     from tangentry.pipeline.kinds import Kinds
-    from tangentry.pipeline.terminal import facts_json, facts_lines
+    from tangentry.pipeline.terminal import Progress, facts_json, facts_lines
 
     inspect = Kinds().get("inspect").function
     found: list[tuple[str, Any]] = []
-    for file in chosen.files:
-        try:
-            found.append((file, inspect(file)))
-        except InputError as error:
-            found.append((file, error))
+    with Progress("files") as progress:
+        for file in chosen.files:
+            try:
+                found.append((file, inspect(file)))
+            except InputError as error:
+                found.append((file, error))
+            progress.one_through(len(chosen.files))
     print(facts_json(found) if chosen.json else "\n".join(facts_lines(found)))
     return 1 if any(isinstance(facts, InputError) for _, facts in found) else 0
 

@@ -21,16 +21,21 @@ SEVERITIES = ("fault", "warning", "note")
 
 
 class Progress:
-    """A line for each asset that is not unchanged; on a terminal also a bar below them."""
+    """A line for each asset that is not unchanged; on a terminal also a bar below them, from the beginning.
 
-    def __init__(self) -> None:
+    of   what is counted
+    """
+
+    def __init__(self, of: str = "assets") -> None:
+        self._of = of
         self._bar: Any = None
         self._task: TaskID | None = None
+        self._through = 0
         if sys.stdout.isatty():
             from rich import progress
 
             self._bar = progress.Progress(
-                progress.TextColumn("{task.completed}/{task.total} assets"),
+                progress.TextColumn("{task.description}"),
                 progress.BarColumn(),
                 progress.TimeElapsedColumn(),
                 transient=True,
@@ -39,6 +44,7 @@ class Progress:
     def __enter__(self) -> Self:
         if self._bar:
             self._bar.start()
+            self._task = self._bar.add_task(f"looking at {self._of}", total=None)
         return self
 
     def __exit__(self, *_: object) -> None:
@@ -50,10 +56,14 @@ class Progress:
         if asset.state != "unchanged":
             for line in asset_lines(asset):
                 self._print(line)
+        self.one_through(total)
+
+    def one_through(self, total: int) -> None:
+        """One more of so many is through."""
+        self._through += 1
         if self._bar:
-            if self._task is None:
-                self._task = self._bar.add_task("", total=total)
-            self._bar.advance(self._task)
+            told = f"{self._through}/{total} {self._of}"
+            self._bar.update(self._task, description=told, completed=self._through, total=total)
 
     def _print(self, line: str) -> None:
         if self._bar:
