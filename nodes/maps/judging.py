@@ -1,6 +1,7 @@
 """What is wrong with a normal map, as its own texels tell.
 
-All of it is common practice, no source, but for the green test (see conventions.py). Shares are of all texels.
+All of it is common practice, no source, but for the green test (see conventions.py). Shares are of all texels; of maps
+larger than 4096 x 4096, of bands of rows spread evenly over them, that many texels together.
 """
 
 from __future__ import annotations
@@ -32,6 +33,7 @@ MAP_IDS = (
 )
 GREY = 2 / 255  # by which the channels of a grey texel may differ
 OFF = 0.1  # by which a vector's length may differ from 1
+MOST, BAND = 4096 * 4096, 64  # texels that are looked at, and rows of a band, which whole blocks of any size fit into
 BLOCKS = 1.4  # times that steps across borders of blocks may exceed those within
 
 
@@ -42,21 +44,30 @@ class Judged:
     sheet: Sheet
 
     @cached_property
+    def texels(self) -> Array:
+        """(rows, width, channels): the sheet's own, of a large one bands of rows."""
+        height, width = self.sheet.texels.shape[:2]
+        if height * width <= MOST or height < 2 * BAND:
+            return self.sheet.texels
+        bands = np.unique(np.linspace(0, height // BAND - 1, max(1, MOST // (BAND * width))).astype(int))
+        return self.sheet.texels[(bands[:, None] * BAND + np.arange(BAND)).ravel()]
+
+    @cached_property
     def codes(self) -> Array:
-        """(height, width, 3) float32: channels as 0..1."""
-        texels = self.sheet.texels[..., :3]
+        """(rows, width, 3) float32: channels as 0..1."""
+        texels = self.texels[..., :3]
         if texels.dtype.kind == "f":
             return np.asarray((texels + 1) / 2, np.float32)
         return texels.astype(np.float32) / np.float32(np.iinfo(texels.dtype).max)
 
     @cached_property
     def vectors(self) -> Array:
-        """(height, width, 3) float32, as they are."""
+        """(rows, width, 3) float32, as they are."""
         return self.codes * 2 - 1
 
     @cached_property
     def length(self) -> Array:
-        """(height, width) float32."""
+        """(rows, width) float32."""
         return np.asarray(np.sqrt(np.einsum("...i,...i->...", self.vectors, self.vectors)))
 
     @cached_property
@@ -172,7 +183,7 @@ def _codes(judged: Judged) -> Iterator[Finding]:
     sheet = judged.sheet
     if sheet.texels.dtype == np.uint8 and (np.abs(judged.flat * 255 - 127.5) < 4).all():
         flat = np.rint(judged.flat * 255).astype(int)
-        if (flat != 128).any() and _share((sheet.texels[..., :2] == flat).all(axis=2)) > 0.05:
+        if (flat != 128).any() and _share((judged.texels[..., :2] == flat).all(axis=2)) > 0.05:
             yield _finding(
                 sheet,
                 "map-flat-offset",
@@ -180,7 +191,7 @@ def _codes(judged: Judged) -> Iterator[Finding]:
                 f"flat is ({flat[0]}, {flat[1]}) where 128 is usual",
                 "round codes when exporting",
             )
-    ratio, size = _blocks(judged.codes)
+    ratio, size = _blocks(judged.codes, judged.texels is not sheet.texels)
     if ratio > BLOCKS:
         yield _finding(
             sheet,
@@ -227,14 +238,20 @@ def _two_channels(judged: Judged) -> bool:
     return bool(z.std() > 0.016 or abs(float(z.mean()) - (2 * blue - 1)) > 0.2)
 
 
-def _blocks(codes: Array) -> tuple[float, int]:
-    """How much larger steps are across borders of blocks than elsewhere, along both axes; for the worst size."""
+def _blocks(codes: Array, banded: bool) -> tuple[float, int]:
+    """How much larger steps are across borders of blocks than elsewhere, along both axes; for the worst size.
+
+    banded   steps between bands are none, so those at their borders are left out
+    """
     worst = (0.0, 0)
     for size in (4, 8):
         ratios = []
         for axis in (0, 1):
             steps = np.abs(np.diff(codes, axis=axis)).mean(axis=(1 - axis, 2), dtype=np.float64)
-            border = (np.arange(len(steps)) + 1) % size == 0
+            place = np.arange(len(steps)) + 1
+            if banded:
+                steps, place = steps[place % BAND != 0], place[place % BAND != 0]
+            border = place % size == 0
             if border.sum() < 4 or not steps[~border].mean() > 0:
                 return 0.0, 0
             ratios.append(steps[border].mean() / steps[~border].mean())

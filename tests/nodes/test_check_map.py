@@ -161,3 +161,12 @@ def test_what_is_no_normal_map_is_not_judged(holds):
 @pytest.mark.parametrize("shape", [(1, 1, 3), (1, 40, 3), (3, 2, 3)])
 def test_small_maps_are_judged_without_trouble(shape):
     assert check_map(Map((sheet(np.full(shape, (128, 128, 255), np.uint8)),))).items == ()
+
+
+def test_of_a_large_map_bands_are_looked_at(monkeypatch):
+    """A quarter of the map; what is wrong everywhere is found, what is sound stays so."""
+    monkeypatch.setattr("tangentry.nodes.maps.judging.MOST", 256 * 256 // 4)
+    tiled = {id: replace(one, texels=np.tile(one.texels, (2, 2, 1))) for id, one in SPOILT.items()}
+
+    assert found(sheet(np.tile(codes(vectors()), (2, 2, 1)))) == {}
+    assert all(set(found(one)) == {id} for id, one in tiled.items() if id != "map-negative-z")
